@@ -1,0 +1,39 @@
+"""The store: append-only tables in SQLite, one transaction and one chain entry per change."""
+
+from calib.store.base import Base
+from calib.store.chain import GENESIS, ChainEntry
+from calib.store.current import is_current
+from calib.store.curves import Curve, CurveStandard, VerdictRow
+from calib.store.instruments import Event, Instrument
+from calib.store.lots import StandardLot
+from calib.store.methods import Method
+from calib.store.opening import default_store_path, open_store, store_path
+from calib.store.originals import Original
+from calib.store.quantities import QuantityRow
+from calib.store.runs import Exclusion, Reading, Run, RunFacts, RunVoid
+from calib.store.session import Store
+
+__all__ = [
+    "GENESIS",
+    "Base",
+    "ChainEntry",
+    "Curve",
+    "CurveStandard",
+    "Event",
+    "Exclusion",
+    "Instrument",
+    "Method",
+    "Original",
+    "QuantityRow",
+    "Reading",
+    "Run",
+    "RunFacts",
+    "RunVoid",
+    "StandardLot",
+    "Store",
+    "VerdictRow",
+    "default_store_path",
+    "is_current",
+    "open_store",
+    "store_path",
+]

@@ -1,0 +1,23 @@
+"""Method definitions, versioned."""
+
+from datetime import datetime
+
+from sqlalchemy import Text, UniqueConstraint
+from sqlalchemy.orm import Mapped, mapped_column
+
+from calib.store.base import Base, evidence
+
+
+class Method(Base):
+    """One version of a method: its TOML text as it was added."""
+
+    __tablename__ = "method"
+    __table_args__ = evidence(UniqueConstraint("name", "version"))
+
+    id: Mapped[int] = mapped_column(primary_key=True)
+    name: Mapped[str]
+    version: Mapped[int]
+    definition: Mapped[str] = mapped_column(Text)
+    fingerprint: Mapped[str]
+    added_at: Mapped[datetime]
+    added_by: Mapped[str]
