@@ -1,0 +1,67 @@
+"""calib: calibration curves of analytical instruments.
+
+The names below are loaded on first use, so that ``import calib`` stays cheap.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from calib.curves.curve import BackCalculation, Curve
+    from calib.curves.diagnostics import Finding
+    from calib.curves.fit import fit
+    from calib.curves.noise import NoiseModel, assumed_noise
+    from calib.errors import CalibError
+    from calib.models import RESPONSE_MODELS, custom_model
+    from calib.quantification.budget import Component
+    from calib.quantification.inverse import Quantity
+    from calib.quantification.range import precision_profile, working_range
+    from calib.store import open_store
+
+__version__ = "0.1.0"
+
+_HOME = {
+    "BackCalculation": "calib.curves.curve",
+    "CalibError": "calib.errors",
+    "Component": "calib.quantification.budget",
+    "Curve": "calib.curves.curve",
+    "Finding": "calib.curves.diagnostics",
+    "NoiseModel": "calib.curves.noise",
+    "Quantity": "calib.quantification.inverse",
+    "RESPONSE_MODELS": "calib.models",
+    "assumed_noise": "calib.curves.noise",
+    "custom_model": "calib.models",
+    "fit": "calib.curves.fit",
+    "open_store": "calib.store",
+    "precision_profile": "calib.quantification.range",
+    "working_range": "calib.quantification.range",
+}
+
+__all__ = [
+    "RESPONSE_MODELS",
+    "BackCalculation",
+    "CalibError",
+    "Component",
+    "Curve",
+    "Finding",
+    "NoiseModel",
+    "Quantity",
+    "assumed_noise",
+    "custom_model",
+    "fit",
+    "open_store",
+    "precision_profile",
+    "working_range",
+]
+
+
+def __getattr__(name: str) -> object:
+    if name not in _HOME:
+        raise AttributeError(f"module 'calib' has no attribute {name!r}")
+    return getattr(import_module(_HOME[name]), name)
+
+
+def __dir__() -> list[str]:
+    return sorted([*__all__, "__version__"])

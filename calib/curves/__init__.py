@@ -1,0 +1,1 @@
+"""Standards, noise, solver, fit: from readings to a frozen curve."""

@@ -1,0 +1,198 @@
+"""What is wrong with a fit, in words: the findings."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calib.curves.solver import Problem, Solution, at_bound
+from calib.models import Asymptote
+
+Array = NDArray[np.float64]
+
+# Rules for 'asymptote not reached', from simulation of partial curves (DEVELOPERS.md).
+PLATEAU_RELATIVE_U = 0.25
+PLATEAU_CONDITION = 40.0
+PLATEAU_SHARE = 0.5
+SINGULAR = 1e-12
+
+
+@dataclass(frozen=True, slots=True)
+class Finding:
+    """Something a person must know about a curve."""
+
+    code: str
+    message: str
+
+
+@dataclass(frozen=True, slots=True)
+class Information:
+    """What the standards say about the parameters.
+
+    Attributes
+    ----------
+    inverse : (k, k) array
+        Inverse of J'WJ in natural coordinates, zero for fixed parameters.
+    condition : float
+        kappa, the condition of J'WJ scaled to unit diagonal, in solver coordinates.
+    reciprocal : float
+        1/kappa² (0 when singular).
+    leverage : (n,) array
+        Diagonal of the hat matrix.
+    """
+
+    inverse: Array
+    condition: float
+    reciprocal: float
+    leverage: Array
+
+
+def information(problem: Problem, parameters: Array) -> Information:
+    """Evaluate J'WJ at the solution through a singular-value decomposition."""
+    k = parameters.size
+    c = problem.coordinates(parameters)
+    jacobian = problem.jacobian(c) * problem.scale
+    length = np.linalg.norm(jacobian, axis=0)
+    usable = np.where(length > 0, length, 1.0)
+    left, singular, right = np.linalg.svd(jacobian / usable, full_matrices=False)
+    top = singular[0] if singular.size else 0.0
+    kept = singular > top * np.sqrt(SINGULAR)
+    inverse_root = (right[kept].T / singular[kept]) / usable[:, None]
+    chain = np.where(problem.in_logarithm, parameters[problem.free], 1.0)
+    inverse_root = inverse_root * chain[:, None]
+    inverse = np.zeros((k, k))
+    inverse[np.ix_(problem.free, problem.free)] = inverse_root @ inverse_root.T
+    lowest = singular[-1] if singular.size and length.min(initial=np.inf) > 0 else 0.0
+    return Information(
+        inverse,
+        float(top / lowest) if lowest > 0 else np.inf,
+        float((lowest / top) ** 2) if top > 0 else 0.0,
+        np.sum(left[:, kept] ** 2, axis=1),
+    )
+
+
+def findings_of(
+    problem: Problem, solution: Solution, info: Information, scale: float, stable: bool
+) -> tuple[Finding, ...]:
+    """Everything worth saying about one solution."""
+    found: list[Finding] = []
+    if not solution.converged or not stable:
+        found.append(_not_converged(solution, stable))
+    found.extend(_bounds_hit(problem, solution.parameters))
+    if info.reciprocal < SINGULAR:
+        found.append(
+            Finding(
+                "not-identifiable",
+                "the standards do not determine all parameters (singular information); "
+                "add levels where the curve bends or fix a parameter",
+            )
+        )
+    if problem.y.size <= int(problem.free.sum()):
+        found.append(
+            Finding("no-residual-freedom", "as many readings as free parameters: no uncertainty can be given")
+        )
+    found.extend(_turning_point(problem, solution.parameters))
+    if problem.model.plateau:
+        found.extend(_plateaus(problem, solution.parameters, info, scale))
+    else:
+        found.extend(_loose_parameters(problem, solution.parameters, info, scale))
+    return tuple(found)
+
+
+def _not_converged(solution: Solution, stable: bool) -> Finding:
+    if not stable:
+        return Finding(
+            "not-converged", "the fit did not settle while the noise model followed the fitted means"
+        )
+    return Finding(
+        "not-converged",
+        f"the fit did not converge (relative offset {solution.offset:.1e}); "
+        "the data may have no finite best curve for this model",
+    )
+
+
+def _bounds_hit(problem: Problem, parameters: Array) -> list[Finding]:
+    hit = at_bound(problem, problem.coordinates(parameters))
+    positions = np.flatnonzero(problem.free)[hit]
+    return [
+        Finding(
+            "at-bound",
+            f"{problem.model.names[i]} = {parameters[i]:.6g} sits on its bound "
+            f"[{problem.lower[i]:.6g}, {problem.upper[i]:.6g}]; its standard error means nothing",
+        )
+        for i in positions
+    ]
+
+
+def _turning_point(problem: Problem, p: Array) -> list[Finding]:
+    """Whether the curve turns back inside the standards, where two concentrations share a response."""
+    if problem.model.logarithmic or problem.x.ndim > 1 or not np.all(np.isfinite(p)):
+        return []
+    first, last = float(problem.x.min()), float(problem.x.max())
+    low, high = problem.model.branch(p, first, last)
+    if low <= first and last <= high:
+        return []
+    turn = low if low > first else high
+    return [
+        Finding(
+            "turning-point",
+            f"the curve turns at concentration {turn:.4g}, inside the standards: a response there has two "
+            "concentrations, and only the arm with most standards is read back",
+        )
+    ]
+
+
+def _plateaus(problem: Problem, p: Array, info: Information, scale: float) -> list[Finding]:
+    """One finding with every reason why the plateaus are not determined."""
+    zero, infinite = problem.model.limit_at_zero(p), problem.model.limit_at_infinity(p)
+    if zero is None or infinite is None:
+        return []
+    span = infinite.response - zero.response
+    if span == 0.0:
+        return [Finding("asymptote-not-reached", "the curve is flat: no plateau can be told from the other")]
+    reasons = [
+        *_end_not_reached(problem, p, infinite, float(problem.x.max()), span, "highest"),
+        *_end_not_reached(problem, p, zero, float(problem.x.min()), span, "lowest"),
+    ]
+    gradient = infinite.gradient - zero.gradient
+    u = scale * float(np.sqrt(gradient @ info.inverse @ gradient))
+    if u > PLATEAU_RELATIVE_U * abs(span):
+        reasons.append(f"u of the span between the plateaus is {100 * u / abs(span):.0f} % of it")
+    if info.condition > PLATEAU_CONDITION:
+        reasons.append(f"condition of the parameters {info.condition:.0f}, above {PLATEAU_CONDITION:.0f}")
+    if not reasons:
+        return []
+    return [
+        Finding(
+            "asymptote-not-reached",
+            f"plateau not determined by the standards ({'; '.join(reasons)}): the parameters are not "
+            "identified, values inside the standards stand, nothing is extrapolated",
+        )
+    ]
+
+
+def _end_not_reached(
+    problem: Problem, p: Array, limit: Asymptote, edge: float, span: float, which: str
+) -> list[str]:
+    """Whether the outermost standard stays short of a plateau that is free."""
+    if not np.any(limit.gradient[problem.free] != 0):
+        return []
+    reached = 1.0 - abs(limit.response - float(problem.model.response(edge, p))) / abs(span)
+    if reached >= PLATEAU_SHARE:
+        return []
+    return [f"the {which} standard reaches {100 * reached:.0f} % of the span"]
+
+
+def _loose_parameters(problem: Problem, p: Array, info: Information, scale: float) -> list[Finding]:
+    """Positive parameters of models without a plateau whose u exceeds a quarter of them."""
+    u = scale * np.sqrt(np.diag(info.inverse))
+    loose = problem.model.positive & problem.free & (u > PLATEAU_RELATIVE_U * np.abs(p))
+    return [
+        Finding(
+            "not-identifiable",
+            f"{problem.model.names[i]} = {p[i]:.4g} has u = {u[i]:.2g}: the standards hardly determine it",
+        )
+        for i in np.flatnonzero(loose)
+    ]

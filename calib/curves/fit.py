@@ -1,0 +1,349 @@
+"""From standards to a curve."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from calib.curves.curve import Curve
+from calib.curves.diagnostics import Finding, Information, findings_of, information
+from calib.curves.noise import (
+    GivenNoise,
+    NoiseModel,
+    PowerOfMeanNoise,
+    UniformNoise,
+    given_noise,
+)
+from calib.curves.solver import Problem, Solution, linear_start, solve
+from calib.curves.standards import Standards, checked_standards, frozen
+from calib.curves.variance_function import ESTIMATED, estimate_variance_function
+from calib.errors import MethodError, ModelError
+from calib.models import ResponseModel, response_model
+
+Array = NDArray[np.float64]
+Bounds = Mapping[str, tuple[float, float]]
+
+NOISE_NAMES = ("uniform", "relative", *ESTIMATED)
+GRID_STARTS = 3
+PASSES = 60
+SETTLED = 1e-11
+ONE_RUN = "estimated from this run"
+
+
+@dataclass(frozen=True, slots=True)
+class _Fitted:
+    """A solution together with the noise model it belongs to."""
+
+    solution: Solution
+    noise: NoiseModel
+    problem: Problem
+    stable: bool
+
+
+def fit(
+    concentration: ArrayLike,
+    response: ArrayLike,
+    model: str | ResponseModel = "4PL",
+    *,
+    noise: str | NoiseModel = "uniform",
+    u: ArrayLike | None = None,
+    relative_sd: ArrayLike | None = None,
+    fixed: Mapping[str, float] | None = None,
+    bounds: Bounds | None = None,
+    start: Mapping[str, float] | None = None,
+    solver: str = "least-squares",
+) -> Curve:
+    """Fit a response model to standards, directly and by weighted least squares.
+
+    Parameters
+    ----------
+    concentration : (n,) array
+        Levels of the standards; (n, q) for a custom model of several columns.
+    response : (n,) array
+    model : str or ResponseModel
+    noise : str or NoiseModel
+        'uniform', 'relative', 'power-of-mean' or 'additive-relative' (both estimated
+        from this run), or a noise model such as `calib.assumed_noise` makes.
+    u : (n,) array, optional
+        Known standard uncertainties of the responses: the scale is not estimated.
+    relative_sd : (n,) array, optional
+        Standard deviations up to a common factor, which is estimated.
+    fixed : mapping, optional
+        Parameters to hold, by name.
+    bounds : mapping, optional
+        (lower, upper) by name.
+    start : mapping, optional
+        Start values by name; compulsory for custom models.
+    solver : {'least-squares', 'simplex'}
+
+    Returns
+    -------
+    Curve
+        A fit that went badly is no exception: see `Curve.converged` and `Curve.findings`.
+
+    Raises
+    ------
+    InputError, ModelError, MethodError
+        For input that cannot be used, naming the index, value and remedy.
+
+    Examples
+    --------
+    >>> import calib
+    >>> curve = calib.fit([1, 2, 4, 8], [10, 18, 30, 45], model="saturation", fixed={"offset": 0.0})
+    >>> curve.converged
+    True
+    """
+    chosen = response_model(model)
+    standards = checked_standards(concentration, response, chosen)
+    given = given_noise(u, relative_sd, standards.response.size)
+    requested = _requested_noise(noise, given)
+    problem = _problem(chosen, standards, fixed or {}, bounds or {}, start or {})
+    if standards.levels < int(problem.free.sum()):
+        return _unfitted(problem, standards, requested, solver)
+    starts = _starts(problem, standards, start or {})
+    fitted = _fit_with_noise(problem, requested, starts, solver)
+    return _curve(fitted, standards, solver)
+
+
+def _requested_noise(noise: str | NoiseModel, given: GivenNoise | None) -> str | NoiseModel:
+    if given is not None:
+        if noise != "uniform":
+            raise MethodError("u and relative_sd replace the noise model; leave noise at 'uniform'")
+        return given
+    if isinstance(noise, NoiseModel):
+        return noise
+    if noise == "uniform":
+        return UniformNoise()
+    if noise == "relative":
+        return PowerOfMeanNoise(2.0)
+    if noise in ESTIMATED:
+        return noise
+    if noise == "history":
+        raise MethodError(
+            "noise = 'history' (pooled over past runs) is not available in this version; "
+            f"use one of {', '.join(NOISE_NAMES)} or an assumed noise model"
+        )
+    raise MethodError(f"unknown noise model {noise!r}; known are {', '.join(NOISE_NAMES)}")
+
+
+def _problem(
+    model: ResponseModel,
+    standards: Standards,
+    fixed: Mapping[str, float],
+    bounds: Bounds,
+    start: Mapping[str, float],
+) -> Problem:
+    for what, names in (("fixed", fixed), ("bounds", bounds), ("start", start)):
+        unknown = set(names) - set(model.names)
+        if unknown:
+            raise ModelError(
+                f"{what} names {sorted(unknown)[0]!r}, which model '{model.name}' does not have; "
+                f"its parameters are {', '.join(model.names)}"
+            )
+    held = {n: v for n, v in model.fixed_by_default.items() if n not in bounds and n not in start} | dict(
+        fixed
+    )
+    free = np.array([n not in held for n in model.names])
+    if not free.any():
+        raise ModelError(f"all parameters of model '{model.name}' are fixed; leave at least one free")
+    template = np.array([float(held.get(n, np.nan)) for n in model.names])
+    if not np.all(np.isfinite(template[~free])):
+        raise ModelError("a fixed parameter must have a finite value")
+    lower, upper = _bounds(model, standards, bounds)
+    outside = ~free & ((template < lower) | (template > upper)) & model.positive
+    if outside.any():
+        raise ModelError(f"fixed {model.names[int(np.argmax(outside))]} lies outside what the model allows")
+    ones = np.ones(standards.response.size)
+    return Problem(model, standards.concentration, standards.response, ones, template, free, lower, upper)
+
+
+def _bounds(model: ResponseModel, standards: Standards, bounds: Bounds) -> tuple[Array, Array]:
+    lower, upper = model.bounds(standards.concentration)
+    for name, (low, high) in bounds.items():
+        if not low < high:
+            raise ModelError(
+                f"bounds of {name} must be (lower, upper) with lower < upper, got ({low}, {high})"
+            )
+        i = model.index(name)
+        if model.parameters[i].positive and high <= 0:
+            raise ModelError(f"bounds of {name} must allow values above 0, got ({low}, {high})")
+        lower[i], upper[i] = (max(low, 0.0) if model.parameters[i].positive else low), high
+    return lower, upper
+
+
+def _starts(problem: Problem, standards: Standards, start: Mapping[str, float]) -> list[Array]:
+    """Start given, or else from the data and from the best cells of the model's grid."""
+    model = problem.model
+    missing = [n for n, f in zip(model.names, problem.free, strict=True) if f and n not in start]
+    if not missing:
+        p = problem.template.copy()
+        for name, value in start.items():
+            if problem.free[model.index(name)]:
+                p[model.index(name)] = value
+        return [p]
+    data = model.start(standards.concentration, standards.response)
+    for name, value in start.items():
+        data[model.index(name)] = value
+    data[~problem.free] = problem.template[~problem.free]
+    nonlinear = data[~model.linear][None, :]
+    cells = model.grid(standards.concentration)
+    return linear_start(problem, nonlinear, 1) + linear_start(problem, cells, GRID_STARTS) or [data]
+
+
+def _fit_with_noise(
+    problem: Problem, requested: str | NoiseModel, starts: list[Array], solver: str
+) -> _Fitted:
+    if isinstance(requested, str):
+        return _fit_estimating_noise(problem, requested, starts, solver)
+    noise = requested.bound_to(problem.y)
+    if noise.follows_fit:
+        first = solve(problem, starts, solver)
+        return _follow(problem, noise, [first.parameters, *starts], solver)
+    weighted = _weighted(problem, noise, problem.y)
+    return _Fitted(solve(weighted, starts, solver), noise, weighted, stable=True)
+
+
+def _fit_estimating_noise(problem: Problem, family: str, starts: list[Array], solver: str) -> _Fitted:
+    """Alternate between the curve and its variance function until both stand still."""
+    noise: NoiseModel = PowerOfMeanNoise(1.4, ONE_RUN).bound_to(problem.y)
+    fitted = _fit_with_noise(problem, noise, starts, solver)
+    for _ in range(PASSES):
+        before = noise.variance(problem.y, problem.x)
+        noise = _estimated(fitted, family)
+        fitted = _follow(problem, noise, [fitted.solution.parameters], solver)
+        after = noise.variance(problem.y, problem.x)
+        # Only the shape counts: a common factor is taken up by the scale.
+        shape = np.log(after / before)
+        if np.ptp(shape) < 1e-6:
+            return fitted
+    return _Fitted(fitted.solution, fitted.noise, fitted.problem, stable=False)
+
+
+def _estimated(fitted: _Fitted, family: str) -> NoiseModel:
+    mean = fitted.problem.model.response(fitted.problem.x, fitted.solution.parameters)
+    leverage = information(fitted.problem, fitted.solution.parameters).leverage
+    return estimate_variance_function(family, fitted.problem.y - mean, mean, leverage, ONE_RUN)
+
+
+def _follow(problem: Problem, noise: NoiseModel, starts: list[Array], solver: str) -> _Fitted:
+    """Refit with weights at the fitted means until the means stand still."""
+    mean = problem.model.response(problem.x, starts[0])
+    candidates = starts
+    size = float(np.max(np.abs(problem.y))) or 1.0
+    for _ in range(PASSES):
+        weighted = _weighted(problem, noise, mean)
+        solution = solve(weighted, candidates, solver)
+        fitted = problem.model.response(problem.x, solution.parameters)
+        moved = float(np.max(np.abs(fitted - mean)))
+        mean, candidates = fitted, [solution.parameters]
+        if not moved > SETTLED * size:
+            return _Fitted(solution, noise, weighted, stable=True)
+    return _Fitted(solution, noise, weighted, stable=False)
+
+
+def _weighted(problem: Problem, noise: NoiseModel, mean: Array) -> Problem:
+    root_weight = 1.0 / np.sqrt(noise.at_standards(mean, problem.x))
+    return Problem(
+        problem.model,
+        problem.x,
+        problem.y,
+        root_weight,
+        problem.template,
+        problem.free,
+        problem.lower,
+        problem.upper,
+    )
+
+
+def _curve(fitted: _Fitted, standards: Standards, solver: str) -> Curve:
+    problem, solution = fitted.problem, fitted.solution
+    nu = standards.response.size - int(problem.free.sum())
+    mean = problem.model.response(problem.x, solution.parameters)
+    noise = fitted.noise.after_fit(mean)
+    known = noise.known_scale
+    scale = 1.0 if known else (float(np.sqrt(solution.weighted_sum / nu)) if nu > 0 else np.nan)
+    info = information(problem, solution.parameters)
+    findings = findings_of(problem, solution, info, 0.0 if np.isnan(scale) else scale, fitted.stable)
+    return Curve(
+        response_model=problem.model,
+        values=frozen(solution.parameters),
+        free=problem.free,
+        lower=frozen(problem.lower),
+        upper=frozen(problem.upper),
+        covariance=frozen(_covariance(info, problem.free, scale)),
+        noise=noise,
+        standards=standards,
+        residual_sum=solution.weighted_sum,
+        degrees_of_freedom=nu,
+        scale=scale,
+        coverage_freedom=np.inf if known else float(nu),
+        r_squared=_r_squared(problem, solution),
+        aicc=_aicc(solution.weighted_sum, standards.response.size, int(problem.free.sum())),
+        converged=solution.converged and fitted.stable,
+        findings=findings + _noise_findings(noise),
+        solver=solver,
+    )
+
+
+def _covariance(info: Information, free: NDArray[np.bool_], scale: float) -> Array:
+    covariance = info.inverse * scale**2
+    covariance[~free, :] = 0.0
+    covariance[:, ~free] = 0.0
+    return covariance
+
+
+def _noise_findings(noise: NoiseModel) -> tuple[Finding, ...]:
+    if getattr(noise, "origin", "") != ONE_RUN:
+        return ()
+    return (
+        Finding(
+            "variance-from-one-run",
+            "variance function from 1 run: nominal 95 % intervals cover about 89–95 %",
+        ),
+    )
+
+
+def _r_squared(problem: Problem, solution: Solution) -> float:
+    weight = problem.root_weight**2
+    mean = float(np.sum(weight * problem.y) / np.sum(weight))
+    total = float(np.sum(weight * (problem.y - mean) ** 2))
+    return 1.0 - solution.weighted_sum / total if total > 0 else np.nan
+
+
+def _aicc(weighted_sum: float, n: int, free: int) -> float:
+    """AICc with k = free parameters + 1; comparable only under the same noise model."""
+    k = free + 1
+    if n - k - 1 <= 0 or weighted_sum <= 0:
+        return np.nan
+    return float(n * np.log(weighted_sum / n) + 2 * k + 2 * k * (k + 1) / (n - k - 1))
+
+
+def _unfitted(problem: Problem, standards: Standards, requested: str | NoiseModel, solver: str) -> Curve:
+    """A curve that could not be fitted, with the reason as its finding."""
+    k, count = len(problem.model.names), int(problem.free.sum())
+    message = (
+        f"{standards.levels} distinct level(s) for {count} free parameters of model "
+        f"'{problem.model.name}'; measure at least {count} levels"
+    )
+    return Curve(
+        response_model=problem.model,
+        values=frozen(np.where(problem.free, np.nan, problem.template)),
+        free=problem.free,
+        lower=frozen(problem.lower),
+        upper=frozen(problem.upper),
+        covariance=frozen(np.full((k, k), np.nan)),
+        noise=UniformNoise() if isinstance(requested, str) else requested.bound_to(standards.response),
+        standards=standards,
+        residual_sum=np.nan,
+        degrees_of_freedom=max(standards.response.size - count, 0),
+        scale=np.nan,
+        coverage_freedom=0.0,
+        r_squared=np.nan,
+        aicc=np.nan,
+        converged=False,
+        findings=(Finding("too-few-levels", message),),
+        solver=solver,
+    )

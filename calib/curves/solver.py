@@ -1,0 +1,327 @@
+"""Weighted nonlinear least squares for one run.
+
+Everything the rest of calib knows of solving is `solve`: a problem goes in, a
+solution comes out. Positive parameters are solved in their logarithm, residuals are
+scaled to order one, and every solution is polished with Gauss–Newton steps through an
+orthogonal factorisation, which gives the last digits that a stopping rule leaves.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import least_squares, minimize
+
+from calib.errors import ModelError
+from calib.models import ResponseModel
+
+Array = NDArray[np.float64]
+SOLVERS = ("least-squares", "simplex")
+
+# Share of the residual that may still lie in the tangent plane at a minimum
+# (relative offset of Bates and Watts 1981; the limit is the one of calib's design).
+OFFSET_LIMIT = 1e-6
+# Noise-free data: a residual this small against the response is rounding, not misfit.
+ROUNDING = 1e-12
+HUGE = 1e120
+
+
+@dataclass(frozen=True, slots=True)
+class Problem:
+    """What is to be minimised: sum of (root_weight · (response − y))².
+
+    Attributes
+    ----------
+    x, y, root_weight : arrays with n rows
+    template : (k,) array
+        Values of the fixed parameters; the free ones are replaced.
+    free : (k,) bool array
+    lower, upper : (k,) arrays
+        Bounds in natural coordinates.
+    """
+
+    model: ResponseModel
+    x: Array
+    y: Array
+    root_weight: Array
+    template: Array
+    free: NDArray[np.bool_]
+    lower: Array
+    upper: Array
+
+    @property
+    def scale(self) -> float:
+        """Norm of the weighted responses."""
+        return float(np.linalg.norm(self.root_weight * self.y)) or 1.0
+
+    @property
+    def in_logarithm(self) -> NDArray[np.bool_]:
+        """Which of the free parameters are solved in their logarithm."""
+        return self.model.positive[self.free]
+
+    def parameters(self, coordinates: Array) -> Array:
+        """Full parameter vector of solver coordinates."""
+        p = self.template.copy()
+        with np.errstate(over="ignore"):
+            p[self.free] = np.where(self.in_logarithm, np.exp(coordinates), coordinates)
+        return p
+
+    def coordinates(self, p: Array) -> Array:
+        """Solver coordinates of a full parameter vector."""
+        values = p[self.free]
+        return np.where(self.in_logarithm, np.log(np.where(self.in_logarithm, values, 1.0)), values)
+
+    def limits(self) -> tuple[Array, Array]:
+        """Bounds in solver coordinates."""
+        with np.errstate(divide="ignore", invalid="ignore"):
+            low = np.where(
+                self.in_logarithm, np.log(np.maximum(self.lower[self.free], 0)), self.lower[self.free]
+            )
+            high = np.where(
+                self.in_logarithm, np.log(np.maximum(self.upper[self.free], 0)), self.upper[self.free]
+            )
+        return low, high
+
+    def residual(self, coordinates: Array) -> Array:
+        """Scaled weighted residuals (n,); huge where the model breaks down."""
+        with np.errstate(all="ignore"):
+            fitted = self.model.response(self.x, self.parameters(coordinates))
+            r = self.root_weight / self.scale * (fitted - self.y)
+        return np.where(np.isfinite(r), np.clip(r, -HUGE, HUGE), HUGE)
+
+    def jacobian(self, coordinates: Array) -> Array:
+        """Derivatives of `residual` in the solver coordinates (n, free)."""
+        p = self.parameters(coordinates)
+        with np.errstate(all="ignore"):
+            j = self.model.gradient(self.x, p)[:, self.free] * (self.root_weight / self.scale)[:, None]
+            j = j * np.where(self.in_logarithm, p[self.free], 1.0)
+        return np.where(np.isfinite(j), j, 0.0)
+
+
+@dataclass(frozen=True, slots=True)
+class Solution:
+    """Where a solver ended.
+
+    Attributes
+    ----------
+    parameters : (k,) array
+    weighted_sum : float
+    converged : bool
+        The residual is orthogonal to the tangent plane, within `OFFSET_LIMIT`.
+    offset : float
+        Share of the residual left in the tangent plane.
+    """
+
+    parameters: Array
+    weighted_sum: float
+    converged: bool
+    offset: float
+
+
+def solve(problem: Problem, starts: list[Array], solver: str) -> Solution:
+    """Best of the solutions found from several starts.
+
+    Parameters
+    ----------
+    problem : Problem
+    starts : list of (k,) arrays
+        Full parameter vectors.
+    solver : {'least-squares', 'simplex'}
+
+    Raises
+    ------
+    ModelError
+        For an unknown solver.
+    """
+    if solver not in SOLVERS:
+        raise ModelError(f"unknown solver '{solver}'; known are {', '.join(SOLVERS)}")
+    one = _simplex if solver == "simplex" else _least_squares
+    inside = [_inside(problem, s) for s in starts]
+    found = [_described(problem, one(problem, c)) for c in inside]
+    return min(found, key=lambda s: (not np.isfinite(s.weighted_sum), s.weighted_sum))
+
+
+def linear_start(problem: Problem, cells: Array, keep: int) -> list[Array]:
+    """Best grid cells, their linear parameters solved in closed form.
+
+    Parameters
+    ----------
+    problem : Problem
+    cells : (cells, q) array
+        Values of the q parameters that are not linear.
+    keep : int
+        How many of the best to return, as full parameter vectors.
+    """
+    linear = problem.model.linear & problem.free
+    if not cells.shape[0]:
+        return []
+    p = _cell_parameters(problem, cells)
+    columns = [v[:, None] for v in p.T]
+    with np.errstate(all="ignore"):
+        rest = (problem.y - problem.model.response(problem.x, columns)) * problem.root_weight
+        basis = problem.model.gradient(problem.x, columns)[..., linear] * problem.root_weight[:, None]
+    basis = np.broadcast_to(basis, (cells.shape[0], *basis.shape[-2:]))
+    rest = np.broadcast_to(rest, basis.shape[:2])
+    usable = np.all(np.isfinite(basis), axis=(1, 2)) & np.all(np.isfinite(rest), axis=1)
+    if not usable.any():
+        return []
+    p, basis, rest = p[usable], basis[usable], rest[usable]
+    orthogonal = np.linalg.qr(basis)[0] if linear.any() else basis
+    explained = np.einsum("cnl,cn->cl", orthogonal, rest)
+    left = np.einsum("cn,cn->c", rest, rest) - np.einsum("cl,cl->c", explained, explained)
+    best = np.argsort(left, kind="stable")[:keep]
+    for i in best:
+        p[i, linear] = np.linalg.lstsq(basis[i], rest[i], rcond=None)[0]
+    return [p[i] for i in best]
+
+
+def _cell_parameters(problem: Problem, cells: Array) -> Array:
+    """Full vectors (cells, k): the cell's values, fixed values, linear ones at zero."""
+    p = np.tile(problem.template, (cells.shape[0], 1))
+    p[:, ~problem.model.linear] = cells
+    p[:, ~problem.free] = problem.template[~problem.free]
+    p[:, problem.model.linear & problem.free] = 0.0
+    return p
+
+
+def _inside(problem: Problem, start: Array) -> Array:
+    """Solver coordinates of a start, moved just inside the bounds."""
+    low, high = problem.limits()
+    p = np.where(np.isfinite(start), start, 1.0)
+    p = np.where(problem.model.positive & (p <= 0), 1e-300, p)
+    c = problem.coordinates(p)
+    width = np.where(np.isfinite(high - low), high - low, 1.0)
+    return np.clip(c, low + 1e-9 * width, high - 1e-9 * width)
+
+
+def _least_squares(problem: Problem, start: Array) -> Array:
+    if problem.model.linear[problem.free].all():
+        # Linear in everything: one Gauss–Newton step is the exact solution.
+        polished = _polish(problem, start)
+        if _within(problem, polished):
+            return polished
+    if start.size <= problem.y.size:
+        free_run = least_squares(
+            problem.residual,
+            start,
+            problem.jacobian,
+            method="lm",
+            x_scale="jac",
+            ftol=1e-15,
+            xtol=1e-15,
+            gtol=1e-15,
+            max_nfev=4000,
+        ).x
+        if _within(problem, free_run):
+            return _polish(problem, free_run)
+    bounded = least_squares(
+        problem.residual,
+        start,
+        problem.jacobian,
+        bounds=problem.limits(),
+        method="trf",
+        x_scale="jac",
+        ftol=1e-15,
+        xtol=1e-15,
+        gtol=1e-15,
+        max_nfev=2000,
+    ).x
+    return _polish(problem, bounded)
+
+
+def _simplex(problem: Problem, start: Array) -> Array:
+    """Nelder–Mead, restarted until it stands still; no derivative is used."""
+    low, high = problem.limits()
+    here = start
+    value = np.inf
+    for _ in range(12):
+        options: Any = {
+            "xatol": 1e-10,
+            "fatol": 1e-18,
+            "maxiter": 4000,
+            "maxfev": 8000,
+            "adaptive": start.size > 4,
+            "initial_simplex": _first_simplex(here, low, high),
+        }
+        bounds = list(zip(low.tolist(), high.tolist(), strict=True))
+        found = minimize(_total(problem), here, method="Nelder-Mead", bounds=bounds, options=options)
+        here = found.x
+        if value - found.fun <= 1e-12 * found.fun:
+            break
+        value = found.fun
+    return np.asarray(here, dtype=np.float64)
+
+
+def _total(problem: Problem) -> Callable[[Array], float]:
+    return lambda c: float(np.sum(problem.residual(c) ** 2))
+
+
+def _first_simplex(here: Array, low: Array, high: Array) -> Array:
+    steps = np.where(here != 0, 0.05 * np.abs(here), 0.01)
+    corners = np.tile(here, (here.size + 1, 1))
+    for j in range(here.size):
+        up = here[j] + steps[j]
+        corners[j + 1, j] = up if up <= high[j] else here[j] - steps[j]
+    return np.clip(corners, low, high)
+
+
+def _within(problem: Problem, coordinates: Array) -> bool:
+    low, high = problem.limits()
+    return bool(np.all((coordinates > low) & (coordinates < high)))
+
+
+def at_bound(problem: Problem, coordinates: Array) -> NDArray[np.bool_]:
+    """Which of the free parameters (solver coordinates) sit on a bound."""
+    low, high = problem.limits()
+    width = np.where(np.isfinite(high - low), high - low, np.maximum(np.abs(coordinates), 1e-300))
+    near = 1e-6 * width
+    return (coordinates - low <= near) | (high - coordinates <= near)
+
+
+def gauss_newton_step(jacobian: Array, residual: Array) -> tuple[Array, float]:
+    """Full step and the norm of the residual's part in the tangent plane.
+
+    Columns are scaled to length one first, which makes the step as accurate as the
+    data allow.
+    """
+    length = np.linalg.norm(jacobian, axis=0)
+    length = np.where(length > 0, length, 1.0)
+    scaled = jacobian / length
+    step, *_ = np.linalg.lstsq(scaled, -residual, rcond=None)
+    return step / length, float(np.linalg.norm(scaled @ step))
+
+
+def _polish(problem: Problem, coordinates: Array) -> Array:
+    """Gauss–Newton steps inside the bounds while they do not make the sum larger."""
+    here = coordinates
+    r = problem.residual(here)
+    total = float(r @ r)
+    for _ in range(50):
+        step, tangent = gauss_newton_step(problem.jacobian(here), r)
+        candidate = here + step
+        if not np.all(np.isfinite(candidate)) or not _within(problem, candidate):
+            return here
+        r_new = problem.residual(candidate)
+        new_total = float(r_new @ r_new)
+        if not new_total <= total * (1.0 + 1e-14):
+            return here
+        here, r, total = candidate, r_new, new_total
+        if tangent <= 1e-13 * np.sqrt(total) + 1e-17:
+            return here
+    return here
+
+
+def _described(problem: Problem, coordinates: Array) -> Solution:
+    r = problem.residual(coordinates)
+    jacobian = problem.jacobian(coordinates)
+    # A parameter held by its bound cannot move that way: judge the others.
+    inside = ~at_bound(problem, coordinates)
+    _, tangent = gauss_newton_step(jacobian[:, inside], r) if inside.any() else (r, 0.0)
+    norm = float(np.linalg.norm(r))
+    offset = tangent / norm if norm > 0 else 0.0
+    converged = bool(np.isfinite(norm) and norm < HUGE and tangent <= OFFSET_LIMIT * norm + ROUNDING)
+    return Solution(problem.parameters(coordinates), (norm * problem.scale) ** 2, converged, offset)

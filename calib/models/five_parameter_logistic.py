@@ -1,0 +1,140 @@
+"""Logistic curve in ln x with two plateaus and an asymmetry."""
+
+from __future__ import annotations
+
+from typing import ClassVar
+
+import numpy as np
+from numpy.typing import ArrayLike
+from scipy.special import expit
+
+from calib.models.response_model import (
+    Array,
+    Asymptote,
+    Parameter,
+    Parameters,
+    ResponseModel,
+    as_array,
+    columns,
+    half_response,
+    positive_range,
+)
+
+
+class FiveParameterLogistic(ResponseModel):
+    """y = infinite + (zero − infinite)/(1 + (x/midpoint)^slope)^asymmetry, slope > 0.
+
+    With asymmetry 1 it is the 4PL. The midpoint is not the half-response
+    concentration; `half_response_concentration` is.
+    """
+
+    name = "5PL"
+    formula = "infinite + (zero − infinite)/(1 + (x/midpoint)^slope)^asymmetry"
+    plateau = True
+    parameters: ClassVar[tuple[Parameter, ...]] = (
+        Parameter("zero", "response at concentration 0", "response", linear=True),
+        Parameter("infinite", "asymptote for large concentrations", "response", linear=True),
+        Parameter("midpoint", "location on the concentration axis", "concentration", positive=True),
+        Parameter("slope", "steepness in ln x", "1", 0.02, 100.0, positive=True),
+        Parameter("asymmetry", "difference between the two bends", "1", 0.01, 100.0, positive=True),
+    )
+
+    def _steps(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array, Array]:
+        """(ln x − ln midpoint), 1 − F and ln F with F = 1/(1 + (x/midpoint)^slope)."""
+        x = as_array(x)
+        distance = np.log(np.where(x > 0, x, 1.0)) - np.log(p[2])
+        exponent = np.where(x > 0, p[3] * distance, -np.inf)
+        return as_array(distance), as_array(expit(exponent)), as_array(-np.logaddexp(0.0, exponent))
+
+    def response(self, x: ArrayLike, p: Parameters) -> Array:
+        """Response at concentrations ``x`` >= 0; exactly ``zero`` at x = 0."""
+        zero, infinite, _, _, asymmetry = p
+        log_f = self._steps(x, p)[2]
+        # Written from the zero response, so that x = 0 is exact.
+        return as_array(zero + (zero - infinite) * np.expm1(asymmetry * log_f))
+
+    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+        """Derivatives in zero, infinite, midpoint, slope and asymmetry."""
+        zero, infinite, midpoint, slope, asymmetry = p
+        distance, rest, log_f = self._steps(x, p)
+        share = np.exp(asymmetry * log_f)
+        fall = (zero - infinite) * asymmetry * share * rest
+        return columns(
+            share,
+            -np.expm1(asymmetry * log_f),
+            fall * slope / midpoint,
+            -fall * distance,
+            (zero - infinite) * share * log_f,
+        )
+
+    def slope(self, x: ArrayLike, p: Parameters) -> Array:
+        """Derivative in the concentration; infinite at x = 0 when slope < 1."""
+        zero, infinite, _, slope, asymmetry = p
+        x = as_array(x)
+        _, rest, log_f = self._steps(np.where(x > 0, x, 1e-300), p)
+        fall = (infinite - zero) * asymmetry * np.exp(asymmetry * log_f) * rest * slope
+        return as_array(fall / np.where(x > 0, x, 1e-300))
+
+    def inverse(self, y: ArrayLike, p: Parameters) -> Array:
+        """Exact inverse; nan on or beyond either plateau."""
+        zero, infinite, midpoint, slope, asymmetry = p
+        y = as_array(y)
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            ratio = (zero - y) / (y - infinite)
+            rise = np.expm1(np.log1p(ratio) / asymmetry)
+            x = midpoint * np.abs(rise) ** (1.0 / slope)
+            return as_array(np.where((ratio >= 0) & np.isfinite(ratio), x, np.nan))
+
+    def start(self, x: Array, y: Array) -> Array:
+        """Logit regression between plateaus set just outside the readings."""
+        return np.append(_logit_start(x, y), 1.0)
+
+    def grid(self, x: Array) -> Array:
+        """Midpoint, slope and asymmetry on a coarse lattice around the standards."""
+        return _lattice(_midpoints(x), np.geomspace(0.3, 10.0, 9), np.geomspace(0.25, 4.0, 5))
+
+    def bounds(self, x: Array) -> tuple[Array, Array]:
+        """The midpoint may leave the standards by five decades on either side."""
+        lower, upper = super().bounds(x)
+        low, high = positive_range(x)
+        lower[2], upper[2] = low * 1e-5, high * 1e5
+        return lower, upper
+
+    def limit_at_zero(self, p: Parameters) -> Asymptote:
+        """The zero response."""
+        return Asymptote(float(p[0]), np.eye(len(self.parameters))[0])
+
+    def limit_at_infinity(self, p: Parameters) -> Asymptote:
+        """The response for large concentrations."""
+        return Asymptote(float(p[1]), np.eye(len(self.parameters))[1])
+
+    def half_response_concentration(self, p: Parameters) -> float:
+        """Concentration half-way between the plateaus: C·(2^(1/g) − 1)^(1/b)."""
+        return float(p[2] * np.expm1(np.log(2.0) / p[4]) ** (1.0 / p[3]))
+
+
+def _midpoints(x: Array) -> Array:
+    low, high = positive_range(x)
+    return np.exp(np.linspace(np.log(low) - 2.0, np.log(high) + 2.0, 21))
+
+
+def _lattice(*axes: Array) -> Array:
+    return np.stack([a.ravel() for a in np.meshgrid(*axes, indexing="ij")], axis=-1)
+
+
+def _logit_start(x: Array, y: Array) -> Array:
+    """Zero, infinite, midpoint and slope; the linearised form serves as a start only."""
+    low_end, high_end = y[x == x.min()].mean(), y[x == x.max()].mean()
+    margin = 0.05 * (high_end - low_end)
+    zero, infinite = low_end - margin, high_end + margin
+    inside = x > 0
+    span = infinite - zero
+    if span == 0 or np.unique(x[inside]).size < 2:
+        return np.array([zero, infinite, half_response(x, y), 1.0])
+    share = np.clip((y[inside] - zero) / span, 0.01, 0.99)
+    logit, log_x = np.log(share / (1.0 - share)), np.log(x[inside])
+    slope = float(np.polyfit(log_x, logit, 1)[0])
+    if slope <= 0.05:
+        return np.array([zero, infinite, half_response(x, y), 1.0])
+    midpoint = float(np.exp(log_x.mean() - logit.mean() / slope))
+    return np.array([zero, infinite, midpoint, min(slope, 20.0)])

@@ -1,0 +1,63 @@
+"""Logistic curve in ln x with two plateaus."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike
+
+from calib.models.five_parameter_logistic import FiveParameterLogistic, _lattice, _logit_start, _midpoints
+from calib.models.response_model import Array, Parameter, Parameters, as_array, columns
+
+
+class FourParameterLogistic(FiveParameterLogistic):
+    """y = infinite + (zero − infinite)/(1 + (x/midpoint)^slope), slope > 0.
+
+    ``zero`` is the response at x = 0 and ``infinite`` the asymptote for large x,
+    whichever is higher, so that one curve has one description.
+    """
+
+    name = "4PL"
+    formula = "infinite + (zero − infinite)/(1 + (x/midpoint)^slope)"
+    parameters = (
+        *FiveParameterLogistic.parameters[:2],
+        Parameter("midpoint", "concentration half-way between the plateaus", "concentration", positive=True),
+        FiveParameterLogistic.parameters[3],
+    )
+
+    def response(self, x: ArrayLike, p: Parameters) -> Array:
+        """Response at concentrations ``x`` >= 0; exactly ``zero`` at x = 0."""
+        zero, infinite = p[0], p[1]
+        return as_array(zero + (infinite - zero) * self._steps(x, p)[1])
+
+    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+        """Derivatives in zero, infinite, midpoint and slope."""
+        zero, infinite, midpoint, slope = p
+        distance, rest, log_f = self._steps(x, p)
+        share = np.exp(log_f)
+        fall = (zero - infinite) * share * rest
+        return columns(share, rest, fall * slope / midpoint, -fall * distance)
+
+    def slope(self, x: ArrayLike, p: Parameters) -> Array:
+        """Derivative in the concentration; infinite at x = 0 when slope < 1."""
+        return super().slope(x, (*p, 1.0))
+
+    def inverse(self, y: ArrayLike, p: Parameters) -> Array:
+        """Exact inverse; nan on or beyond either plateau."""
+        zero, infinite, midpoint, slope = p
+        y = as_array(y)
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            ratio = (zero - y) / (y - infinite)
+            x = midpoint * np.abs(ratio) ** (1.0 / slope)
+            return as_array(np.where((ratio >= 0) & np.isfinite(ratio), x, np.nan))
+
+    def start(self, x: Array, y: Array) -> Array:
+        """Logit regression between plateaus set just outside the readings."""
+        return _logit_start(x, y)
+
+    def grid(self, x: Array) -> Array:
+        """Midpoint and slope on a coarse lattice around the standards."""
+        return _lattice(_midpoints(x), np.geomspace(0.3, 10.0, 9))
+
+    def half_response_concentration(self, p: Parameters) -> float:
+        """The midpoint itself."""
+        return float(p[2])

@@ -1,0 +1,163 @@
+"""The contract of a response model: what a file in this folder must declare.
+
+Parameters travel as one sequence ``p`` in the declared order. Each element is a
+number, or an array that broadcasts against the concentrations, so that a stack of
+curves is evaluated by the same expressions as a single one.
+"""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any, ClassVar
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+Array = NDArray[np.float64]
+Parameters = Sequence[Any] | Array
+
+
+@dataclass(frozen=True, slots=True)
+class Parameter:
+    """One parameter of a response model.
+
+    Attributes
+    ----------
+    name : str
+        Public name.
+    meaning : str
+        What it is, in words.
+    unit_of : str
+        Its unit in terms of the response and the concentration ("1": none).
+    lower, upper : float
+        Wide sanity bounds; they only keep the solver out of nonsense.
+    positive : bool
+        Solved in its logarithm.
+    linear : bool
+        The response is linear in it when the others are held.
+    """
+
+    name: str
+    meaning: str
+    unit_of: str
+    lower: float = -np.inf
+    upper: float = np.inf
+    positive: bool = False
+    linear: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Asymptote:
+    """A finite limit of the response, with its gradient in the parameters."""
+
+    response: float
+    gradient: Array
+
+
+class ResponseModel(ABC):
+    """A response y(x, p), everything the solver and the inversion need of it.
+
+    ``logarithmic`` says that the model lives on x >= 0 and is inverted in ln x;
+    otherwise it is inverted on the plain x axis. ``plateau`` says that it has an
+    asymptote which the standards ought to reach.
+    """
+
+    name: ClassVar[str]
+    formula: ClassVar[str]
+    parameters: ClassVar[tuple[Parameter, ...]]
+    logarithmic: ClassVar[bool] = True
+    plateau: ClassVar[bool] = False
+    fixed_by_default: ClassVar[dict[str, float]] = {}
+
+    @abstractmethod
+    def response(self, x: ArrayLike, p: Parameters) -> Array:
+        """Response at concentrations ``x`` (any shape)."""
+
+    @abstractmethod
+    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+        """Derivatives in the parameters, shape of the response + (k,)."""
+
+    @abstractmethod
+    def slope(self, x: ArrayLike, p: Parameters) -> Array:
+        """Derivative of the response in the concentration."""
+
+    @abstractmethod
+    def inverse(self, y: ArrayLike, p: Parameters) -> Array:
+        """Concentration of response ``y``; nan where the curve never reaches it."""
+
+    @abstractmethod
+    def start(self, x: Array, y: Array) -> Array:
+        """Data-driven start values (k,) from standards x (n,), y (n,)."""
+
+    @abstractmethod
+    def grid(self, x: Array) -> Array:
+        """Candidates (cells, q) for the q parameters that are not linear."""
+
+    def limit_at_zero(self, p: Parameters) -> Asymptote | None:
+        """Limit of the response at the low end of the axis, where finite."""
+        return None
+
+    def limit_at_infinity(self, p: Parameters) -> Asymptote | None:
+        """Limit of the response for large concentrations, where finite."""
+        return None
+
+    def branch(self, p: Parameters, lowest: float, highest: float) -> tuple[float, float]:
+        """Interval of x on which the response is monotone, around the standards."""
+        return (0.0 if self.logarithmic else -np.inf), np.inf
+
+    def bounds(self, x: Array) -> tuple[Array, Array]:
+        """Lower and upper sanity bounds (k,) for standards at ``x``."""
+        return (
+            np.array([q.lower for q in self.parameters], dtype=np.float64),
+            np.array([q.upper for q in self.parameters], dtype=np.float64),
+        )
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Parameter names in order."""
+        return tuple(q.name for q in self.parameters)
+
+    @property
+    def linear(self) -> NDArray[np.bool_]:
+        """Which parameters the response is linear in (k,)."""
+        return np.array([q.linear for q in self.parameters])
+
+    @property
+    def positive(self) -> NDArray[np.bool_]:
+        """Which parameters are solved in their logarithm (k,)."""
+        return np.array([q.positive for q in self.parameters])
+
+    def index(self, name: str) -> int:
+        """Position of a parameter."""
+        return self.names.index(name)
+
+
+def as_array(x: ArrayLike) -> Array:
+    """Float64 view of anything array-like."""
+    return np.asarray(x, dtype=np.float64)
+
+
+def columns(*derivatives: Any) -> Array:
+    """Stack the derivatives in each parameter along a new last axis."""
+    return np.stack(np.broadcast_arrays(*derivatives), axis=-1).astype(np.float64, copy=False)
+
+
+def positive_range(x: Array) -> tuple[float, float]:
+    """Lowest and highest concentration above zero."""
+    above = x[x > 0]
+    return (float(above.min()), float(above.max())) if above.size else (1.0, 1.0)
+
+
+def half_response(x: Array, y: Array) -> float:
+    """Concentration at which the standards are half-way between their ends."""
+    order = np.argsort(x, kind="stable")
+    xs, first = np.unique(x[order], return_index=True)
+    means = np.add.reduceat(y[order], first) / np.diff(np.append(first, x.size))
+    middle = 0.5 * (means[0] + means[-1])
+    rising = means[-1] >= means[0]
+    ordered = np.maximum.accumulate(means if rising else -means)
+    guess = float(np.interp(middle if rising else -middle, ordered, xs))
+    low, high = positive_range(x)
+    return min(max(guess, low), high)

@@ -1,0 +1,1 @@
+"""From responses of unknowns to concentrations with their uncertainty."""

@@ -1,0 +1,157 @@
+"""The concentration axis a curve is inverted on: ln x, or x itself."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import brentq
+
+from calib.curves.curve import Curve
+from calib.models import CustomModel
+
+Array = NDArray[np.float64]
+
+# How far beyond the standards an interval is followed: e^10 on the logarithmic axis,
+# ten spans on the plain one.
+REACH = 10.0
+LOG_STEP = 0.1
+
+
+@dataclass(frozen=True, slots=True)
+class End:
+    """Response at an end of the axis with its gradient in the parameters."""
+
+    response: float
+    gradient: Array
+    concentration: float
+
+
+@dataclass(frozen=True, slots=True)
+class Axis:
+    """Axis positions t (ln x or x), its ends, and the curve's exact inverse on it.
+
+    Attributes
+    ----------
+    low, high : float
+        Ends of the axis as positions t.
+    direction : float
+        +1 for a rising curve, −1 for a falling one.
+    low_limit, high_limit : End or None
+        The response at either end where a response can lie beyond it.
+    open_low : float
+        Concentration that stands for an open lower end.
+    """
+
+    curve: Curve
+    logarithmic: bool
+    low: float
+    high: float
+    direction: float
+    low_limit: End | None
+    high_limit: End | None
+    open_low: float
+
+    def concentration(self, t: Array) -> Array:
+        """Concentration at axis positions."""
+        return np.exp(t) if self.logarithmic else np.asarray(t, dtype=np.float64)
+
+    def position(self, x: Array) -> Array:
+        """Axis position of concentrations (−inf for 0 on the logarithmic axis)."""
+        if not self.logarithmic:
+            return np.asarray(x, dtype=np.float64)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.asarray(np.log(x))
+
+    def steps(self, t: Array, direction: int) -> Array:
+        """Grid (m, steps) from each t outwards to the end of the axis.
+
+        Steps are 0.1 in ln x; on the plain axis a fiftieth of the span of the
+        standards, growing once outside.
+        """
+        if self.logarithmic:
+            offsets = np.arange(0.0, self.high - self.low + LOG_STEP, LOG_STEP)
+        else:
+            span = self.curve.standards.highest - float(self.curve.standards.concentration.min())
+            near = np.linspace(0.0, 2.0, 101)
+            far = np.geomspace(2.0, 2.0 * REACH + 2.0, 101)[1:]
+            offsets = np.concatenate([near, far]) * (span if span > 0 else 1.0)
+        return np.clip(t[:, None] + direction * offsets, self.low, self.high)
+
+    def inverse(self, y: Array) -> Array:
+        """Concentration of each response on the branch of the standards; nan where none."""
+        model = self.curve.response_model
+        if isinstance(model, CustomModel):
+            return np.array([self._root(float(v)) for v in y])
+        x = model.inverse(y, self.curve.values)
+        return x if self.logarithmic else self._on_branch(x)
+
+    def _on_branch(self, x: Array) -> Array:
+        """Mirror a root about the turning point when it lies on the arm without the standards."""
+        with np.errstate(invalid="ignore"):
+            if self.low_limit is not None:
+                x = np.where(x < self.low, 2.0 * self.low - x, x)
+            if self.high_limit is not None:
+                x = np.where(x > self.high, 2.0 * self.high - x, x)
+        return x
+
+    def _root(self, y: float) -> float:
+        def miss(x: float) -> float:
+            return float(self.curve.predict(x)) - y
+
+        low, high = miss(self.low), miss(self.high)
+        if not low * high <= 0:
+            return np.nan
+        return float(
+            brentq(miss, self.low, self.high, xtol=1e-14 * max(abs(self.low), abs(self.high)), rtol=1e-14)
+        )
+
+    def positions(self, value: Array, y: Array) -> tuple[str, ...]:
+        """'inside', 'above' or 'below' the calibrated range, also where no value exists."""
+        low, high = self.curve.standards.lowest, self.curve.standards.highest
+        top = float(self.curve.predict(high))
+        with np.errstate(invalid="ignore"):
+            above = np.where(np.isfinite(value), value > high, self.direction * (y - top) > 0)
+            below = np.where(np.isfinite(value), value < low, ~above)
+        return tuple(np.select([above, below], ["above", "below"], "inside").tolist())
+
+
+def axis_of(curve: Curve) -> Axis:
+    """Axis of a fitted curve."""
+    model, p = curve.response_model, curve.values
+    lowest, highest = curve.standards.lowest, curve.standards.highest
+    first = float(curve.standards.concentration.min())
+    ends = np.asarray(curve.predict(np.array([first, highest])))
+    direction = 1.0 if ends[1] >= ends[0] else -1.0
+    if model.logarithmic:
+        zero, infinite = model.limit_at_zero(p), model.limit_at_infinity(p)
+        return Axis(
+            curve,
+            True,
+            float(np.log(lowest)) - REACH,
+            float(np.log(highest)) + REACH,
+            direction,
+            End(zero.response, zero.gradient, 0.0) if zero else None,
+            End(infinite.response, infinite.gradient, highest * np.exp(REACH)) if infinite else None,
+            0.0,
+        )
+    span = highest - first or 1.0
+    branch_low, branch_high = model.branch(p, first, highest)
+    low, high = max(branch_low, first - REACH * span), min(branch_high, highest + REACH * span)
+    return Axis(
+        curve,
+        False,
+        low,
+        high,
+        direction,
+        _turning(curve, low) if low == branch_low else None,
+        _turning(curve, high) if high == branch_high else None,
+        -np.inf,
+    )
+
+
+def _turning(curve: Curve, x: float) -> End:
+    """End of a branch as the limit of what the curve can reach."""
+    gradient = curve.response_model.gradient(np.array(x), curve.values)
+    return End(float(curve.predict(x)), gradient, x)
