@@ -1,0 +1,21 @@
+"""Judge the curve of a run by the acceptance criteria of its method."""
+
+from calib.acceptance.criteria import CRITERIA, criteria_from
+from calib.acceptance.criterion import Criterion, CriterionResult
+from calib.acceptance.evidence import Evidence, JudgedCheck, JudgedStandard
+from calib.acceptance.limits import Limit, read_preset
+from calib.acceptance.verdict import Verdict, judge
+
+__all__ = [
+    "CRITERIA",
+    "Criterion",
+    "CriterionResult",
+    "Evidence",
+    "JudgedCheck",
+    "JudgedStandard",
+    "Limit",
+    "Verdict",
+    "criteria_from",
+    "judge",
+    "read_preset",
+]

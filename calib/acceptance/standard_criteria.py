@@ -1,0 +1,201 @@
+"""Criteria on the standards of the curve: relative errors, and how many keep their limit."""
+
+import math
+from collections.abc import Iterable, Mapping
+from typing import ClassVar
+
+from calib.acceptance.criterion import CriterionResult, LimitedCriterion
+from calib.acceptance.evidence import Evidence, JudgedStandard
+from calib.acceptance.limits import Limit, Quantity, at_least, within
+from calib.acceptance.wording import amount, count, percent, relative_error_words, signed_percent
+
+MIDDLE = "relative_error"
+LOWEST = "relative_error_lowest"
+HIGHEST = "relative_error_highest"
+
+
+def governing_key(limits: Mapping[str, Limit], level: float, ends: tuple[float, float] | None) -> str:
+    """Which relative-error limit a level is judged by: an end level's own one where the method gives it."""
+    if ends is not None and level == ends[0] and LOWEST in limits:
+        return LOWEST
+    if ends is not None and level == ends[1] and HIGHEST in limits:
+        return HIGHEST
+    return MIDDLE
+
+
+def keeps(standard: JudgedStandard, limit: float) -> bool:
+    """Whether a standard is in the fit, has a back-calculated value, and keeps the limit."""
+    back_calculated = not math.isnan(standard.back_calculated)
+    return not standard.excluded and back_calculated and within(standard.relative_error, limit)
+
+
+class ErrorOfStandards(LimitedCriterion):
+    """Largest relative error of the standards in the fit that this limit governs."""
+
+    key: ClassVar[str] = MIDDLE
+    quantity: ClassVar[Quantity] = Quantity.FRACTION
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Every governed standard must keep the limit; one without a back-calculated value fails."""
+        what = f"relative error of {self._whom()} at most {percent(self.limit.value)}"
+        if not evidence.fitted:
+            return self._result(what, None, False, "no standard above zero is in the fit")
+        governed = self._governed(evidence)
+        if not governed:
+            return self._result(what, None, True, "no standard in the fit falls under this limit")
+        failing = [s for s in governed if not keeps(s, self.limit.value)]
+        return self._result(what, _largest(governed), not failing, self._detail(governed, failing, evidence))
+
+    def _whom(self) -> str:
+        words = {
+            (False, False): "each standard",
+            (True, False): "each standard above the lowest level",
+            (False, True): "each standard below the highest level",
+            (True, True): "each standard between the end levels",
+        }
+        return words[LOWEST in self.limits, HIGHEST in self.limits]
+
+    def _governed(self, evidence: Evidence) -> list[JudgedStandard]:
+        ends = evidence.ends
+        return [s for s in evidence.fitted if governing_key(self.limits, s.level, ends) == self.key]
+
+    def _detail(
+        self, governed: list[JudgedStandard], failing: list[JudgedStandard], evidence: Evidence
+    ) -> str:
+        shown = failing or [max(governed, key=lambda s: abs(s.relative_error))]
+        words = [relative_error_words(s, evidence.concentration_unit, self.limit.value) for s in shown]
+        return ("beyond the limit: " if failing else "largest: ") + ", ".join(words)
+
+
+class ErrorAtLowest(ErrorOfStandards):
+    """Largest relative error at the lowest level in the fit."""
+
+    key: ClassVar[str] = LOWEST
+
+    def _whom(self) -> str:
+        return "the lowest level"
+
+
+class ErrorAtHighest(ErrorOfStandards):
+    """Largest relative error at the highest level in the fit."""
+
+    key: ClassVar[str] = HIGHEST
+
+    def _whom(self) -> str:
+        return "the highest level"
+
+
+class StandardsPassing(LimitedCriterion):
+    """Share of the original standards that keep their relative-error limit.
+
+    An excluded reading counts in the original number and cannot pass.
+    """
+
+    key: ClassVar[str] = "standards_passing"
+    quantity: ClassVar[Quantity] = Quantity.SHARE
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Compare the passing share with the limit."""
+        what = f"at least {percent(self.limit.value)} of the standards within their limit"
+        if not evidence.judged:
+            return self._result(what, None, False, "no standard above zero in this run")
+        failing = [s for s in evidence.judged if not _keeps_own_limit(s, self.limits, evidence)]
+        passing = len(evidence.judged) - len(failing)
+        share = passing / len(evidence.judged)
+        detail = f"{passing} of {count(len(evidence.judged), 'standard')} ({100 * share:.1f} %)"
+        return self._result(
+            what, share, at_least(share, self.limit.value), detail + self._named(failing, evidence)
+        )
+
+    def _named(self, failing: list[JudgedStandard], evidence: Evidence) -> str:
+        words = [
+            relative_error_words(s, evidence.concentration_unit, _own_limit(s, self.limits, evidence))
+            for s in failing
+        ]
+        return "; not within: " + ", ".join(words) if words else ""
+
+
+class LevelsPassing(LimitedCriterion):
+    """Number of levels at which at least half of the original readings keep their limit."""
+
+    key: ClassVar[str] = "levels_passing"
+    quantity: ClassVar[Quantity] = Quantity.COUNT
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Compare the number of passing levels with the limit."""
+        what = (
+            f"at least {count(int(self.limit.value), 'level')} with half or more of the readings"
+            " within their limit"
+        )
+        failing = [level for level in _levels(evidence.judged) if not self._passes(level, evidence)]
+        passing = len(_levels(evidence.judged)) - len(failing)
+        named = [amount(level, evidence.concentration_unit) for level in failing]
+        detail = count(passing, "passing level") + (f"; not passing: {', '.join(named)}" if named else "")
+        return self._result(what, passing, at_least(passing, self.limit.value), detail)
+
+    def _passes(self, level: float, evidence: Evidence) -> bool:
+        readings = [s for s in evidence.judged if s.level == level]
+        passing = [s for s in readings if _keeps_own_limit(s, self.limits, evidence)]
+        return 2 * len(passing) >= len(readings)
+
+
+class MinimumLevels(LimitedCriterion):
+    """Number of distinct levels above zero in the fit; anchor standards do not count."""
+
+    key: ClassVar[str] = "minimum_levels"
+    quantity: ClassVar[Quantity] = Quantity.COUNT
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Compare the number of levels with the limit."""
+        levels = len(_levels(evidence.fitted))
+        what = f"at least {count(int(self.limit.value), 'level')} above zero in the fit"
+        return self._result(what, levels, at_least(levels, self.limit.value), count(levels, "level"))
+
+
+class StandardErrorOfCurve(LimitedCriterion):
+    """Relative standard error of the curve, sqrt(sum(RE**2) / (n - p)).
+
+    Source: The NELAC Institute, Calculating Relative Standard Error (RSE), 2017; p is the number
+    of estimated parameters, whatever the noise model.
+    """
+
+    key: ClassVar[str] = "relative_standard_error"
+    quantity: ClassVar[Quantity] = Quantity.FRACTION
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Compare the relative standard error with the limit; without a value it fails."""
+        what = f"relative standard error at most {percent(self.limit.value)}"
+        n, p = len(evidence.fitted), evidence.free_parameters
+        basis = f"from {count(n, 'standard')} and {count(p, 'parameter')}"
+        if n <= p:
+            return self._result(what, None, False, f"no value {basis}: more standards are needed")
+        rse = relative_standard_error((s.relative_error for s in evidence.fitted), n - p)
+        if math.isnan(rse):
+            return self._result(
+                what, None, False, f"no value {basis}: a standard has no back-calculated value"
+            )
+        shown = signed_percent(rse, self.limit.value).removeprefix("+")
+        return self._result(what, rse, within(rse, self.limit.value), f"{shown} {basis}")
+
+
+def relative_standard_error(relative_errors: Iterable[float], degrees_of_freedom: int) -> float:
+    """Compute sqrt(sum(RE**2) / degrees_of_freedom), exactly summed so that the order does not matter."""
+    return math.sqrt(math.fsum(error * error for error in relative_errors) / degrees_of_freedom)
+
+
+def _own_limit(standard: JudgedStandard, limits: Mapping[str, Limit], evidence: Evidence) -> float:
+    return limits[governing_key(limits, standard.level, evidence.ends)].value
+
+
+def _keeps_own_limit(standard: JudgedStandard, limits: Mapping[str, Limit], evidence: Evidence) -> bool:
+    return keeps(standard, _own_limit(standard, limits, evidence))
+
+
+def _levels(standards: Iterable[JudgedStandard]) -> list[float]:
+    return sorted({s.level for s in standards})
+
+
+def _largest(standards: Iterable[JudgedStandard]) -> float:
+    """Return the largest relative error in size, nan as soon as one has no value."""
+    sizes = [abs(s.relative_error) for s in standards]
+    return math.nan if any(math.isnan(size) for size in sizes) else max(sizes)

@@ -1,0 +1,49 @@
+"""Figures as a verdict says them: percent with sign, concentrations with unit."""
+
+import math
+
+from calib.acceptance.evidence import JudgedStandard
+from calib.acceptance.limits import within
+
+MOST_DECIMALS = 12
+
+
+def percent(fraction: float) -> str:
+    """Write a limit in percent, for example '15 %'."""
+    return f"{100 * fraction:g} %"
+
+
+def signed_percent(fraction: float, limit: float) -> str:
+    """Write a relative error in percent with its sign, one decimal.
+
+    More decimals where one would show a value beyond the limit as if it were on it.
+    """
+    decimals = 1
+    if not within(fraction, limit):
+        largest_allowed = round(100 * limit, MOST_DECIMALS)
+        while round(100 * abs(fraction), decimals) <= largest_allowed and decimals < MOST_DECIMALS:
+            decimals += 1
+    return f"{100 * fraction:+.{decimals}f} %"
+
+
+def amount(concentration: float, unit: str) -> str:
+    """Write a concentration with its unit; a bare ratio (unit '1') has none."""
+    return f"{concentration:g}" if unit == "1" else f"{concentration:g} {unit}"
+
+
+def relative_error_words(standard: JudgedStandard, unit: str, limit: float) -> str:
+    """Say one standard's relative error, for example 'S1 at 0.5 ug/L: +16.4 %'."""
+    return f"{standard.label} at {amount(standard.level, unit)}: {_outcome(standard, limit)}"
+
+
+def count(number: int, noun: str) -> str:
+    """Write a number of things, for example '1 blank' or '2 blanks'."""
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
+
+
+def _outcome(standard: JudgedStandard, limit: float) -> str:
+    if standard.excluded:
+        return "excluded"
+    if math.isnan(standard.back_calculated) or math.isnan(standard.relative_error):
+        return "no back-calculated value"
+    return signed_percent(standard.relative_error, limit)

@@ -1,0 +1,87 @@
+from pathlib import Path
+
+import pytest
+
+import calib.acceptance
+from calib.acceptance import criteria_from, read_preset
+from calib.acceptance.limits import CHECKED
+from calib.errors import MethodError
+
+PRESETS = {
+    p.stem: p.read_text("utf-8") for p in (Path(calib.acceptance.__file__).parent / "presets").glob("*.toml")
+}
+
+# Figures: ICH M10 2022 and FDA 2018 (read in texts that quote them), EAEU bioanalysis rule par. 93 (read),
+# Standard Methods 2020, 4020, 6020 and ICH Q2(R1) (read), EPA 8000D (from memory);
+# the plain preset is common practice but for its number of levels.
+FIGURES = {
+    "bioanalytical-chromatographic": {
+        "relative_error": 0.15,
+        "relative_error_lowest": 0.20,
+        "standards_passing": 0.75,
+        "levels_passing": 6,
+        "minimum_levels": 6,
+    },
+    "bioanalytical-ligand-binding": {
+        "relative_error": 0.20,
+        "relative_error_lowest": 0.25,
+        "relative_error_highest": 0.25,
+        "standards_passing": 0.75,
+        "levels_passing": 6,
+        "minimum_levels": 6,
+    },
+    "environmental": {
+        "relative_error": 0.30,
+        "relative_error_lowest": 0.50,
+        "relative_standard_error": 0.20,
+        "minimum_levels": 5,
+        "first_check_recovery": 0.15,
+        "check_recovery": 0.20,
+    },
+    "metals-frequent-checks": {
+        "relative_error": 0.10,
+        "minimum_levels": 5,
+        "first_check_recovery": 0.10,
+        "check_recovery": 0.10,
+    },
+    "plain": {
+        "relative_error": 0.20,
+        "relative_error_lowest": 0.25,
+        "minimum_levels": 5,
+        "check_recovery": 0.15,
+    },
+}
+
+
+@pytest.mark.parametrize("name", sorted(FIGURES))
+def test_the_figures_of_each_preset(name):
+    assert {key: limit.value for key, limit in read_preset(PRESETS[name]).items()} == FIGURES[name]
+
+
+def test_every_preset_is_known_here():
+    assert set(PRESETS) == set(FIGURES)
+
+
+@pytest.mark.parametrize("name", sorted(FIGURES))
+def test_every_preset_makes_criteria_and_says_how_each_limit_was_checked(name):
+    preset = read_preset(PRESETS[name])
+    assert criteria_from(preset)
+    assert all(limit.source and limit.checked in CHECKED[:-1] for limit in preset.values())
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        ("relative_error = ", "not readable as TOML"),
+        ("relative_error = 0.15", "relative_error: give exactly value, source and checked"),
+        ("[blank]\nvalue = 1\nsource = 'x'", "blank: give exactly"),
+        ("[blank]\nvalue = 1\nsource = 'x'\nchecked = 'verified'\nunit = 'g'", "blank: give exactly"),
+        ("[blank]\nvalue = '1'\nsource = 'x'\nchecked = 'verified'", "value '1' is not a number"),
+        ("[blank]\nvalue = true\nsource = 'x'\nchecked = 'verified'", "value True is not a number"),
+        ("[blank]\nvalue = 1\nsource = ' '\nchecked = 'verified'", "name the source"),
+        ("[blank]\nvalue = 1\nsource = 'x'\nchecked = 'yes'", "checked is 'yes'; allowed are verified"),
+    ],
+)
+def test_a_broken_preset_is_refused(text, words):
+    with pytest.raises(MethodError, match=words):
+        read_preset(text)
