@@ -1,9 +1,12 @@
 """The store: append-only tables in SQLite, one transaction and one chain entry per change."""
 
+from calib.store.backup import Backup, backup_store
 from calib.store.base import Base
 from calib.store.chain import GENESIS, ChainEntry
+from calib.store.check import StoreCheck, check_store
 from calib.store.current import is_current
 from calib.store.curves import Curve, CurveStandard, VerdictRow
+from calib.store.findings import StoreFinding
 from calib.store.instruments import Event, Instrument
 from calib.store.lots import StandardLot
 from calib.store.methods import Method
@@ -12,9 +15,11 @@ from calib.store.originals import Original
 from calib.store.quantities import QuantityRow
 from calib.store.runs import Exclusion, Reading, Run, RunFacts, RunVoid
 from calib.store.session import Store
+from calib.store.upgrade import Upgrade, upgrade_store
 
 __all__ = [
     "GENESIS",
+    "Backup",
     "Base",
     "ChainEntry",
     "Curve",
@@ -31,9 +36,15 @@ __all__ = [
     "RunVoid",
     "StandardLot",
     "Store",
+    "StoreCheck",
+    "StoreFinding",
+    "Upgrade",
     "VerdictRow",
+    "backup_store",
+    "check_store",
     "default_store_path",
     "is_current",
     "open_store",
     "store_path",
+    "upgrade_store",
 ]

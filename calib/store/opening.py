@@ -9,7 +9,7 @@ from sqlalchemy.engine import make_url
 from sqlalchemy.exc import ArgumentError
 
 from calib.errors import NotFound, StoreError
-from calib.store.publishing import draft_beside, publish
+from calib.store.files import new_file
 from calib.store.refusals import files_in_words, in_words
 from calib.store.schema import require_current
 from calib.store.session import Store, connect_engine, local_now
@@ -99,12 +99,19 @@ def _create(path: Path) -> None:
     """Build a new store beside its place, so that a crash leaves none or a whole one."""
     from calib.store.migrating import migrate
 
-    with files_in_words("create the store", path), in_words(path), draft_beside(path) as draft:
+    with (
+        files_in_words("create the store", path),
+        in_words(path),
+        _by_whoever_is_first(),
+        new_file(path) as draft,
+    ):
         engine = connect_engine(draft, BUSY_SECONDS)
         try:
             migrate(engine)
         finally:
             engine.dispose()
-        # Two programs may create at once: the second finds the store of the first and uses that.
-        with suppress(FileExistsError):
-            publish(draft, path)
+
+
+def _by_whoever_is_first() -> suppress:
+    # Two programs may create at once: the second finds the store of the first and uses that.
+    return suppress(FileExistsError)

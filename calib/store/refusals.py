@@ -1,5 +1,6 @@
 """What the database or the file system refused, in words."""
 
+import errno
 import sqlite3
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -35,6 +36,12 @@ _REFUSALS: dict[int, tuple[type[StoreError], str]] = {
     ),
     sqlite3.SQLITE_NOTADB: (NotAStore, "the file is no SQLite database; name a calib store"),
     sqlite3.SQLITE_CORRUPT: (StoreDamaged, "the file is damaged; go back to a backup, and keep this file"),
+}
+
+_REMEDIES = {
+    errno.ENOSPC: "make room and try again",
+    errno.EDQUOT: "make room and try again",
+    errno.EEXIST: "a file is never overwritten; name a new one",
 }
 
 
@@ -78,10 +85,10 @@ def files_in_words(deed: str, path: Path) -> Iterator[None]:
     try:
         yield
     except OSError as error:
-        why = error.strerror or type(error).__name__
-        raise StoreError(
-            f"cannot {deed} {path}: {why}; name a file in a folder that exists and that you may write to"
-        ) from error
+        remedy = _REMEDIES.get(
+            error.errno or 0, "name a file in a folder that exists and that you may write to"
+        )
+        raise StoreError(f"cannot {deed} {path}: {error.strerror or error}; {remedy}") from error
 
 
 def _refusal(path: Path, error: sqlite3.Error) -> StoreError | None:

@@ -1,10 +1,10 @@
 """The version of a store's schema, found with a plain query and without Alembic."""
 
-import sqlite3
 from contextlib import closing
 from pathlib import Path
 
 from calib.errors import NotAStore, NotFound, SchemaTooNew, SchemaTooOld, StoreDamaged
+from calib.store.files import connect_file
 from calib.store.refusals import files_in_words, in_words
 
 # Every schema there has been, oldest first; the migrations of the same names lead from one to the next.
@@ -41,10 +41,7 @@ def read_revision(path: Path) -> str:
         If it is a calib store that has lost its schema version.
     """
     _require_sqlite(path)
-    with (
-        in_words(path),
-        closing(sqlite3.connect(path.absolute().as_uri() + "?mode=rw", uri=True)) as connection,
-    ):
+    with in_words(path), closing(connect_file(path)) as connection:
         connection.execute("PRAGMA query_only = ON")
         tables = {
             name for (name,) in connection.execute("SELECT name FROM sqlite_master WHERE type = 'table'")

@@ -10,13 +10,15 @@ from types import TracebackType
 from typing import Any, Self
 
 from sqlalchemy import Engine, Table, create_engine, event, inspect
-from sqlalchemy.engine import URL, Connection
+from sqlalchemy.engine import Connection
 from sqlalchemy.orm import ORMExecuteState, Session, UOWTransaction
+from sqlalchemy.pool import QueuePool
 
 from calib.errors import StoreError
 from calib.store.base import Base
 from calib.store.chain import ChainEntry, Deed, append_entry, chain_head
 from calib.store.digests import canonical_json, key_of
+from calib.store.files import connect_file
 from calib.store.refusals import in_words
 
 WRITING = "calib_writing"
@@ -38,8 +40,9 @@ def connect_engine(path: Path, busy_seconds: float) -> Engine:
         How long to wait for another program that writes.
     """
     engine = create_engine(
-        URL.create("sqlite", database=str(path)),
-        connect_args={"timeout": busy_seconds},
+        "sqlite://",
+        creator=lambda: connect_file(path, busy_seconds),
+        poolclass=QueuePool,
         json_serializer=canonical_json,
     )
     event.listen(engine, "connect", _set_pragmas)

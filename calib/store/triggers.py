@@ -90,13 +90,14 @@ def _keys(table: Table) -> Iterator[tuple[str, ...]]:
 def _sqlite_triggers(table: Table) -> dict[str, str]:
     name = table.name
     bodies = {
-        "update": _refuse(name, "a row is never changed; add one that supersedes it") + ";",
-        "delete": _refuse(name, "a row is never removed; add one that supersedes it") + ";",
-        "insert": " ".join(_refuse_taken(name, key) for key in _keys(table)),
+        "UPDATE": _refuse(name, "a row is never changed; add one that supersedes it") + ";",
+        "DELETE": _refuse(name, "a row is never removed; add one that supersedes it") + ";",
+        "INSERT": " ".join(_refuse_taken(name, key) for key in _keys(table)),
     }
     return {
-        f"{name}_no_{act}": f'CREATE TRIGGER "{name}_no_{act}" BEFORE {act.upper()} ON "{name}" BEGIN {body} END'
+        trigger: f'CREATE TRIGGER "{trigger}" BEFORE {act} ON "{name}" BEGIN {body} END'
         for act, body in bodies.items()
+        for trigger in (f"{name}_no_{act.lower()}",)
     }
 
 

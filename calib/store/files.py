@@ -1,7 +1,8 @@
-"""Put a finished file in its place: whole, private, and never over another one."""
+"""Files of the store: opened where they are, put in place whole, private, never over another one."""
 
 import errno
 import os
+import sqlite3
 import tempfile
 from collections.abc import Iterator
 from contextlib import contextmanager
@@ -10,27 +11,38 @@ from pathlib import Path
 _NO_LINKS = {errno.EPERM, errno.ENOTSUP, errno.EOPNOTSUPP, errno.ENOSYS}
 
 
+def connect_file(path: Path, busy_seconds: float = 30.0) -> sqlite3.Connection:
+    """Connect to an SQLite file that is there; a missing one is an error, not a new empty file."""
+    address = f"{path.absolute().as_uri()}?mode=rw"
+    return sqlite3.connect(address, uri=True, timeout=busy_seconds, check_same_thread=False)
+
+
 @contextmanager
-def draft_beside(path: Path) -> Iterator[Path]:
-    """Make an empty file beside a path, private to the user; it is removed at the end."""
+def new_file(path: Path) -> Iterator[Path]:
+    """Make a file by way of a draft beside it, which takes its place when the block ends well.
+
+    Yields
+    ------
+    Path
+        The draft: empty, private to the user. A crash leaves no file or a whole one.
+
+    Raises
+    ------
+    FileExistsError
+        If a file of that name is there in the end; it is left as it is.
+    """
     handle, name = tempfile.mkstemp(prefix=f".{path.name}-", suffix=".draft", dir=path.parent)
     os.close(handle)
     draft = Path(name)
     try:
         yield draft
+        _publish(draft, path)
     finally:
         for left in (draft, *(draft.with_name(draft.name + end) for end in ("-wal", "-shm", "-journal"))):
             left.unlink(missing_ok=True)
 
 
-def publish(draft: Path, path: Path) -> None:
-    """Give a finished draft its name at one stroke.
-
-    Raises
-    ------
-    FileExistsError
-        If a file of that name is there already; it is left as it is.
-    """
+def _publish(draft: Path, path: Path) -> None:
     try:
         os.link(draft, path)
     except OSError as error:
