@@ -8,8 +8,10 @@ down_revision = ${repr(down_revision)}
 branch_labels = None
 depends_on = None
 
-# A table that is built again loses its triggers: call calib.store.triggers.create_triggers for it,
-# and add the revision to calib.store.schema.REVISIONS.
+# Add the revision to calib.store.schema.REVISIONS. A table that is built again (batch_alter_table) loses
+# its triggers: call calib.store.triggers.create_triggers for it. Hand over its CHECK constraints in
+# table_args and sqlite_autoincrement=True in table_kwargs. New columns of evidence must be nullable, so
+# that the digests of older rows stay valid.
 
 
 def upgrade() -> None:

@@ -8,7 +8,7 @@ from pathlib import Path
 from sqlalchemy.engine import make_url
 from sqlalchemy.exc import ArgumentError
 
-from calib.errors import NotFound, StoreError
+from calib.errors import StoreError
 from calib.store.files import new_file
 from calib.store.refusals import files_in_words, in_words
 from calib.store.schema import require_current
@@ -85,11 +85,7 @@ def open_store(
         If the file cannot be made or opened.
     """
     path = store_path(url_or_path)
-    if not path.exists():
-        if not create:
-            raise NotFound(
-                f"there is no store {path}; check the name, or create it with calib log or calib demo"
-            )
+    if create and not path.exists():
         _create(path)
     require_current(path)
     return Store(path, connect_engine(path, busy_seconds), now)
@@ -102,7 +98,8 @@ def _create(path: Path) -> None:
     with (
         files_in_words("create the store", path),
         in_words(path),
-        _by_whoever_is_first(),
+        # Two programs may create at once: the second finds the store of the first and uses that.
+        suppress(FileExistsError),
         new_file(path) as draft,
     ):
         engine = connect_engine(draft, BUSY_SECONDS)
@@ -110,8 +107,3 @@ def _create(path: Path) -> None:
             migrate(engine)
         finally:
             engine.dispose()
-
-
-def _by_whoever_is_first() -> suppress:
-    # Two programs may create at once: the second finds the store of the first and uses that.
-    return suppress(FileExistsError)
