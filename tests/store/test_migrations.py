@@ -1,5 +1,8 @@
 """Migrations: they end where the models are, and go both ways."""
 
+import shutil
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -59,3 +62,18 @@ def test_foreign_keys_are_on_again_after_a_migration(store: Store) -> None:
 def test_pragmas_of_each_connection(path: Path, pragma: str, value: object) -> None:
     with open_store(path, busy_seconds=1.5) as store, store.engine.connect() as connection:
         assert connection.exec_driver_sql(f"PRAGMA {pragma}").scalar() == value
+
+
+def test_an_installed_package_finds_the_migrations_inside_it(tmp_path: Path) -> None:
+    checkout = Path(__file__).parents[2]
+    package = tmp_path / "calib"
+    shutil.copytree(checkout / "calib" / "store", package / "store")
+    shutil.copytree(checkout / "migrations", package / "migrations")
+    for name in ("errors.py", "shipped.py"):
+        shutil.copy(checkout / "calib" / name, package / name)
+    (package / "__init__.py").write_text('"""Only what the store needs."""\n')
+    program = "from calib.store import open_store; s = open_store('lab.db'); print(s.head()[0]); s.close()"
+    done = subprocess.run(
+        [sys.executable, "-c", program], cwd=tmp_path, capture_output=True, text=True, check=True
+    )
+    assert done.stdout.strip() == "0"
