@@ -1,9 +1,9 @@
 """Rows below a heading -> readings -> runs: shared by every table-like layout."""
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from datetime import datetime
-from typing import ParamSpec, TypeVar
+from typing import NamedTuple, ParamSpec, TypeVar
 
 from calib.errors import InputError
 from calib.intake.extract import Extract
@@ -74,6 +74,14 @@ def read_table(rows: Sequence[Row], head: Head, problems: Problems) -> Extract:
     return Extract(runs, tuple(_notes(rows[1:], columns, head.separator, sign)))
 
 
+class _RunKey(NamedTuple):
+    """What makes readings of one file one run."""
+
+    analyte: str | None
+    instrument: str | None
+    method: str | None
+
+
 @dataclass(frozen=True, slots=True)
 class _Table:
     heading: Row
@@ -83,16 +91,28 @@ class _Table:
     problems: Problems
 
     def runs(self, rows: Sequence[Row]) -> tuple[ParsedRun, ...]:
-        members: dict[tuple[str | None, ...], tuple[Facts, list[ParsedReading]]] = {}
+        facts_of: dict[_RunKey, Facts] = {}
+        readings_of: dict[_RunKey, list[ParsedReading]] = {}
         for row in rows:
             reading, facts = self.reading(row), self.facts(row)
             if reading is None:
                 continue
-            key = (facts.analyte, facts.instrument, facts.method)
-            first, readings = members.setdefault(key, (facts, []))
-            self.attempt(row, None, _check_same_lot_and_operator, first, facts)
-            readings.append(reading)
-        return tuple(self.run(facts, readings) for facts, readings in members.values())
+            key = _RunKey(facts.analyte, facts.instrument, facts.method)
+            merged = self.attempt(row, None, _merge_facts, facts_of.get(key, facts), facts)
+            facts_of[key] = merged or facts
+            readings_of.setdefault(key, []).append(reading)
+        self.check_keys(readings_of)
+        return tuple(self.run(facts, readings_of[key]) for key, facts in facts_of.items())
+
+    def check_keys(self, readings_of: Mapping[_RunKey, list[ParsedReading]]) -> None:
+        """Refuse rows that leave open which run they belong to."""
+        for field in _RunKey._fields:
+            unclear = [readings[0] for key, readings in readings_of.items() if getattr(key, field) is None]
+            if 0 < len(unclear) < len(readings_of):
+                place = Place(self.head.sheet, unclear[0].place.row)
+                self.problems.add(
+                    place, InputError(f"the {field} is empty but other rows have one: fill it in")
+                )
 
     def run(self, facts: Facts, readings: list[ParsedReading]) -> ParsedRun:
         check_positions(readings, self.problems)
@@ -186,12 +206,11 @@ def _check_width(row: Row, heading: Row, columns: Columns) -> None:
         raise InputError("the row ends before its response: export the file again, or complete the row")
 
 
-def _check_same_lot_and_operator(first: Facts, facts: Facts) -> None:
-    for what, one, other in (("lot", first.lot, facts.lot), ("operator", first.operator, facts.operator)):
-        if one != other:
-            raise InputError(
-                f"{what} {other or 'none'} differs from {one or 'none'} above in the same run: keep one"
-            )
+def _merge_facts(above: Facts, facts: Facts) -> Facts:
+    for what, one, other in (("lot", above.lot, facts.lot), ("operator", above.operator, facts.operator)):
+        if one is not None and other is not None and one != other:
+            raise InputError(f"{what} {other} differs from {one} above in the same run: keep one")
+    return replace(above, lot=above.lot or facts.lot, operator=above.operator or facts.operator)
 
 
 def _number_texts(rows: Sequence[Row], columns: Columns, sheet: str | None) -> Iterator[NumberText]:

@@ -199,6 +199,11 @@ def test_a_run_has_one_standard_lot():
     assert "row 3: lot L2 differs from L1" in str(refusal(text))
 
 
+def test_a_row_that_leaves_its_run_open_is_named():
+    text = "sample,role,analyte,concentration [ug/L],response [1]\nS1,standard,lead,1,1\nU1,unknown,,,2\n"
+    assert "row 3: the analyte is empty but other rows have one" in str(refusal(text))
+
+
 def test_an_unknown_layout_name_is_answered_with_the_known_ones():
     with pytest.raises(
         InputError, match="use one of workbook, plate-grid, header-block, semicolon, long-form"

@@ -132,6 +132,12 @@ def test_a_long_form_may_hold_a_run_for_each_analyte():
     assert [len(run.readings) for run in runs] == [2, 1]
 
 
+def test_the_lot_need_only_stand_beside_the_standards():
+    heading = "sample,role,lot,concentration [ug/L],response [1]\n"
+    (run,) = read_text(heading + "U1,unknown,,,1\nS2,standard,L1,2,2\nU3,unknown,,,1\n").runs
+    assert (run.lot, len(run.readings)) == ("L1", 3)
+
+
 @pytest.mark.parametrize("separator", [",", ";", "\t"])
 def test_the_columns_of_a_long_form_may_stand_in_any_order(separator):
     text = "response [1],role,sample,concentration [ug/L]\n0.5,Carry over,C,\n0.7,FIRST CHECK,F,2.5\n"
