@@ -29,7 +29,7 @@ class BackCalculation:
     Attributes
     ----------
     value : (n,) array
-        Concentration; nan where the response lies off the curve.
+        Concentration; nan where the response lies off the curve, and for a model of several columns.
     relative_error : (n,) array
         value/level − 1 as a fraction; nan at level 0.
     """
@@ -162,6 +162,8 @@ class Curve:
 
         x = self.standards.concentration
         value = concentration_of(self, self.standards.response)
+        if x.ndim > 1:
+            return BackCalculation(value, value)
         with np.errstate(divide="ignore", invalid="ignore"):
             return BackCalculation(value, np.where(x != 0, value / x - 1.0, np.nan))
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Callable, Sequence
 
 import numpy as np
@@ -63,9 +64,10 @@ class CustomModel(ResponseModel):
         shifted = p.astype(np.complex128)
         shifted[j] += 1j * step
         try:
-            with np.errstate(all="ignore"):
+            with np.errstate(all="ignore"), warnings.catch_warnings():
+                warnings.simplefilter("error", np.exceptions.ComplexWarning)
                 derivative = np.imag(np.asarray(self._response(x, *shifted))) / step
-        except (TypeError, ValueError, ArithmeticError):
+        except (TypeError, ValueError, ArithmeticError, np.exceptions.ComplexWarning):
             return None
         return derivative if np.all(np.isfinite(derivative)) else None
 
