@@ -33,7 +33,7 @@ class Line(ResponseModel):
 
     def gradient(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivatives in intercept and slope."""
-        x = as_array(x)
+        x = np.broadcast_arrays(as_array(x), *p)[0]
         return columns(np.ones_like(x), x)
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:

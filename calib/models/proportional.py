@@ -22,7 +22,7 @@ class Proportional(ResponseModel):
 
     def gradient(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the slope."""
-        return columns(as_array(x))
+        return columns(np.broadcast_arrays(as_array(x), *p)[0])
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Sensitivity, the same everywhere."""

@@ -32,7 +32,7 @@ class Quadratic(ResponseModel):
 
     def gradient(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivatives in the three coefficients."""
-        x = as_array(x)
+        x = np.broadcast_arrays(as_array(x), *p)[0]
         return columns(np.ones_like(x), x, x * x)
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
