@@ -1,0 +1,326 @@
+"""Corrections of a run: each supersedes with reason, person and time; nothing is overwritten."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, replace
+from datetime import datetime, timedelta, timezone
+
+from sqlalchemy.orm import Session
+
+from calib import store as tables
+from calib.bench.evaluate import evaluate
+from calib.bench.find import current_curve, facts_of, instrument_named, lot_named, run_numbered, void_of
+from calib.bench.keeping import add_evaluation, add_quantities, current_readings, exclusions_in_force
+from calib.bench.quantify import QUANTIFIED_ROLES, dependent_runs
+from calib.bench.quantities import quantities_of
+from calib.bench.records import Evaluation, Measured, QuantityRecord, RunRecord
+from calib.bench.show_run import load_run, show_run
+from calib.errors import InputError
+from calib.store.runs import REASON_CLASSES
+
+
+@dataclass(frozen=True, slots=True)
+class Change:
+    """Facts of a run to be corrected; None leaves a fact as it is.
+
+    ``samples`` and ``dilutions`` map a reading (see `find_readings`) to its new value.
+    """
+
+    instrument: str | None = None
+    lot: str | None = None
+    operator: str | None = None
+    at: datetime | None = None
+    samples: tuple[tuple[str, str], ...] = ()
+    dilutions: tuple[tuple[str, float], ...] = ()
+
+    @property
+    def of_facts(self) -> bool:
+        """Whether a fact of the whole run changes."""
+        return any(v is not None for v in (self.instrument, self.lot, self.operator, self.at))
+
+
+def exclude_readings(
+    store: tables.Store,
+    number: int,
+    which: Sequence[str],
+    *,
+    reason: str,
+    reason_class: str = "assignable cause",
+    by: str,
+) -> RunRecord:
+    """Leave standard readings out of the fit and judge the run again.
+
+    Raises
+    ------
+    InputError
+        When a reading is not found, is no standard, is excluded already, or no reason is given.
+    """
+    return _decide(store, number, which, "exclude", reason, reason_class, by)
+
+
+def restore_readings(
+    store: tables.Store,
+    number: int,
+    which: Sequence[str],
+    *,
+    reason: str,
+    reason_class: str = "other",
+    by: str,
+) -> RunRecord:
+    """Take excluded readings back into the fit and judge the run again."""
+    return _decide(store, number, which, "restore", reason, reason_class, by)
+
+
+def refit_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunRecord:
+    """Fit and judge a run again with the readings and exclusions in force."""
+    _require_reason(reason)
+    record = _correctable(store, number)
+    evaluation = evaluate(record.definition, record.readings)
+    now = store.now()
+    with store.change(action="refit run", by=by, reason=reason) as session:
+        _supersede(session, record, evaluation, by=by, at=now, reason=reason)
+    return show_run(store, number)
+
+
+def void_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunRecord:
+    """Declare that a run counts no longer; it stays visible.
+
+    Raises
+    ------
+    InputError
+        When it is void already, or other runs were quantified on its curve.
+    """
+    _require_reason(reason)
+    now = store.now()
+    with store.change(action="void run", by=by, reason=reason) as session:
+        run_numbered(session, number)
+        _refuse_void(session, number)
+        users = [n for n in dependent_runs(session, number) if void_of(session, n) is None]
+        if users:
+            raise InputError(
+                f"run {number}: its curve was used by run {', '.join(map(str, users))}; declare these void first"
+            )
+        session.add(tables.RunVoid(run_id=number, reason=reason, by=by, at=now))
+    return show_run(store, number)
+
+
+def amend_run(store: tables.Store, number: int, change: Change, *, reason: str, by: str) -> RunRecord:
+    """Correct facts of a run or of its readings; the original stays beside the amendment.
+
+    Raises
+    ------
+    InputError
+        When nothing changes, a reading is not found, or no reason is given.
+    """
+    _require_reason(reason)
+    if not (change.of_facts or change.samples or change.dilutions):
+        raise InputError("nothing to amend: name at least one fact and its new value")
+    now = store.now()
+    with store.change(action="amend run", by=by, reason=reason) as session:
+        record = load_run(session, number, (0, ""))
+        _refuse_void(session, number)
+        if change.of_facts:
+            _amend_facts(session, number, change, reason, by, now)
+        _amend_readings(session, record.readings, number, change)
+        session.flush()
+        if change.instrument and record.heading.kind == "calibration":
+            _judge_again(session, number, by, now, reason)
+        elif change.instrument or change.samples or change.dilutions:
+            _requantify(session, number)
+    return show_run(store, number)
+
+
+def find_readings(readings: Iterable[Measured], name: str) -> list[Measured]:
+    """Readings a person means: a position ('B7'), a number in the file ('#12'), or a sample name.
+
+    Raises
+    ------
+    InputError
+        When no reading has that name.
+    """
+    rows = list(readings)
+    if name.startswith("#"):
+        found = [r for r in rows if f"#{r.key}" == name]
+    else:
+        found = [r for r in rows if r.position == name] or [r for r in rows if r.sample == name]
+    if not found:
+        raise InputError(
+            f"no reading '{name}' in this run; give a position, a sample name, or #number in the file"
+        )
+    return found
+
+
+def _decide(
+    store: tables.Store,
+    number: int,
+    which: Sequence[str],
+    decision: str,
+    reason: str,
+    reason_class: str,
+    by: str,
+) -> RunRecord:
+    _require_reason(reason)
+    if reason_class not in REASON_CLASSES:
+        raise InputError(f"unknown class of reason '{reason_class}'; known are {', '.join(REASON_CLASSES)}")
+    record = _correctable(store, number)
+    chosen = [r for name in which for r in find_readings(record.readings, name)]
+    _refuse_undecidable(chosen, decision)
+    keys = {r.key for r in chosen}
+    excluded = reason if decision == "exclude" else None
+    readings = [replace(r, excluded=excluded) if r.key in keys else r for r in record.readings]
+    evaluation = evaluate(record.definition, readings)
+    now = store.now()
+    with store.change(action=f"{decision} readings", by=by, reason=reason) as session:
+        before = exclusions_in_force(session, number)
+        for row in current_readings(session, number):
+            if row.ordinal in keys:
+                session.add(
+                    tables.Exclusion(
+                        reading_id=row.id,
+                        decision=decision,
+                        reason_class=reason_class,
+                        reason=reason,
+                        by=by,
+                        at=now,
+                        supersedes=before[row.ordinal].id if row.ordinal in before else None,
+                    )
+                )
+        session.flush()
+        _supersede(session, record, evaluation, by=by, at=now, reason=reason)
+    return show_run(store, number)
+
+
+def _refuse_undecidable(chosen: Sequence[Measured], decision: str) -> None:
+    for reading in chosen:
+        if reading.role not in ("standard", "anchor", "blank", "zero"):
+            raise InputError(
+                f"{reading.where} is no standard but {reading.role}; only what is fitted is excluded"
+            )
+        if decision == "exclude" and reading.excluded is not None:
+            raise InputError(f"{reading.where} is excluded already ({reading.excluded})")
+        if decision == "restore" and reading.excluded is None:
+            raise InputError(f"{reading.where} is not excluded; nothing to restore")
+
+
+def _correctable(store: tables.Store, number: int) -> RunRecord:
+    record = show_run(store, number)
+    if record.heading.void_reason is not None:
+        raise InputError(
+            f"run {number} is void ({record.heading.void_reason}); nothing more is changed in it"
+        )
+    if record.heading.kind != "calibration":
+        raise InputError(f"run {number} holds unknowns only; its curve belongs to run {record.curve_run}")
+    return record
+
+
+def _supersede(
+    session: Session, record: RunRecord, evaluation: Evaluation, *, by: str, at: datetime, reason: str
+) -> None:
+    """Write the new curve over the old one, with all quantities that rest on it."""
+    number = record.heading.id or 0
+    in_force = current_curve(session, number)
+    if in_force is None or in_force.id != record.curve_id:
+        raise InputError(f"run {number} was corrected by someone else meanwhile; look at it and try again")
+    ids = {r.ordinal: r.id for r in current_readings(session, number)}
+    curve_id = add_evaluation(
+        session, number, evaluation, ids, by=by, at=at, supersedes=in_force.id, reason=reason
+    )
+    add_quantities(session, number, curve_id, evaluation.quantities)
+    for dependent in dependent_runs(session, number):
+        session.flush()
+        _requantify(session, dependent)
+
+
+def _judge_again(session: Session, number: int, by: str, now: datetime, reason: str) -> None:
+    """Evaluate a run anew: another instrument has another detector ceiling."""
+    record = load_run(session, number, (0, ""))
+    evaluation = evaluate(record.definition, record.readings)
+    _supersede(session, record, evaluation, by=by, at=now, reason=reason)
+
+
+def _requantify(session: Session, number: int) -> None:
+    """Quantify a run again on the curve in force for it."""
+    record = load_run(session, number, (0, ""))
+    verdict = record.evaluation.verdict
+    others = [r for r in record.readings if r.role in QUANTIFIED_ROLES]
+    if not others:
+        return
+    flag = "curve-rejected" if record.curve_run == number else "curve-superseded"
+    found: tuple[QuantityRecord, ...] = quantities_of(
+        record.definition,
+        record.evaluation.curve,
+        verdict.accepted,
+        others,
+        verdict.lowest,
+        verdict.highest,
+        flag,
+    )
+    add_quantities(session, number, record.curve_id or 0, found)
+
+
+def _amend_facts(session: Session, number: int, change: Change, reason: str, by: str, now: datetime) -> None:
+    old = facts_of(session, number)
+    instrument = instrument_named(session, change.instrument) if change.instrument else None
+    lot = lot_named(session, change.lot) if change.lot else None
+    at, offset = _amended_time(old, change.at)
+    session.add(
+        tables.RunFacts(
+            run_id=number,
+            instrument_id=instrument.id if instrument else old.instrument_id,
+            lot_id=lot.id if lot else old.lot_id,
+            at=at,
+            offset_minutes=offset,
+            operator=change.operator or old.operator,
+            supersedes=old.id,
+            reason=reason,
+            by=by,
+            recorded_at=now,
+        )
+    )
+
+
+def _amended_time(old: tables.RunFacts, at: datetime | None) -> tuple[datetime, int]:
+    if at is None:
+        return old.at, old.offset_minutes
+    moment = at if at.tzinfo else at.replace(tzinfo=timezone(timedelta(minutes=old.offset_minutes)))
+    offset = moment.utcoffset() or timedelta()
+    return moment, int(offset.total_seconds() // 60)
+
+
+def _amend_readings(session: Session, readings: Sequence[Measured], number: int, change: Change) -> None:
+    fields: dict[int, dict[str, str | float]] = {}
+    for name, sample in change.samples:
+        if not sample.strip():
+            raise InputError(f"the new name of sample '{name}' is empty")
+        for reading in find_readings(readings, name):
+            fields.setdefault(reading.key, {})["sample"] = sample
+    for name, dilution in change.dilutions:
+        if not (math.isfinite(dilution) and dilution > 0):
+            raise InputError(f"dilution {dilution:g} of '{name}' must be above 0")
+        for reading in find_readings(readings, name):
+            fields.setdefault(reading.key, {})["dilution"] = dilution
+    for row in current_readings(session, number):
+        if row.ordinal in fields:
+            session.add(_copy(row, fields[row.ordinal]))
+
+
+def _copy(row: tables.Reading, fields: dict[str, str | float]) -> tables.Reading:
+    kept = {
+        c.key: getattr(row, c.key)
+        for c in tables.Reading.__table__.columns
+        if c.key not in ("id", "supersedes")
+    }
+    return tables.Reading(**(kept | fields), supersedes=row.id)
+
+
+def _require_reason(reason: str) -> None:
+    if not reason.strip():
+        raise InputError("a correction needs a reason in words")
+
+
+def _refuse_void(session: Session, number: int) -> None:
+    void = void_of(session, number)
+    if void is not None:
+        raise InputError(f"run {number} is void already ({void.reason})")

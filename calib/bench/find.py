@@ -1,0 +1,99 @@
+"""Look records up by the names people use, or say that they are not there."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from sqlalchemy import func, select
+from sqlalchemy.orm import Session
+
+from calib import store as tables
+from calib.errors import NotFound
+
+
+def instrument_named(session: Session, name: str) -> tables.Instrument:
+    """Instrument of that name.
+
+    Raises
+    ------
+    NotFound
+        Naming the instruments there are.
+    """
+    row = session.scalar(select(tables.Instrument).where(tables.Instrument.name == name))
+    if row is None:
+        known = session.scalars(select(tables.Instrument.name).order_by(tables.Instrument.name)).all()
+        raise NotFound(f"unknown instrument '{name}'; {_known(known, 'calib instrument add')}")
+    return row
+
+
+def method_named(session: Session, name: str, version: int | None = None) -> tables.Method:
+    """Latest version of a method, or the one asked for.
+
+    Raises
+    ------
+    NotFound
+        Naming the methods there are.
+    """
+    query = select(tables.Method).where(tables.Method.name == name)
+    if version is not None:
+        query = query.where(tables.Method.version == version)
+    row = session.scalar(query.order_by(tables.Method.version.desc()).limit(1))
+    if row is None:
+        known = session.scalars(select(tables.Method.name).distinct().order_by(tables.Method.name)).all()
+        which = f"'{name}'" if version is None else f"'{name}' version {version}"
+        raise NotFound(f"unknown method {which}; {_known(known, 'calib method add')}")
+    return row
+
+
+def lot_named(session: Session, name: str) -> tables.StandardLot:
+    """Standard lot of that name.
+
+    Raises
+    ------
+    NotFound
+        Naming the lots there are.
+    """
+    row = session.scalar(select(tables.StandardLot).where(tables.StandardLot.name == name))
+    if row is None:
+        known = session.scalars(select(tables.StandardLot.name).order_by(tables.StandardLot.name)).all()
+        raise NotFound(f"unknown standard lot '{name}'; {_known(known, 'calib lot add')}")
+    return row
+
+
+def run_numbered(session: Session, number: int) -> tables.Run:
+    """Run of that number.
+
+    Raises
+    ------
+    NotFound
+        Naming the last run there is.
+    """
+    row = session.get(tables.Run, number)
+    if row is None:
+        last = session.scalar(select(func.max(tables.Run.id)))
+        hint = f"the last one is {last}" if last else "none is logged yet"
+        raise NotFound(f"there is no run {number}; {hint} (see calib run list)")
+    return row
+
+
+def facts_of(session: Session, run_id: int) -> tables.RunFacts:
+    """Facts of a run in force."""
+    return session.scalars(
+        select(tables.RunFacts).where(tables.RunFacts.run_id == run_id, tables.is_current(tables.RunFacts))
+    ).one()
+
+
+def void_of(session: Session, run_id: int) -> tables.RunVoid | None:
+    """The decision that a run is void, if there is one."""
+    return session.scalar(select(tables.RunVoid).where(tables.RunVoid.run_id == run_id))
+
+
+def current_curve(session: Session, run_id: int) -> tables.Curve | None:
+    """Curve of a run in force."""
+    return session.scalar(
+        select(tables.Curve).where(tables.Curve.run_id == run_id, tables.is_current(tables.Curve))
+    )
+
+
+def _known(names: Sequence[str], command: str) -> str:
+    return f"known are {', '.join(names)} (add one with {command})" if names else f"add it with {command}"

@@ -1,0 +1,24 @@
+"""Flags of a reported quantity: a short code each, and its words."""
+
+from __future__ import annotations
+
+FLAGS: dict[str, str] = {
+    "above-range": "above the highest standard: dilute and measure again",
+    "below-range": "below the lowest standard",
+    "lopsided": "interval is lopsided: read its limits, there is no ±",
+    "one-sided": "interval is open on one side",
+    "no-value": "no concentration can be given",
+    "off-curve": "response lies outside the curve",
+    "second-region": "a second range of concentrations agrees with this response",
+    "replicate-spread": "replicates differ more than the curve's noise allows",
+    "absent-reading": "a reading is absent (see the file)",
+    "saturated": "detector at its ceiling",
+    "single-reading": "a single reading",
+    "curve-rejected": "the curve was rejected: no result",
+    "curve-superseded": "the curve was superseded and its successor rejected: no result",
+}
+
+
+def in_words(flag: str) -> str:
+    """Words of a flag."""
+    return FLAGS.get(flag, flag)

@@ -1,0 +1,374 @@
+"""Between evaluations and rows: how a run is written to the store and read back."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping, Sequence
+from datetime import datetime
+from typing import Any
+
+import numpy as np
+from sqlalchemy import select
+from sqlalchemy.orm import Session
+
+from calib import store as tables
+from calib.acceptance import CriterionResult
+from calib.bench.evaluate import finite
+from calib.bench.method_definition import MethodDefinition, read_definition
+from calib.bench.records import (
+    Evaluation,
+    Measured,
+    QuantityRecord,
+    StandardRecord,
+    VerdictRecord,
+)
+from calib.curves.curve import Curve
+from calib.curves.diagnostics import Finding
+from calib.curves.noise import noise_from_dict
+from calib.curves.standards import Standards, frozen
+from calib.models import response_model
+
+WITHDRAWN = "withdrawn"
+
+
+def versions() -> dict[str, Any]:
+    """Versions of everything that takes part in the numbers."""
+    import numpy
+    import scipy
+
+    from calib import __version__
+
+    return {"calib": __version__, "numpy": numpy.__version__, "scipy": scipy.__version__}
+
+
+def add_evaluation(
+    session: Session,
+    run_id: int,
+    evaluation: Evaluation,
+    reading_ids: Mapping[int, int],
+    *,
+    by: str,
+    at: datetime,
+    supersedes: int | None = None,
+    reason: str | None = None,
+) -> int:
+    """Write curve, standards and verdict; ``reading_ids`` by ordinal. The number of the new curve."""
+    row = _curve_row(run_id, evaluation, by, at)
+    row.supersedes, row.reason = supersedes, reason
+    session.add(row)
+    session.flush()
+    session.add_all(_standard_row(row.id, reading_ids[s.key], s) for s in evaluation.standards)
+    session.add(_verdict_row(row.id, evaluation.verdict, by, at))
+    return row.id
+
+
+def add_quantities(
+    session: Session, run_id: int, curve_id: int, quantities: Sequence[QuantityRecord]
+) -> None:
+    """Write quantities over those of the same run that are in force.
+
+    Each supersedes the one of the same sample; a renamed sample supersedes its old name,
+    and a sample that is gone is withdrawn.
+    """
+    before = {_identity(q): q for q in current_quantities(session, run_id)}
+    fresh = [q for q in quantities if (q.sample, q.role, q.dilution, q.nominal) not in before]
+    for q in quantities:
+        old = before.pop((q.sample, q.role, q.dilution, q.nominal), None)
+        if old is not None:
+            session.add(_quantity_row(run_id, curve_id, q, old.id))
+    gone = iter(before.values())
+    for q in fresh:
+        old = next(gone, None)
+        session.add(_quantity_row(run_id, curve_id, q, old.id if old else None))
+    session.add_all(_withdrawn(old, curve_id) for old in gone if WITHDRAWN not in old.flags)
+
+
+def current_quantities(session: Session, run_id: int) -> Sequence[tables.QuantityRow]:
+    """Quantities of a run that are in force, withdrawn ones included, in the order they were written."""
+    query = select(tables.QuantityRow).where(
+        tables.QuantityRow.run_id == run_id, tables.is_current(tables.QuantityRow)
+    )
+    return session.scalars(query.order_by(tables.QuantityRow.id)).all()
+
+
+def current_readings(session: Session, run_id: int) -> Sequence[tables.Reading]:
+    """Readings of a run that are in force, in the order of the file."""
+    query = select(tables.Reading).where(tables.Reading.run_id == run_id, tables.is_current(tables.Reading))
+    return session.scalars(query.order_by(tables.Reading.ordinal)).all()
+
+
+def exclusions_in_force(session: Session, run_id: int) -> dict[int, tables.Exclusion]:
+    """Latest decision on each reading ever excluded, by the reading's ordinal."""
+    query = (
+        select(tables.Reading.ordinal, tables.Exclusion)
+        .join(tables.Exclusion, tables.Exclusion.reading_id == tables.Reading.id)
+        .where(tables.Reading.run_id == run_id, tables.is_current(tables.Exclusion))
+    )
+    return dict(session.execute(query).tuples().all())
+
+
+def measured_of(
+    rows: Iterable[tables.Reading],
+    factor: float,
+    ceiling: float | None,
+    exclusions: dict[int, tables.Exclusion],
+) -> tuple[Measured, ...]:
+    """Readings as the evaluation sees them, nominal values times ``factor``."""
+    return tuple(_measured(r, factor, ceiling, exclusions.get(r.ordinal)) for r in rows)
+
+
+def _measured(
+    row: tables.Reading, factor: float, ceiling: float | None, exclusion: tables.Exclusion | None
+) -> Measured:
+    out = exclusion is not None and exclusion.decision == "exclude"
+    return Measured(
+        key=row.ordinal,
+        sample=row.sample,
+        role=row.role,
+        concentration=None if row.concentration is None else row.concentration * factor,
+        response=row.response,
+        absent_cause=row.absent_cause,
+        dilution=row.dilution,
+        position=row.position,
+        excluded=exclusion.reason if out and exclusion is not None else None,
+        saturated=is_saturated(row.response, row.absent_cause, ceiling),
+        place=", ".join(
+            f"{word} {value}"
+            for word, value in (("sheet", row.sheet), ("row", row.row), ("column", row.column))
+            if value is not None
+        ),
+    )
+
+
+def is_saturated(response: float | None, absent_cause: str | None, ceiling: float | None) -> bool:
+    """Whether the detector was at its ceiling or said so."""
+    if absent_cause == "overflow":
+        return True
+    return response is not None and ceiling is not None and response >= ceiling
+
+
+def curve_of(row: tables.Curve, standards: Sequence[Measured]) -> Curve:
+    """The fitted curve a row stands for; ``standards`` are the readings it was fitted to."""
+    model = response_model(row.model)
+    noise = noise_from_dict(row.noise)
+    free = np.array([n not in row.fixed for n in model.names])
+    nu = int(row.degrees_of_freedom)
+    total = _number(row.residual_sum)
+    scale = 1.0 if noise.known_scale else (float(np.sqrt(total / nu)) if nu > 0 else np.nan)
+    return Curve(
+        response_model=model,
+        values=frozen(np.array([_number(row.parameters[n]) for n in model.names])),
+        free=free,
+        lower=frozen(np.array([_bound(row.bounds, n, 0, -np.inf) for n in model.names])),
+        upper=frozen(np.array([_bound(row.bounds, n, 1, np.inf) for n in model.names])),
+        covariance=frozen(np.array([[_number(v) for v in line] for line in row.covariance])),
+        noise=noise,
+        standards=Standards(
+            frozen(np.array([s.concentration or 0.0 for s in standards])),
+            frozen(np.array([_number(s.response) for s in standards])),
+        ),
+        residual_sum=total,
+        degrees_of_freedom=nu,
+        scale=scale,
+        coverage_freedom=np.inf if noise.known_scale else float(nu),
+        r_squared=_number(row.r_squared),
+        aicc=_number(row.aicc),
+        converged=row.converged,
+        findings=tuple(Finding(f["code"], f["message"]) for f in row.findings),
+        solver=row.solver,
+    )
+
+
+def standard_records(
+    rows: Iterable[tables.CurveStandard], measured: Mapping[int, Measured]
+) -> tuple[StandardRecord, ...]:
+    """Standards of a stored curve; ``measured`` by the number of the reading's row."""
+    return tuple(_standard_record(row, measured[row.reading_id]) for row in rows)
+
+
+def _standard_record(row: tables.CurveStandard, reading: Measured) -> StandardRecord:
+    return StandardRecord(
+        key=reading.key,
+        label=reading.sample,
+        role=reading.role,
+        position=reading.position,
+        concentration=reading.concentration or 0.0,
+        response=reading.response,
+        absent_cause=reading.absent_cause,
+        fitted=row.fitted,
+        back_calculated=row.back_calculated,
+        relative_error=row.relative_error,
+        excluded=row.excluded,
+        reason=row.reason,
+        saturated=reading.saturated,
+    )
+
+
+def verdict_record(row: tables.VerdictRow) -> VerdictRecord:
+    """The verdict a row stands for."""
+    criteria = tuple(CriterionResult(**c) for c in row.criteria)
+    return VerdictRecord(row.decision, criteria, row.lowest, row.highest, row.r_squared)
+
+
+def quantity_record(row: tables.QuantityRow) -> QuantityRecord:
+    """The quantity a row stands for; a value outside the range becomes an estimate."""
+    inside = row.position == "inside"
+    return QuantityRecord(
+        sample=row.sample,
+        role=row.role,
+        nominal=row.nominal,
+        replicates=row.replicates,
+        mean_response=row.mean_response,
+        concentration=row.concentration if inside else None,
+        estimate=None if inside else row.concentration,
+        u=row.u,
+        k=row.k,
+        expanded=row.expanded,
+        lower=row.lower,
+        upper=row.upper,
+        upper_open=row.upper_open,
+        confidence=row.confidence,
+        kind=row.kind,
+        degrees_of_freedom=row.degrees_of_freedom,
+        state=row.state,
+        position=row.position,
+        flags=tuple(row.flags),
+        dilution=row.dilution,
+        unit=row.unit,
+        curve_id=row.curve_id,
+        budget=dict(row.budget),
+    )
+
+
+def _curve_row(run_id: int, evaluation: Evaluation, by: str, at: datetime) -> tables.Curve:
+    curve = evaluation.curve
+    pairs = zip(curve.response_model.names, curve.lower, curve.upper, strict=True)
+    return tables.Curve(
+        run_id=run_id,
+        model=curve.model,
+        fixed=curve.fixed,
+        bounds={n: [finite(float(low)), finite(float(high))] for n, low, high in pairs},
+        noise=curve.noise.to_dict(),
+        parameters={n: finite(v) for n, v in curve.parameters.items()},
+        covariance=[[finite(float(v)) for v in line] for line in curve.covariance],
+        residual_sum=finite(curve.residual_sum),
+        residual_sd=finite(curve.residual_sd),
+        degrees_of_freedom=curve.degrees_of_freedom,
+        r_squared=finite(curve.r_squared),
+        aicc=finite(curve.aicc),
+        converged=curve.converged,
+        findings=[{"code": f.code, "message": f.message} for f in curve.findings],
+        solver=curve.solver,
+        versions=versions(),
+        lowest=evaluation.verdict.lowest,
+        highest=evaluation.verdict.highest,
+        by=by,
+        at=at,
+    )
+
+
+def _standard_row(curve_id: int, reading_id: int, standard: StandardRecord) -> tables.CurveStandard:
+    return tables.CurveStandard(
+        curve_id=curve_id,
+        reading_id=reading_id,
+        fitted=standard.fitted,
+        back_calculated=standard.back_calculated,
+        relative_error=standard.relative_error,
+        excluded=standard.excluded,
+        reason=standard.reason,
+    )
+
+
+def _verdict_row(curve_id: int, verdict: VerdictRecord, by: str, at: datetime) -> tables.VerdictRow:
+    return tables.VerdictRow(
+        curve_id=curve_id,
+        decision=verdict.decision,
+        criteria=[_criterion(c) for c in verdict.criteria],
+        lowest=verdict.lowest,
+        highest=verdict.highest,
+        r_squared=verdict.r_squared,
+        by=by,
+        at=at,
+    )
+
+
+def _criterion(result: CriterionResult) -> dict[str, Any]:
+    return {
+        "id": result.id,
+        "what": result.what,
+        "limit": result.limit,
+        "observed": None if result.observed is None else finite(result.observed),
+        "passed": bool(result.passed),
+        "source": result.source,
+        "detail": result.detail,
+    }
+
+
+def _identity(row: tables.QuantityRow) -> tuple[str, str, float, float | None]:
+    return row.sample, row.role, row.dilution, row.nominal
+
+
+def _withdrawn(old: tables.QuantityRow, curve_id: int) -> tables.QuantityRow:
+    """A row that says of a sample that it is no longer in the run."""
+    return tables.QuantityRow(
+        run_id=old.run_id,
+        curve_id=curve_id,
+        sample=old.sample,
+        role=old.role,
+        nominal=old.nominal,
+        replicates=0,
+        upper_open=False,
+        confidence=old.confidence,
+        kind=old.kind,
+        state="no-estimate",
+        flags=[WITHDRAWN],
+        dilution=old.dilution,
+        unit=old.unit,
+        budget={},
+        supersedes=old.id,
+    )
+
+
+def _quantity_row(
+    run_id: int, curve_id: int, q: QuantityRecord, supersedes: int | None
+) -> tables.QuantityRow:
+    return tables.QuantityRow(
+        run_id=run_id,
+        curve_id=curve_id,
+        sample=q.sample,
+        role=q.role,
+        nominal=q.nominal,
+        replicates=q.replicates,
+        mean_response=q.mean_response,
+        concentration=q.concentration if q.concentration is not None else q.estimate,
+        u=q.u,
+        k=q.k,
+        expanded=q.expanded,
+        lower=q.lower,
+        upper=q.upper,
+        upper_open=q.upper_open,
+        confidence=q.confidence,
+        kind=q.kind,
+        degrees_of_freedom=q.degrees_of_freedom,
+        state=q.state,
+        position=q.position,
+        flags=list(q.flags),
+        dilution=q.dilution,
+        unit=q.unit,
+        budget=q.budget,
+        supersedes=supersedes,
+    )
+
+
+def _number(value: float | None) -> float:
+    return math.nan if value is None else float(value)
+
+
+def _bound(bounds: dict[str, Any], name: str, side: int, default: float) -> float:
+    value = bounds[name][side]
+    return default if value is None else float(value)
+
+
+def definition_of(row: tables.Method) -> MethodDefinition:
+    """The definition a method version stands for."""
+    return read_definition(row.definition, row.version)

@@ -1,0 +1,165 @@
+"""Log a file of standards: fit, judge, quantify, write in one transaction."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import datetime, tzinfo
+
+from sqlalchemy import select
+from sqlalchemy.orm import Session
+
+from calib import store as tables
+from calib.bench.evaluate import evaluate
+from calib.bench.keeping import add_evaluation, add_quantities
+from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicate
+from calib.bench.records import Evaluation, RunRecord
+from calib.bench.show_run import show_run
+from calib.errors import InputError
+from calib.intake import READER_VERSION, ParsedFile
+
+
+@dataclass(frozen=True, slots=True)
+class EvaluatedPlan:
+    """A plan with the evaluation of each of its runs; still nothing is written."""
+
+    plan: LogPlan
+    evaluations: tuple[Evaluation, ...]
+
+
+def evaluate_plan(plan: LogPlan) -> EvaluatedPlan:
+    """Fit, judge and quantify every run of a plan.
+
+    Raises
+    ------
+    InputError
+        When a run has no standards.
+    """
+    for run in plan.runs:
+        if not run.has_standards:
+            raise InputError(
+                f"{plan.file.name}: no standards in it; unknowns alone belong to calib quantify, "
+                "which reads them on the curve in force"
+            )
+    return EvaluatedPlan(plan, tuple(evaluate(r.definition, r.measured) for r in plan.runs))
+
+
+def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, ...]:
+    """Write an evaluated file; all its runs or none.
+
+    Raises
+    ------
+    DuplicateFile
+        When another program logged the same readings meanwhile.
+    """
+    plan = evaluated.plan
+    now = store.now()
+    with store.change(action="log run", by=plan.by) as session:
+        original_id = add_original(session, plan.file, now)
+        numbers = [
+            _write(session, plan, run, evaluation, original_id, now)
+            for run, evaluation in zip(plan.runs, evaluated.evaluations, strict=True)
+        ]
+    return tuple(show_run(store, n) for n in numbers)
+
+
+def add_original(session: Session, file: ParsedFile, now: datetime) -> int:
+    """Keep the bytes of a file; a file that is there already is named again."""
+    known = session.scalar(select(tables.Original.id).where(tables.Original.fingerprint == file.fingerprint))
+    if known is not None:
+        return known
+    row = tables.Original(
+        fingerprint=file.fingerprint, name=file.name, size=file.size, content=file.content, imported_at=now
+    )
+    session.add(row)
+    session.flush()
+    return row.id
+
+
+def _write(
+    session: Session,
+    plan: LogPlan,
+    run: PlannedRun,
+    evaluation: Evaluation,
+    original_id: int,
+    now: datetime,
+) -> int:
+    refuse_duplicate(session, plan.file, run)
+    run_id = add_run(session, plan, run, original_id, now)
+    reading_ids = add_readings(session, run_id, run)
+    curve_id = add_evaluation(session, run_id, evaluation, reading_ids, by=plan.by, at=now)
+    add_quantities(session, run_id, curve_id, evaluation.quantities)
+    return run_id
+
+
+def add_run(
+    session: Session,
+    plan: LogPlan,
+    run: PlannedRun,
+    original_id: int,
+    now: datetime,
+    curve_id: int | None = None,
+) -> int:
+    """Write a run with its facts; ``curve_id`` is the curve a run of unknowns uses."""
+    row = tables.Run(
+        kind="calibration" if curve_id is None else "unknowns",
+        original_id=original_id,
+        method_id=run.method.id,
+        layout=plan.file.layout,
+        reader_version=str(READER_VERSION),
+        concentration_unit=run.parsed.concentration_unit,
+        response_unit=run.parsed.response_unit,
+        content_fingerprint=run.content_fingerprint,
+        curve_id=curve_id,
+        logged_at=now,
+        logged_by=plan.by,
+    )
+    session.add(row)
+    session.flush()
+    session.add(
+        tables.RunFacts(
+            run_id=row.id,
+            instrument_id=run.instrument.id,
+            lot_id=run.lot.id if run.lot else None,
+            at=run.at,
+            offset_minutes=run.offset_minutes,
+            operator=run.operator,
+            by=plan.by,
+            recorded_at=now,
+        )
+    )
+    return row.id
+
+
+def _aware(at: datetime | None, zone: tzinfo | None) -> datetime | None:
+    """Time of a reading on the clock of its run."""
+    return at if at is None or at.tzinfo else at.replace(tzinfo=zone)
+
+
+def add_readings(session: Session, run_id: int, run: PlannedRun) -> Mapping[int, int]:
+    """Write the readings of a run; numbers of the rows by ordinal."""
+    rows = [
+        tables.Reading(
+            run_id=run_id,
+            ordinal=ordinal,
+            sample=reading.sample,
+            role=str(reading.role),
+            concentration=reading.concentration,
+            response=reading.response,
+            response_text=reading.response_text,
+            absent_cause=reading.absent_cause,
+            replicate=reading.replicate,
+            dilution=reading.dilution,
+            position=reading.position,
+            at=reading.at
+            if reading.at is None or reading.at.tzinfo
+            else reading.at.replace(tzinfo=run.at.tzinfo),
+            sheet=reading.place.sheet,
+            row=reading.place.row,
+            column=reading.place.column,
+        )
+        for ordinal, reading in enumerate(run.parsed.readings, start=1)
+    ]
+    session.add_all(rows)
+    session.flush()
+    return {row.ordinal: row.id for row in rows}

@@ -1,0 +1,261 @@
+"""A method as its TOML text defines it, read and validated."""
+
+from __future__ import annotations
+
+import math
+import re
+import tomllib
+from collections.abc import Mapping
+from dataclasses import dataclass
+from importlib import resources
+from typing import Any
+
+from calib.acceptance import Limit, criteria_from, read_preset
+from calib.curves.fit import NOISE_NAMES
+from calib.curves.noise import NoiseModel, assumed_noise
+from calib.errors import MethodError
+from calib.intake import parse_concentration_unit
+from calib.models import ResponseModel, response_model
+
+REQUIRED = ("name", "analyte", "concentration_unit", "response_unit", "model", "acceptance")
+OPTIONAL = (
+    "fixed",
+    "bounds",
+    "noise",
+    "interval_confidence",
+    "fit_blank",
+    "reference_concentrations",
+    "required_cv",
+    "curve",
+)
+DURATION = re.compile(r"^\s*(\d+(?:\.\d+)?)\s*(min|h|d)\s*$")
+HOURS = {"min": 1.0 / 60.0, "h": 1.0, "d": 24.0}
+
+
+@dataclass(frozen=True, slots=True)
+class MethodDefinition:
+    """What a method prescribes.
+
+    Attributes
+    ----------
+    fixed, bounds : mapping
+        Of the model's parameters, by name.
+    noise : str or NoiseModel
+    limits : mapping of str to Limit
+        Preset limits overridden by the method's own.
+    reference_concentrations : tuple of float
+        Low, middle and high concentration of the drift review; empty: taken from the standards.
+    required_cv : float
+        Coefficient of variation that bounds the working range, a fraction.
+    valid_hours : float
+        How long a curve stays in force.
+    """
+
+    name: str
+    analyte: str
+    concentration_unit: str
+    response_unit: str
+    model: str
+    fixed: Mapping[str, float]
+    bounds: Mapping[str, tuple[float, float]]
+    noise: str | NoiseModel
+    interval_confidence: float
+    fit_blank: bool
+    reference_concentrations: tuple[float, ...]
+    required_cv: float
+    preset: str
+    limits: Mapping[str, Limit]
+    valid_hours: float
+
+
+def read_definition(text: str, version: int = 1) -> MethodDefinition:
+    """Read and validate the TOML text of a method.
+
+    Parameters
+    ----------
+    text : str
+    version : int
+        Named as the source of the limits the method sets itself.
+
+    Raises
+    ------
+    MethodError
+        Naming key, value and what is allowed.
+    """
+    try:
+        table = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as cause:
+        raise MethodError(f"the method is not readable as TOML: {cause}; correct the text") from cause
+    _check_keys(table)
+    name = _text(table, "name")
+    model = _model(_text(table, "model"))
+    limits = _limits(table["acceptance"], f"method {name} version {version}")
+    return MethodDefinition(
+        name=name,
+        analyte=_text(table, "analyte"),
+        concentration_unit=parse_concentration_unit(_text(table, "concentration_unit")),
+        response_unit=_text(table, "response_unit"),
+        model=model.name,
+        fixed=_numbers_of(table.get("fixed", {}), "fixed", model),
+        bounds=_bounds(table.get("bounds", {}), model),
+        noise=_noise(table.get("noise", "uniform")),
+        interval_confidence=_between(table, "interval_confidence", 0.95, 0.5, 0.9999),
+        fit_blank=_switch(table, "fit_blank"),
+        reference_concentrations=_references(table.get("reference_concentrations", [])),
+        required_cv=_between(table, "required_cv", 0.2, 0.001, 1.0),
+        preset=str(table["acceptance"]["preset"]),
+        limits=limits,
+        valid_hours=_valid_hours(table.get("curve", {})),
+    )
+
+
+def preset_names() -> tuple[str, ...]:
+    """Names of the acceptance presets that come with calib."""
+    folder = resources.files("calib.acceptance") / "presets"
+    return tuple(sorted(f.name.removesuffix(".toml") for f in folder.iterdir() if f.name.endswith(".toml")))
+
+
+def preset_limits(name: str) -> dict[str, Limit]:
+    """Limits of a preset.
+
+    Raises
+    ------
+    MethodError
+        When there is no such preset.
+    """
+    if name not in preset_names():
+        raise MethodError(f"acceptance.preset = {name!r} is unknown; known are {', '.join(preset_names())}")
+    file = resources.files("calib.acceptance") / "presets" / f"{name}.toml"
+    return read_preset(file.read_text(encoding="utf-8"))
+
+
+def _check_keys(table: Mapping[str, Any]) -> None:
+    for key in table:
+        if key not in (*REQUIRED, *OPTIONAL):
+            raise MethodError(
+                f"unknown key '{key}' in the method; known are {', '.join((*REQUIRED, *OPTIONAL))}"
+            )
+    for key in REQUIRED:
+        if key not in table:
+            raise MethodError(f"the method lacks '{key}'; add it")
+
+
+def _text(table: Mapping[str, Any], key: str) -> str:
+    value = table[key]
+    if not isinstance(value, str) or not value.strip():
+        raise MethodError(f"{key} = {value!r} must be text in quotes")
+    return value.strip()
+
+
+def _model(name: str) -> ResponseModel:
+    from calib.errors import ModelError
+
+    try:
+        return response_model(name)
+    except ModelError as unknown:
+        raise MethodError(f"model: {unknown}") from unknown
+
+
+def _number(value: object, key: str) -> float:
+    if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
+        raise MethodError(f"{key} = {value!r} must be a finite number")
+    return float(value)
+
+
+def _between(table: Mapping[str, Any], key: str, default: float, low: float, high: float) -> float:
+    value = _number(table.get(key, default), key)
+    if not low <= value <= high:
+        raise MethodError(f"{key} = {value:g} must lie between {low:g} and {high:g}")
+    return value
+
+
+def _switch(table: Mapping[str, Any], key: str) -> bool:
+    value = table.get(key, False)
+    if not isinstance(value, bool):
+        raise MethodError(f"{key} = {value!r} must be true or false")
+    return value
+
+
+def _parameters(table: object, key: str, model: ResponseModel) -> Mapping[str, Any]:
+    if not isinstance(table, Mapping):
+        raise MethodError(f"{key} must be a table such as {key} = {{ {model.names[0]} = … }}")
+    for name in table:
+        if name not in model.names:
+            raise MethodError(
+                f"{key}.{name}: model '{model.name}' has no such parameter; it has {', '.join(model.names)}"
+            )
+    return table
+
+
+def _numbers_of(table: object, key: str, model: ResponseModel) -> dict[str, float]:
+    return {n: _number(v, f"{key}.{n}") for n, v in _parameters(table, key, model).items()}
+
+
+def _bounds(table: object, model: ResponseModel) -> dict[str, tuple[float, float]]:
+    bounds = {}
+    for name, pair in _parameters(table, "bounds", model).items():
+        if not isinstance(pair, list) or len(pair) != 2:
+            raise MethodError(f"bounds.{name} = {pair!r} must be [lower, upper]")
+        low, high = (_number(v, f"bounds.{name}") for v in pair)
+        if not low < high:
+            raise MethodError(f"bounds.{name} = [{low:g}, {high:g}]: the lower bound must be below the upper")
+        bounds[name] = (low, high)
+    return bounds
+
+
+def _noise(value: object) -> str | NoiseModel:
+    if value == "history":
+        raise MethodError(
+            "noise = 'history' (pooled over past runs) is not available in this version; use one of "
+            f'{", ".join(NOISE_NAMES)} or {{ assumed = "response", exponent = 2.0 }}'
+        )
+    if isinstance(value, str):
+        if value not in NOISE_NAMES:
+            raise MethodError(f"noise = {value!r} is unknown; known are {', '.join(NOISE_NAMES)}")
+        return value
+    if not isinstance(value, Mapping) or "assumed" not in value or set(value) - {"assumed", "exponent"}:
+        raise MethodError('noise must be a name or { assumed = "response", exponent = 2.0 }')
+    return assumed_noise(str(value["assumed"]), _number(value.get("exponent", 2.0), "noise.exponent"))
+
+
+def _references(value: object) -> tuple[float, ...]:
+    if value == []:
+        return ()
+    if not isinstance(value, list) or len(value) != 3:
+        raise MethodError(f"reference_concentrations = {value!r} must be [low, middle, high]")
+    low, middle, high = (_number(v, "reference_concentrations") for v in value)
+    if not 0 < low < middle < high:
+        raise MethodError("reference_concentrations must rise and lie above 0")
+    return low, middle, high
+
+
+def _limits(table: object, source: str) -> dict[str, Limit]:
+    if not isinstance(table, Mapping) or "preset" not in table:
+        raise MethodError(f'acceptance needs preset = "…"; known are {", ".join(preset_names())}')
+    own = {
+        key: Limit(_number(value, f"acceptance.{key}"), source, "method")
+        for key, value in table.items()
+        if key != "preset"
+    }
+    limits = _narrower_ends_left_out(preset_limits(str(table["preset"])), own) | own
+    criteria_from(limits)  # refuses unknown keys and contradictions
+    return limits
+
+
+def _narrower_ends_left_out(preset: dict[str, Limit], own: Mapping[str, Limit]) -> dict[str, Limit]:
+    """Preset limits without end-level ones that the method's own wider middle limit overtakes."""
+    middle = own.get("relative_error")
+    if middle is None:
+        return preset
+    ends = ("relative_error_lowest", "relative_error_highest")
+    return {k: v for k, v in preset.items() if k not in ends or v.value >= middle.value}
+
+
+def _valid_hours(table: object) -> float:
+    if not isinstance(table, Mapping) or set(table) - {"valid_for"}:
+        raise MethodError('[curve] knows the one key valid_for, such as valid_for = "24 h"')
+    text = table.get("valid_for", "24 h")
+    match = DURATION.match(text) if isinstance(text, str) else None
+    if match is None or float(match[1]) == 0:
+        raise MethodError(f'curve.valid_for = {text!r} must be a time such as "90 min", "24 h" or "7 d"')
+    return float(match[1]) * HOURS[match[2]]

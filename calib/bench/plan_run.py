@@ -1,0 +1,229 @@
+"""What logging a file would mean: everything decided and checked, nothing written."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from datetime import datetime, timedelta, timezone
+from pathlib import Path
+
+from sqlalchemy import select
+from sqlalchemy.orm import Session
+
+from calib import store as tables
+from calib.bench.find import instrument_named, lot_named, method_named
+from calib.bench.keeping import definition_of, is_saturated
+from calib.bench.method_definition import MethodDefinition
+from calib.bench.records import Measured
+from calib.errors import DuplicateFile, InputError
+from calib.intake import (
+    ParsedFile,
+    ParsedReading,
+    ParsedRun,
+    content_fingerprint,
+    conversion_factor,
+    read_file,
+)
+
+
+@dataclass(frozen=True, slots=True)
+class LogOptions:
+    """What a person says beside the file; what the file says itself need not be repeated."""
+
+    by: str
+    instrument: str | None = None
+    methods: tuple[str, ...] = ()
+    at: datetime | None = None
+    lot: str | None = None
+    layout: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class PlannedRun:
+    """One run of a file with everything resolved.
+
+    ``notes`` says in words what was decided, such as a conversion of units.
+    """
+
+    parsed: ParsedRun
+    instrument: tables.Instrument
+    method: tables.Method
+    definition: MethodDefinition
+    at: datetime
+    offset_minutes: int
+    operator: str
+    lot: tables.StandardLot | None
+    measured: tuple[Measured, ...]
+    content_fingerprint: str
+    notes: tuple[str, ...] = field(default=())
+
+    @property
+    def has_standards(self) -> bool:
+        """Whether a curve can be fitted from this run."""
+        return any(m.role == "standard" for m in self.measured)
+
+
+@dataclass(frozen=True, slots=True)
+class LogPlan:
+    """A file and its runs, ready to be evaluated."""
+
+    file: ParsedFile
+    runs: tuple[PlannedRun, ...]
+    by: str
+
+
+def plan_file(store: tables.Store, path: str | Path, options: LogOptions) -> LogPlan:
+    """Read a file and resolve instrument, method, time, lot and units of each run.
+
+    Raises
+    ------
+    InputError, NotFound
+        Naming the file and what has to be said or corrected.
+    DuplicateFile
+        When the same readings are in the store.
+    """
+    parsed = read_file(path, layout=options.layout)
+    with store.reading() as session:
+        runs = tuple(_plan(session, parsed, run, options) for run in parsed.runs)
+        for run in runs:
+            refuse_duplicate(session, parsed, run)
+    return LogPlan(parsed, runs, options.by)
+
+
+def refuse_duplicate(session: Session, file: ParsedFile, run: PlannedRun) -> None:
+    """Refuse a run whose bytes or readings are in the store under this method.
+
+    Raises
+    ------
+    DuplicateFile
+        Naming the run that holds them.
+    """
+    same_bytes = tables.Original.fingerprint == file.fingerprint
+    same_content = tables.Run.content_fingerprint == run.content_fingerprint
+    found = session.execute(
+        select(tables.Run.id, tables.Original.name, same_bytes)
+        .join(tables.Original, tables.Original.id == tables.Run.original_id)
+        .join(tables.Method, tables.Method.id == tables.Run.method_id)
+        .outerjoin(tables.RunVoid, tables.RunVoid.run_id == tables.Run.id)
+        .where(same_bytes | same_content, tables.Method.name == run.method.name, tables.RunVoid.id.is_(None))
+        .limit(1)
+    ).first()
+    if found is None:
+        return
+    number, name, identical = found
+    what = "the same file" if identical else "the same readings in another form"
+    raise DuplicateFile(
+        f"{file.name}: {what} is logged already as run {number} ({name}); nothing was written "
+        f"(declare run {number} void first if it has to be logged again)"
+    )
+
+
+def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOptions) -> PlannedRun:
+    instrument = instrument_named(session, _agreed(file, "instrument", options.instrument, run.instrument))
+    if run.serial and instrument.serial and run.serial != instrument.serial:
+        raise InputError(
+            f"{file.name}: written by serial {run.serial}, but instrument {instrument.name} is registered "
+            f"with serial {instrument.serial}; choose the right instrument or correct the register"
+        )
+    method = method_named(session, _method_name(session, file, run, options.methods))
+    definition = definition_of(method)
+    at = _moment(file, run, instrument, options.at)
+    lot_name = options.lot or run.lot
+    factor = conversion_factor(run.concentration_unit, definition.concentration_unit)
+    _require_response_unit(file, run, definition)
+    return PlannedRun(
+        parsed=run,
+        instrument=instrument,
+        method=method,
+        definition=definition,
+        at=at,
+        offset_minutes=_offset_minutes(at),
+        operator=run.operator or options.by,
+        lot=lot_named(session, lot_name) if lot_name else None,
+        measured=tuple(_measured(i, r, factor, instrument) for i, r in enumerate(run.readings, start=1)),
+        content_fingerprint=content_fingerprint(run),
+        notes=_notes(run, definition, factor),
+    )
+
+
+def _agreed(file: ParsedFile, what: str, said: str | None, written: str | None) -> str:
+    if said and written and said != written:
+        raise InputError(
+            f"{file.name}: the file says {what} {written}, but --{what} says {said}; one is wrong"
+        )
+    chosen = said or written
+    if not chosen:
+        raise InputError(f"{file.name}: the file does not say which {what}; give --{what}")
+    return chosen
+
+
+def _method_name(session: Session, file: ParsedFile, run: ParsedRun, methods: tuple[str, ...]) -> str:
+    if len(methods) <= 1:
+        return _agreed(file, "method", methods[0] if methods else None, run.method)
+    if run.method in methods:
+        return run.method
+    analyte = (run.analyte or "").casefold()
+    fitting = [m for m in methods if analyte and analyte in _analyte_of(session, m)]
+    if len(fitting) != 1:
+        raise InputError(
+            f"{file.name}: which of the methods {', '.join(methods)} belongs to "
+            f"'{run.analyte or 'a run without an analyte'}' is not clear; name the method in the file"
+        )
+    return fitting[0]
+
+
+def _analyte_of(session: Session, method: str) -> str:
+    return definition_of(method_named(session, method)).analyte.casefold()
+
+
+def _moment(
+    file: ParsedFile, run: ParsedRun, instrument: tables.Instrument, said: datetime | None
+) -> datetime:
+    at = said or run.at or _first_reading_time(run.readings)
+    if at is None:
+        raise InputError(f"{file.name}: the file gives no time of measurement; give --at 2026-03-02T08:20")
+    zone = timezone(timedelta(minutes=instrument.utc_offset_minutes))
+    return at if at.tzinfo is not None else at.replace(tzinfo=zone)
+
+
+def _first_reading_time(readings: Sequence[ParsedReading]) -> datetime | None:
+    times = [r.at for r in readings if r.at is not None]
+    return min(times) if times else None
+
+
+def _offset_minutes(at: datetime) -> int:
+    offset = at.utcoffset()
+    return int(offset.total_seconds() // 60) if offset else 0
+
+
+def _require_response_unit(file: ParsedFile, run: ParsedRun, definition: MethodDefinition) -> None:
+    if run.response_unit != definition.response_unit:
+        raise InputError(
+            f"{file.name}: responses are in '{run.response_unit}', but method {definition.name} expects "
+            f"'{definition.response_unit}'; choose the right method or correct the unit in the file"
+        )
+
+
+def _measured(ordinal: int, reading: ParsedReading, factor: float, instrument: tables.Instrument) -> Measured:
+    return Measured(
+        key=ordinal,
+        sample=reading.sample,
+        role=str(reading.role),
+        concentration=None if reading.concentration is None else reading.concentration * factor,
+        response=reading.response,
+        absent_cause=reading.absent_cause,
+        dilution=reading.dilution,
+        position=reading.position,
+        excluded=None,
+        saturated=is_saturated(reading.response, reading.absent_cause, instrument.response_ceiling),
+        place=str(reading.place),
+    )
+
+
+def _notes(run: ParsedRun, definition: MethodDefinition, factor: float) -> tuple[str, ...]:
+    if factor == 1.0:
+        return ()
+    return (
+        f"concentrations converted from {run.concentration_unit} to {definition.concentration_unit}: "
+        f"× {factor:g}",
+    )

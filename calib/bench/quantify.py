@@ -1,0 +1,143 @@
+"""Unknowns measured later: read on the latest accepted curve still in force."""
+
+from __future__ import annotations
+
+from datetime import datetime, timedelta
+
+from sqlalchemy import select
+from sqlalchemy.orm import Session
+
+from calib import store as tables
+from calib.bench.find import current_curve, run_numbered
+from calib.bench.keeping import add_quantities
+from calib.bench.log_run import add_original, add_readings, add_run
+from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicate
+from calib.bench.quantities import quantities_of
+from calib.bench.records import QuantityRecord, RunRecord
+from calib.bench.show_run import load_run, local, show_run
+from calib.errors import InputError
+
+QUANTIFIED_ROLES = ("unknown", "control", "check", "first-check")
+
+
+def quantify_plan(store: tables.Store, plan: LogPlan) -> tuple[RunRecord, ...]:
+    """Quantify the unknowns of a planned file and write them as runs that name their curve.
+
+    Raises
+    ------
+    InputError
+        When the file holds standards, or no accepted curve is in force.
+    """
+    for run in plan.runs:
+        if run.has_standards:
+            raise InputError(f"{plan.file.name}: it holds standards; log it with calib log")
+    with store.reading() as session:
+        curves = [curve_in_force(session, run) for run in plan.runs]
+        sources = [load_run(session, c.run_id, (0, "")) for c in curves]
+    results = [quantify_on(source, run) for source, run in zip(sources, plan.runs, strict=True)]
+    now = store.now()
+    numbers = []
+    with store.change(action="quantify unknowns", by=plan.by) as session:
+        original_id = add_original(session, plan.file, now)
+        for run, curve, quantities in zip(plan.runs, curves, results, strict=True):
+            numbers.append(_write(session, plan, run, curve, quantities, original_id, now))
+    return tuple(show_run(store, n) for n in numbers)
+
+
+def quantify_on(source: RunRecord, run: PlannedRun) -> tuple[QuantityRecord, ...]:
+    """Quantities of a planned run on the curve of another run."""
+    verdict = source.evaluation.verdict
+    return quantities_of(
+        source.definition,
+        source.evaluation.curve,
+        verdict.accepted,
+        [m for m in run.measured if m.role in QUANTIFIED_ROLES],
+        verdict.lowest,
+        verdict.highest,
+    )
+
+
+def curve_in_force(session: Session, run: PlannedRun) -> tables.Curve:
+    """Latest accepted curve of the instrument and method that is still valid at the run's time.
+
+    Raises
+    ------
+    InputError
+        When there is none, or when a later curve was rejected: nobody goes back to an
+        older curve because the new one failed.
+    """
+    latest = session.execute(
+        select(tables.Run, tables.RunFacts, tables.VerdictRow.decision)
+        .join(tables.RunFacts, tables.RunFacts.run_id == tables.Run.id)
+        .join(tables.Method, tables.Method.id == tables.Run.method_id)
+        .join(tables.Curve, tables.Curve.run_id == tables.Run.id)
+        .join(tables.VerdictRow, tables.VerdictRow.curve_id == tables.Curve.id)
+        .outerjoin(tables.RunVoid, tables.RunVoid.run_id == tables.Run.id)
+        .where(
+            tables.Run.kind == "calibration",
+            tables.RunFacts.instrument_id == run.instrument.id,
+            tables.Method.name == run.method.name,
+            tables.RunFacts.at <= run.at,
+            tables.RunVoid.id.is_(None),
+            tables.is_current(tables.RunFacts),
+            tables.is_current(tables.Curve),
+        )
+        .order_by(tables.RunFacts.at.desc(), tables.Run.id.desc())
+        .limit(1)
+    ).first()
+    where = f"{run.instrument.name} and method {run.method.name}"
+    if latest is None:
+        raise InputError(f"no curve of {where} is logged before {run.at:%Y-%m-%d %H:%M}; log standards first")
+    source, facts, decision = latest
+    measured = local(facts.at, facts.offset_minutes)
+    if decision == "rejected":
+        raise InputError(
+            f"the latest curve of {where} (run {source.id}, {measured:%Y-%m-%d %H:%M}) was rejected; "
+            "log new standards: an older curve is not taken instead"
+        )
+    _refuse_expired(run, source, facts.at, measured)
+    curve = current_curve(session, source.id)
+    if curve is None:
+        raise InputError(f"run {source.id} has no curve; log new standards")
+    return curve
+
+
+def _refuse_expired(run: PlannedRun, source: tables.Run, at: datetime, shown: datetime) -> None:
+    expires = at + timedelta(hours=run.definition.valid_hours)
+    if run.at > expires:
+        raise InputError(
+            f"the curve of run {source.id} ({shown:%Y-%m-%d %H:%M}) was valid for "
+            f"{run.definition.valid_hours:g} h and has expired at {run.at:%Y-%m-%d %H:%M}; log new standards"
+        )
+
+
+def _write(
+    session: Session,
+    plan: LogPlan,
+    run: PlannedRun,
+    curve: tables.Curve,
+    quantities: tuple[QuantityRecord, ...],
+    original_id: int,
+    now: datetime,
+) -> int:
+    refuse_duplicate(session, plan.file, run)
+    still = curve_in_force(session, run)
+    if still.id != curve.id:
+        raise InputError(f"{plan.file.name}: the curve in force changed meanwhile; run the command again")
+    run_id = add_run(session, plan, run, original_id, now, curve_id=curve.id)
+    add_readings(session, run_id, run)
+    add_quantities(session, run_id, curve.id, quantities)
+    return run_id
+
+
+def dependent_runs(session: Session, run_id: int) -> list[int]:
+    """Runs of unknowns that were read on any curve of this run."""
+    run_numbered(session, run_id)
+    return list(
+        session.scalars(
+            select(tables.Run.id)
+            .join(tables.Curve, tables.Curve.id == tables.Run.curve_id)
+            .where(tables.Curve.run_id == run_id)
+            .order_by(tables.Run.id)
+        )
+    )

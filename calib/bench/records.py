@@ -1,0 +1,188 @@
+"""What the use cases hand to screen and report: frozen records of one run."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import datetime
+
+from calib.acceptance import CriterionResult
+from calib.bench.method_definition import MethodDefinition
+from calib.curves.curve import Curve
+
+
+@dataclass(frozen=True, slots=True)
+class Measured:
+    """One reading as the evaluation sees it; ``key`` ties it to its record.
+
+    ``concentration`` is nominal, in the method's unit. ``excluded`` holds the reason
+    when the reading is left out of the fit. ``place`` says where in the file it stands.
+    """
+
+    key: int
+    sample: str
+    role: str
+    concentration: float | None
+    response: float | None
+    absent_cause: str | None
+    dilution: float
+    position: str | None
+    excluded: str | None
+    saturated: bool
+    place: str = ""
+
+    @property
+    def where(self) -> str:
+        """Name for messages: sample, and position where there is one."""
+        return f"{self.sample} ({self.position})" if self.position else self.sample
+
+
+@dataclass(frozen=True, slots=True)
+class StandardRecord:
+    """A standard or anchor reading with what its curve makes of it."""
+
+    key: int
+    label: str
+    role: str
+    position: str | None
+    concentration: float
+    response: float | None
+    absent_cause: str | None
+    fitted: bool
+    back_calculated: float | None
+    relative_error: float | None
+    excluded: bool
+    reason: str | None
+    saturated: bool
+
+
+@dataclass(frozen=True, slots=True)
+class BlankRecord:
+    """A blank or zero reading and the concentration the curve reads from it."""
+
+    label: str
+    role: str
+    position: str | None
+    response: float | None
+    absent_cause: str | None
+    back_calculated: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class QuantityRecord:
+    """What one sample at one dilution was found to hold, after dilution.
+
+    ``concentration`` is None where none is reported; ``estimate`` keeps the value that
+    lies outside the calibrated range, which is stored and never reported.
+    """
+
+    sample: str
+    role: str
+    nominal: float | None
+    replicates: int
+    mean_response: float | None
+    concentration: float | None
+    estimate: float | None
+    u: float | None
+    k: float | None
+    expanded: float | None
+    lower: float | None
+    upper: float | None
+    upper_open: bool
+    confidence: float
+    kind: str
+    degrees_of_freedom: float | None
+    state: str
+    position: str | None
+    flags: tuple[str, ...]
+    dilution: float
+    unit: str
+    curve_id: int | None
+    budget: dict[str, float]
+
+
+@dataclass(frozen=True, slots=True)
+class VerdictRecord:
+    """A verdict as it was given."""
+
+    decision: str
+    criteria: tuple[CriterionResult, ...]
+    lowest: float | None
+    highest: float | None
+    r_squared: float | None
+
+    @property
+    def reasons(self) -> tuple[str, ...]:
+        """The failing criteria in words and figures."""
+        return tuple(f"{c.what}: {c.detail}" for c in self.criteria if not c.passed)
+
+    @property
+    def accepted(self) -> bool:
+        """Whether the curve may be used."""
+        return self.decision != "rejected"
+
+
+@dataclass(frozen=True, slots=True)
+class Evaluation:
+    """A run evaluated: nothing is stored yet."""
+
+    curve: Curve
+    standards: tuple[StandardRecord, ...]
+    blanks: tuple[BlankRecord, ...]
+    verdict: VerdictRecord
+    quantities: tuple[QuantityRecord, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class RunHeading:
+    """Who measured what, where and when, and from which file.
+
+    ``at`` carries the local offset. ``void_reason`` is set when the run counts no longer.
+    """
+
+    id: int | None
+    kind: str
+    instrument: str
+    instrument_kind: str
+    serial: str
+    location: str
+    method: str
+    method_version: int
+    at: datetime
+    operator: str
+    by: str
+    lot: str | None
+    file: str
+    fingerprint: str
+    layout: str
+    concentration_unit: str
+    response_unit: str
+    void_reason: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Amendment:
+    """One later decision about a run: exclusion, refit, amendment, void."""
+
+    at: datetime
+    by: str
+    what: str
+    reason: str
+
+
+@dataclass(frozen=True, slots=True)
+class RunRecord:
+    """A run as the store holds it now.
+
+    A run of unknowns has no standards of its own; its curve is the one it names.
+    """
+
+    heading: RunHeading
+    definition: MethodDefinition
+    curve_id: int | None
+    curve_run: int | None
+    evaluation: Evaluation
+    readings: tuple[Measured, ...]
+    amendments: tuple[Amendment, ...]
+    curves_before: int
+    chain_sequence: int
+    chain_head: str
