@@ -1,0 +1,1 @@
+"""Frozen results -> figures, HTML and JSON; computes nothing."""

@@ -1,0 +1,222 @@
+"""Records as plain JSON values: documented keys, full precision, null where undefined."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Sequence
+from dataclasses import fields, is_dataclass
+from datetime import date, datetime
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from calib.acceptance import CriterionResult
+
+if TYPE_CHECKING:
+    from calib.bench.records import (
+        BlankRecord,
+        Evaluation,
+        QuantityRecord,
+        RunHeading,
+        RunRecord,
+        StandardRecord,
+    )
+    from calib.bench.review_drift import DriftRecord
+
+LOG = "calib-log-1"
+RUN = "calib-run-1"
+RUNS = "calib-runs-1"
+DRIFT = "calib-drift-1"
+
+
+def log_json(file: str, records: Iterable[RunRecord]) -> dict[str, Any]:
+    """What `calib log --json` and `calib quantify --json` print."""
+    return {"schema": LOG, "file": file, "runs": [run_json(r) for r in records]}
+
+
+def run_json(record: RunRecord) -> dict[str, Any]:
+    """One run, as `calib run show --json` prints it."""
+    evaluation = record.evaluation
+    return {
+        "run": _heading(record.heading) | {"curve_run": record.curve_run},
+        "curve": _curve(record.curve_id, evaluation),
+        "standards": [_standard(s) for s in evaluation.standards],
+        "blanks": [_blank(b) for b in evaluation.blanks],
+        "verdict": _verdict(evaluation, record.definition.concentration_unit),
+        "checks": [_check(q) for q in evaluation.quantities if q.role in ("check", "first-check")],
+        "quantities": [_quantity(q) for q in evaluation.quantities if q.role in ("unknown", "control")],
+        "amendments": [plain(a) for a in record.amendments],
+        "earlier_curves": record.curves_before,
+        "record_chain": {"sequence": record.chain_sequence, "head": record.chain_head},
+    }
+
+
+def drift_json(record: DriftRecord) -> dict[str, Any]:
+    """A drift review."""
+    series = [
+        {
+            "family": s.family,
+            "name": s.name,
+            "values": plain(s.values),
+            "limits": plain(s.limits),
+            "first_signals": [record.runs[i].id for i in s.first_signals],
+        }
+        for s in record.review.series
+    ]
+    return {
+        "schema": DRIFT,
+        "instrument": record.instrument,
+        "method": record.method,
+        "unit": record.concentration_unit,
+        "references": list(record.references),
+        "runs": [
+            plain(run)
+            | {
+                "shift_percent": plain(record.shift_percent[i]),
+                "recovery_percent": plain(record.recovery_percent[i]),
+            }
+            for i, run in enumerate(record.runs)
+        ],
+        "events": [plain(e) for e in record.events],
+        "series": series,
+        "baseline_runs": record.baseline_runs,
+        "provisional": record.review.provisional,
+    }
+
+
+def listing_json(schema: str, name: str, rows: Iterable[Any]) -> dict[str, Any]:
+    """A list of records under one name."""
+    return {"schema": schema, name: [plain(r) for r in rows]}
+
+
+def plain(value: Any) -> Any:
+    """Anything of a record as JSON values; what is not finite becomes null."""
+    if isinstance(value, np.ndarray):
+        return [plain(v) for v in value.tolist()]
+    if isinstance(value, np.generic):
+        return plain(value.item())
+    if isinstance(value, float):
+        return value if math.isfinite(value) else None
+    if isinstance(value, datetime | date):
+        return value.isoformat()
+    if is_dataclass(value) and not isinstance(value, type):
+        return {f.name: plain(getattr(value, f.name)) for f in fields(value)}
+    if isinstance(value, dict):
+        return {str(k): plain(v) for k, v in value.items()}
+    if isinstance(value, Sequence) and not isinstance(value, str):
+        return [plain(v) for v in value]
+    return value
+
+
+def _heading(heading: RunHeading) -> dict[str, Any]:
+    return {
+        "id": heading.id,
+        "kind": heading.kind,
+        "instrument": heading.instrument,
+        "method": heading.method,
+        "method_version": heading.method_version,
+        "at": heading.at.isoformat(),
+        "operator": heading.operator,
+        "by": heading.by,
+        "lot": heading.lot,
+        "file": heading.file,
+        "fingerprint": heading.fingerprint,
+        "layout": heading.layout,
+        "void": heading.void_reason,
+    }
+
+
+def _curve(number: int | None, evaluation: Evaluation) -> dict[str, Any]:
+    curve = evaluation.curve
+    errors = curve.standard_errors
+    return {
+        "id": number,
+        "model": curve.model,
+        "noise": curve.noise.label,
+        "parameters": {
+            name: {"value": plain(value), "u": plain(errors[name])} for name, value in curve.parameters.items()
+        },
+        "fixed": sorted(curve.fixed),
+        "residual_sd": plain(curve.residual_sd),
+        "degrees_of_freedom": curve.degrees_of_freedom,
+        "r_squared": plain(curve.r_squared),
+        "converged": curve.converged,
+        "findings": [{"code": f.code, "message": f.message} for f in curve.findings],
+    }
+
+
+def _standard(standard: StandardRecord) -> dict[str, Any]:
+    return {
+        "label": standard.label,
+        "role": standard.role,
+        "position": standard.position,
+        "concentration": standard.concentration,
+        "response": standard.response,
+        "absent": standard.absent_cause,
+        "back_calculated": standard.back_calculated,
+        "relative_error": standard.relative_error,
+        "fitted": standard.fitted,
+        "excluded": standard.excluded,
+        "reason": standard.reason,
+        "saturated": standard.saturated,
+    }
+
+
+def _blank(blank: BlankRecord) -> dict[str, Any]:
+    return plain(blank)  # type: ignore[no-any-return]
+
+
+def _verdict(evaluation: Evaluation, unit: str) -> dict[str, Any]:
+    verdict = evaluation.verdict
+    return {
+        "decision": verdict.decision,
+        "criteria": [_criterion(c) for c in verdict.criteria],
+        "calibrated_range": {"lowest": verdict.lowest, "highest": verdict.highest, "unit": unit},
+        "r_squared": verdict.r_squared,
+    }
+
+
+def _criterion(result: CriterionResult) -> dict[str, Any]:
+    return {
+        "id": result.id,
+        "what": result.what,
+        "limit": result.limit,
+        "observed": plain(result.observed),
+        "passed": result.passed,
+        "source": result.source,
+        "detail": result.detail,
+    }
+
+
+def _check(q: QuantityRecord) -> dict[str, Any]:
+    found = q.concentration if q.concentration is not None else q.estimate
+    recovery = found / q.nominal if found is not None and q.nominal else None
+    return _quantity(q) | {"role": q.role, "nominal": q.nominal, "recovery": recovery}
+
+
+def _quantity(q: QuantityRecord) -> dict[str, Any]:
+    return {
+        "sample": q.sample,
+        "role": q.role,
+        "nominal": q.nominal,
+        "concentration": q.concentration,
+        "stored_estimate": q.estimate,
+        "u": q.u,
+        "k": q.k,
+        "U": q.expanded,
+        "lower": q.lower,
+        "upper": q.upper,
+        "upper_open": q.upper_open,
+        "confidence": q.confidence,
+        "kind": q.kind,
+        "degrees_of_freedom": q.degrees_of_freedom,
+        "replicates": q.replicates,
+        "mean_response": q.mean_response,
+        "state": q.state,
+        "position": q.position,
+        "flags": list(q.flags),
+        "dilution": q.dilution,
+        "unit": q.unit,
+        "curve_id": q.curve_id,
+        "budget": q.budget,
+    }
