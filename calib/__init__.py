@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from calib.quantification.budget import Component
     from calib.quantification.inverse import Quantity
     from calib.quantification.range import precision_profile, working_range
-    from calib.store import open_store
+    from calib.bench.laboratory import Laboratory, open_store
 
 __version__ = "0.1.0"
 
@@ -34,7 +34,8 @@ _HOME = {
     "assumed_noise": "calib.curves.noise",
     "custom_model": "calib.models",
     "fit": "calib.curves.fit",
-    "open_store": "calib.store",
+    "Laboratory": "calib.bench.laboratory",
+    "open_store": "calib.bench.laboratory",
     "precision_profile": "calib.quantification.range",
     "working_range": "calib.quantification.range",
 }
@@ -46,6 +47,7 @@ __all__ = [
     "Component",
     "Curve",
     "Finding",
+    "Laboratory",
     "NoiseModel",
     "Quantity",
     "assumed_noise",

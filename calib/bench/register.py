@@ -142,6 +142,19 @@ def list_instruments(store: tables.Store) -> tuple[InstrumentRecord, ...]:
     )
 
 
+def show_instrument(store: tables.Store, name: str) -> InstrumentRecord:
+    """One instrument.
+
+    Raises
+    ------
+    NotFound
+        Naming the instruments there are.
+    """
+    with store.reading() as session:
+        instrument_named(session, name)
+    return next(i for i in list_instruments(store) if i.name == name)
+
+
 def add_event(store: tables.Store, instrument: str, *, at: datetime, kind: str, what: str, by: str) -> None:
     """Record what happened to an instrument; a time without an offset is the instrument's own.
 

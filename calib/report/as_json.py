@@ -13,6 +13,7 @@ import numpy as np
 from calib.acceptance import CriterionResult
 
 if TYPE_CHECKING:
+    from calib.bench.log_run import EvaluatedPlan
     from calib.bench.records import (
         BlankRecord,
         Evaluation,
@@ -21,12 +22,14 @@ if TYPE_CHECKING:
         RunRecord,
         StandardRecord,
     )
+    from calib.bench.register import MethodRecord
     from calib.bench.review_drift import DriftRecord
 
 LOG = "calib-log-1"
 RUN = "calib-run-1"
 RUNS = "calib-runs-1"
 DRIFT = "calib-drift-1"
+PREVIEW = "calib-preview-1"
 
 
 def log_json(file: str, records: Iterable[RunRecord]) -> dict[str, Any]:
@@ -48,6 +51,53 @@ def run_json(record: RunRecord) -> dict[str, Any]:
         "amendments": [plain(a) for a in record.amendments],
         "earlier_curves": record.curves_before,
         "record_chain": {"sequence": record.chain_sequence, "head": record.chain_head},
+    }
+
+
+def preview_json(evaluated: EvaluatedPlan) -> dict[str, Any]:
+    """What `calib log --dry-run --json` prints: nothing is in the store, so there are no numbers."""
+    plan = evaluated.plan
+    return {
+        "schema": PREVIEW,
+        "file": plan.file.name,
+        "fingerprint": plan.file.fingerprint,
+        "layout": plan.file.layout,
+        "understood": list(plan.file.understood),
+        "runs": [
+            {
+                "instrument": run.instrument.name,
+                "method": run.method.name,
+                "method_version": run.method.version,
+                "at": run.at.isoformat(),
+                "operator": run.operator,
+                "lot": run.lot.name if run.lot else None,
+                "notes": list(run.notes),
+                "curve": _curve(None, evaluation),
+                "standards": [_standard(s) for s in evaluation.standards],
+                "verdict": _verdict(evaluation, run.definition.concentration_unit),
+                "quantities": [_quantity(q) for q in evaluation.quantities],
+            }
+            for run, evaluation in zip(plan.runs, evaluated.evaluations, strict=True)
+        ],
+    }
+
+
+def method_json(record: MethodRecord) -> dict[str, Any]:
+    """One version of a method with its limits and its own text."""
+    definition = record.definition
+    return {
+        "name": record.name,
+        "version": record.version,
+        "added_at": record.added_at.isoformat(),
+        "added_by": record.added_by,
+        "fingerprint": record.fingerprint,
+        "analyte": definition.analyte,
+        "concentration_unit": definition.concentration_unit,
+        "response_unit": definition.response_unit,
+        "model": definition.model,
+        "preset": definition.preset,
+        "limits": {k: plain(v) for k, v in definition.limits.items()},
+        "text": record.text,
     }
 
 
@@ -134,7 +184,8 @@ def _curve(number: int | None, evaluation: Evaluation) -> dict[str, Any]:
         "model": curve.model,
         "noise": curve.noise.label,
         "parameters": {
-            name: {"value": plain(value), "u": plain(errors[name])} for name, value in curve.parameters.items()
+            name: {"value": plain(value), "u": plain(errors[name])}
+            for name, value in curve.parameters.items()
         },
         "fixed": sorted(curve.fixed),
         "residual_sd": plain(curve.residual_sd),

@@ -1,0 +1,143 @@
+"""A store opened for use from Python: the same verbs as the command line."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import datetime
+from pathlib import Path
+from types import TracebackType
+from typing import Self
+
+from calib import store as tables
+from calib.bench.check_records import RecordCheck, check_records
+from calib.bench.correct_run import (
+    Change,
+    amend_run,
+    exclude_readings,
+    refit_run,
+    restore_readings,
+    void_run,
+)
+from calib.bench.log_run import evaluate_plan, log_plan
+from calib.bench.plan_run import LogOptions, plan_file
+from calib.bench.quantify import quantify_plan
+from calib.bench.records import RunRecord
+from calib.bench.review_drift import DriftRecord, review_instrument
+from calib.bench.show_run import RunLine, list_runs, show_run
+
+
+@dataclass(frozen=True, slots=True)
+class Laboratory:
+    """The use cases over one store.
+
+    ``by`` is recorded as the person who acts; it does not prove an identity.
+    Registering instruments, methods, lots and events: see `calib.bench.register`.
+    """
+
+    store: tables.Store
+    by: str
+
+    def log(
+        self,
+        path: str | Path,
+        *,
+        instrument: str | None = None,
+        methods: Sequence[str] = (),
+        at: datetime | None = None,
+        lot: str | None = None,
+        layout: str | None = None,
+    ) -> tuple[RunRecord, ...]:
+        """Log a file of standards: fit, judge, quantify."""
+        options = LogOptions(self.by, instrument, tuple(methods), at, lot, layout)
+        return log_plan(self.store, evaluate_plan(plan_file(self.store, path, options)))
+
+    def quantify(
+        self,
+        path: str | Path,
+        *,
+        instrument: str | None = None,
+        methods: Sequence[str] = (),
+        at: datetime | None = None,
+        lot: str | None = None,
+        layout: str | None = None,
+    ) -> tuple[RunRecord, ...]:
+        """Read a file of unknowns on the curve in force."""
+        options = LogOptions(self.by, instrument, tuple(methods), at, lot, layout)
+        return quantify_plan(self.store, plan_file(self.store, path, options))
+
+    def runs(
+        self, *, instrument: str | None = None, method: str | None = None, last: int | None = None
+    ) -> tuple[RunLine, ...]:
+        """Runs in the order they were measured."""
+        return list_runs(self.store, instrument=instrument, method=method, last=last)
+
+    def run(self, number: int) -> RunRecord:
+        """One run as it stands now."""
+        return show_run(self.store, number)
+
+    def exclude(
+        self, number: int, readings: Sequence[str], *, reason: str, reason_class: str = "assignable cause"
+    ) -> RunRecord:
+        """Leave standard readings out of the fit, with a reason."""
+        return exclude_readings(
+            self.store, number, readings, reason=reason, reason_class=reason_class, by=self.by
+        )
+
+    def restore(self, number: int, readings: Sequence[str], *, reason: str) -> RunRecord:
+        """Take excluded readings back, with a reason."""
+        return restore_readings(self.store, number, readings, reason=reason, by=self.by)
+
+    def refit(self, number: int, *, reason: str) -> RunRecord:
+        """Fit and judge a run again."""
+        return refit_run(self.store, number, reason=reason, by=self.by)
+
+    def amend(self, number: int, change: Change, *, reason: str) -> RunRecord:
+        """Correct facts of a run."""
+        return amend_run(self.store, number, change, reason=reason, by=self.by)
+
+    def void(self, number: int, *, reason: str) -> RunRecord:
+        """Declare that a run counts no longer."""
+        return void_run(self.store, number, reason=reason, by=self.by)
+
+    def drift(
+        self, instrument: str, method: str | None = None, *, since: datetime | None = None
+    ) -> DriftRecord:
+        """Review one instrument and method over time."""
+        return review_instrument(self.store, instrument, method, since=since)
+
+    def check(self, *, all_curves: bool = False) -> RecordCheck:
+        """Check chain, integrity and stored curves."""
+        return check_records(self.store, all_curves=all_curves)
+
+    def close(self) -> None:
+        """Let go of the store."""
+        self.store.close()
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+
+def open_store(url: str | Path, *, by: str | None = None) -> Laboratory:
+    """Open a store, or create it where there is none, for the verbs of the command line.
+
+    Parameters
+    ----------
+    url : str or Path
+        A path, or ``sqlite:///path``.
+    by : str, optional
+        Who acts; the login name where left out.
+
+    Raises
+    ------
+    StoreError
+        When it is no store, of another version, or locked.
+    """
+    import getpass
+
+    return Laboratory(tables.open_store(url), by or getpass.getuser())

@@ -1,0 +1,1 @@
+"""The command line: parse, call one use case, show, exit code. It computes nothing."""

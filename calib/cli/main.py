@@ -1,0 +1,89 @@
+"""Entry of the command line: finds the command, loads it, turns errors into one line."""
+
+from __future__ import annotations
+
+import sys
+from importlib import import_module
+
+import click
+
+# Command, where it lives, and its line in the help. Only the command that runs is imported.
+COMMANDS: dict[str, tuple[str, str]] = {
+    "demo": ("demo:demo", "Set up the fictional laboratory and show today's results."),
+    "instrument": ("instrument:instrument", "Register and list instruments."),
+    "event": ("event:event", "Record what happened to an instrument."),
+    "method": ("method:method", "Add and show method definitions."),
+    "lot": ("lot:lot", "Register and list standard lots."),
+    "log": ("log:log", "Log a file of standards: fit, judge, quantify."),
+    "quantify": ("log:quantify", "Read later unknowns on the curve in force."),
+    "run": ("run:run", "List, show and correct runs."),
+    "drift": ("drift:drift", "Review an instrument over time."),
+    "report": ("report:report", "Write the report of a run to a file."),
+    "plot": ("report:plot", "Draw the curve of a run to a file."),
+    "store": ("store:store", "Check, back up and upgrade the store."),
+}
+
+
+class LazyCommands(click.Group):
+    """A group whose commands are imported only when they run."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        """Names in the order of a working day."""
+        return list(COMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+        """Import the command of that name."""
+        if cmd_name not in COMMANDS:
+            return None
+        module, name = COMMANDS[cmd_name][0].split(":")
+        command = getattr(import_module(f"calib.cli.{module}"), name)
+        assert isinstance(command, click.Command)
+        return command
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        """List the commands without importing them."""
+        with formatter.section("Commands"):
+            formatter.write_dl([(name, text) for name, (_, text) in COMMANDS.items()])
+
+
+@click.group(cls=LazyCommands, context_settings={"help_option_names": ["-h", "--help"]})
+@click.option("--store", metavar="URL", help="Store to use: a file or sqlite:///file. Else $CALIB_STORE.")
+@click.version_option(package_name="calib", message="calib %(version)s")
+@click.pass_context
+def cli(ctx: click.Context, store: str | None) -> None:
+    """Calibration curves of analytical instruments: logged, judged, used and reviewed.
+
+    Exit codes: 0 done (and accepted), 1 bad input or refused, 2 usage,
+    3 logged but a run rejected, 4 the store check found damage.
+    """
+    ctx.obj = store
+
+
+def main() -> None:
+    """Run the command line and leave with its exit code."""
+    sys.exit(run(sys.argv[1:]))
+
+
+def run(arguments: list[str]) -> int:
+    """Run one command; its exit code."""
+    from calib.errors import CalibError
+
+    try:
+        code = cli.main(arguments, prog_name="calib", standalone_mode=False)
+    except click.ClickException as error:
+        error.show()
+        return error.exit_code
+    except click.Abort:
+        click.echo("calib: stopped; what was logged before is kept", err=True)
+        return 1
+    except CalibError as error:
+        click.echo(f"calib: {_one_line(str(error))}", err=True)
+        return 1
+    except BrokenPipeError:
+        sys.stderr.close()
+        return 0
+    return code if isinstance(code, int) else 0
+
+
+def _one_line(text: str) -> str:
+    return " ".join(text.split())

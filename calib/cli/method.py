@@ -1,0 +1,95 @@
+"""calib method."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from calib.cli.options import acting, by_option, echo_json, json_option, opened
+
+SCHEMA = "calib-methods-1"
+
+
+@click.group()
+def method() -> None:
+    """Add and show method definitions. A new version never changes what old runs were judged by."""
+
+
+@method.command()
+@click.argument("file", type=click.Path(path_type=Path))
+@by_option
+@click.pass_context
+def add(ctx: click.Context, file: Path, by: str | None) -> None:
+    """Add the method FILE.toml, as its first or next version."""
+    from calib.bench.register import add_method
+
+    with opened(ctx, create=True) as store:
+        record = add_method(store, file, by=acting(by))
+    click.echo(f"method {record.name} version {record.version} added")
+
+
+@method.command("list")
+@json_option
+@click.pass_context
+def list_(ctx: click.Context, as_json: bool) -> None:
+    """Every version of every method."""
+    from calib.bench.register import list_methods
+
+    with opened(ctx) as store:
+        records = list_methods(store)
+    if as_json:
+        from calib.report.as_json import method_json
+
+        echo_json({"schema": SCHEMA, "methods": [method_json(r) for r in records]})
+        return
+    from calib.cli.screen import print_table
+
+    print_table(
+        ("Method", ">Version", "Analyte", "Model", "Added", "By"),
+        [
+            (
+                r.name,
+                str(r.version),
+                f"{r.definition.analyte} [{r.definition.concentration_unit}]",
+                r.definition.model,
+                f"{r.added_at:%Y-%m-%d}",
+                r.added_by,
+            )
+            for r in records
+        ],
+    )
+
+
+@method.command()
+@click.argument("name")
+@click.option("--version", type=click.IntRange(min=1), help="This version, not the latest.")
+@json_option
+@click.pass_context
+def show(ctx: click.Context, name: str, version: int | None, as_json: bool) -> None:
+    """Method NAME with every limit, where it comes from and how far it was checked."""
+    from calib.bench.register import show_method
+
+    with opened(ctx) as store:
+        record = show_method(store, name, version)
+    if as_json:
+        from calib.report.as_json import method_json
+
+        echo_json({"schema": SCHEMA, "methods": [method_json(record)]})
+        return
+    from calib.cli.screen import print_table, say
+    from calib.report.wording import number
+
+    definition = record.definition
+    say(
+        f"{record.name} version {record.version}: {definition.analyte} [{definition.concentration_unit}]",
+        "bold",
+    )
+    say(
+        f"  model {definition.model}, preset {definition.preset}, "
+        f"a curve is valid for {number(definition.valid_hours)} h"
+    )
+    print_table(
+        ("Limit", ">Value", "Source", "Checked"),
+        [(key, number(v.value), v.source, v.checked) for key, v in definition.limits.items()],
+    )

@@ -1,0 +1,82 @@
+"""Options and small things that several commands share."""
+
+from __future__ import annotations
+
+import json
+import os
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from datetime import datetime
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from calib.errors import InputError
+
+if TYPE_CHECKING:
+    from calib.store import Store
+
+F = TypeVar("F", bound=Callable[..., Any])
+
+REJECTED = 3
+DAMAGED = 4
+
+
+def by_option(command: F) -> F:
+    """Add --by: who acts. It records a name and does not prove an identity."""
+    return click.option(
+        "--by", metavar="NAME", help="Who acts (recorded, not proven). Else $CALIB_BY, else the login name."
+    )(command)
+
+
+def json_option(command: F) -> F:
+    """Add --json: full precision for machines."""
+    return click.option("--json", "as_json", is_flag=True, help="Print JSON, full precision.")(command)
+
+
+def reason_option(command: F) -> F:
+    """Add --reason: every correction has one."""
+    return click.option("--reason", required=True, metavar="TEXT", help="Why, in words.")(command)
+
+
+def acting(by: str | None) -> str:
+    """Name of the person who acts."""
+    import getpass
+
+    name = (by or os.environ.get("CALIB_BY") or "").strip()
+    if name:
+        return name
+    try:
+        return getpass.getuser()
+    except (KeyError, OSError) as cause:
+        raise InputError("nobody is named: give --by NAME") from cause
+
+
+@contextmanager
+def opened(ctx: click.Context, *, create: bool = False) -> Iterator[Store]:
+    """The store this command works on."""
+    from calib.store import default_store_path, open_store
+
+    url = ctx.find_root().obj or os.environ.get("CALIB_STORE") or default_store_path()
+    store = open_store(url, create=create)
+    try:
+        yield store
+    finally:
+        store.close()
+
+
+def moment(text: str | None, option: str = "--at") -> datetime | None:
+    """A time as people write it; without an offset it is the instrument's own."""
+    if text is None:
+        return None
+    try:
+        return datetime.fromisoformat(text)
+    except ValueError as cause:
+        raise InputError(
+            f"{option} {text!r} is no time; write 2026-03-02T08:20, with +01:00 if needed"
+        ) from cause
+
+
+def echo_json(value: Any) -> None:
+    """Print JSON; NaN cannot occur in it."""
+    click.echo(json.dumps(value, indent=2, ensure_ascii=False, allow_nan=False))

@@ -1,0 +1,171 @@
+"""How a run looks on the screen: verdict first, then why, then the samples, worst first."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from itertools import groupby
+from typing import TYPE_CHECKING
+
+from calib.bench.flags import in_words
+from calib.cli.screen import print_table, say
+from calib.report.wording import number, percent, result_text, rounded
+
+if TYPE_CHECKING:
+    from calib.bench.plan_run import LogPlan
+    from calib.bench.records import QuantityRecord, RunRecord, StandardRecord, VerdictRecord
+
+STYLES = {"accepted": "bold green", "accepted with exclusions": "bold yellow", "rejected": "bold red"}
+
+
+def show_plan(plan: LogPlan) -> None:
+    """What was understood of a file."""
+    say(f"{plan.file.name}: read as {plan.file.layout}")
+    for sentence in plan.file.understood:
+        say(f"  · {sentence}")
+    for run in plan.runs:
+        lot = f", lot {run.lot.name}" if run.lot else ""
+        say(
+            f"  · instrument {run.instrument.name}, method {run.method.name} version {run.method.version}, "
+            f"measured {run.at:%Y-%m-%d %H:%M %z} by {run.operator}{lot}"
+        )
+        for note in run.notes:
+            say(f"  · {note}")
+
+
+def show_run(record: RunRecord) -> None:
+    """One run: verdict, curve, standards, checks, samples."""
+    heading = record.heading
+    if heading.kind == "calibration":
+        show_verdict(record)
+        show_curve(record)
+        show_standards(record.evaluation.standards, heading.concentration_unit)
+    else:
+        say(
+            f"run {heading.id}: unknowns on {heading.instrument}, read on the curve of run {record.curve_run}",
+            "bold",
+        )
+    if heading.void_reason is not None:
+        say(f"VOID: {heading.void_reason}", "bold red")
+    show_checks(record)
+    show_samples(record)
+    for amendment in record.amendments:
+        say(f"  {amendment.at:%Y-%m-%d %H:%M} {amendment.by}: {amendment.what}: {amendment.reason}")
+
+
+def show_verdict(record: RunRecord) -> None:
+    """The verdict line, with the failing rules in words and figures."""
+    heading, verdict = record.heading, record.evaluation.verdict
+    say(
+        f"{verdict.decision.upper()}   run {heading.id} · {heading.instrument} · {heading.method} "
+        f"v{heading.method_version} · {heading.at:%Y-%m-%d %H:%M} · {heading.operator}",
+        STYLES[verdict.decision],
+    )
+    for reason in verdict.reasons:
+        say(f"  ✗ {reason}")
+    if verdict.lowest is not None and verdict.highest is not None:
+        say(
+            f"  calibrated range {number(verdict.lowest)} to {number(verdict.highest)} "
+            f"{record.definition.concentration_unit}"
+        )
+
+
+def show_rules(verdict: VerdictRecord) -> None:
+    """Every criterion with its limit, what was observed, and the source."""
+    print_table(
+        ("Criterion", ">Limit", ">Observed", "Passed", "Source"),
+        [
+            (
+                c.what,
+                "" if c.limit is None else number(c.limit),
+                "–" if c.observed is None else number(c.observed),
+                "yes" if c.passed else "NO",
+                c.source,
+            )
+            for c in verdict.criteria
+        ],
+    )
+
+
+def show_curve(record: RunRecord) -> None:
+    """Parameters with their standard uncertainty, and findings."""
+    curve = record.evaluation.curve
+    errors = curve.standard_errors
+    parts = [
+        f"{name} {number(value)} (fixed)" if name in curve.fixed else f"{name} {rounded(value, errors[name])}"
+        for name, value in curve.parameters.items()
+    ]
+    say(f"  {curve.model}: {', '.join(parts)}")
+    say(
+        f"  residual SD {number(curve.residual_sd)} with {curve.degrees_of_freedom} degrees of freedom; "
+        f"noise {curve.noise.label}"
+    )
+    for finding in curve.findings:
+        say(f"  ! {finding.message}")
+
+
+def show_standards(standards: Iterable[StandardRecord], unit: str) -> None:
+    """One line a level: readings, what they read back as, relative errors."""
+    ordered = sorted(standards, key=lambda s: (s.role, s.concentration))
+    rows = []
+    for (role, level), group in groupby(ordered, key=lambda s: (s.role, s.concentration)):
+        members = list(group)
+        rows.append(
+            (
+                number(level),
+                role,
+                "  ".join("–" if s.response is None else number(s.response) for s in members),
+                "  ".join("–" if s.back_calculated is None else number(s.back_calculated) for s in members),
+                "  ".join(_relative_error(s) for s in members),
+                "; ".join(f"{s.label} excluded: {s.reason}" for s in members if s.excluded),
+            )
+        )
+    print_table((f">Level [{unit}]", "Role", "Responses", "Back-calculated", "Relative error", ""), rows)
+
+
+def _relative_error(standard: StandardRecord) -> str:
+    if standard.relative_error is None:
+        return standard.absent_cause or "–"
+    text = f"{100 * standard.relative_error:+.1f} %"
+    return f"({text})" if standard.excluded else text
+
+
+def show_checks(record: RunRecord) -> None:
+    """Check standards and controls with their recovery."""
+    unit = record.definition.concentration_unit
+    rows = []
+    for q in record.evaluation.quantities:
+        if q.role == "unknown":
+            continue
+        found = q.concentration if q.concentration is not None else q.estimate
+        recovery = "–" if found is None or not q.nominal else percent(found / q.nominal)
+        rows.append((q.role, q.sample, number(q.nominal or 0.0), _cell(q, record), recovery))
+    if rows:
+        print_table(("Check", "Sample", f">Nominal [{unit}]", ">Found", ">Recovery"), rows)
+
+
+def show_samples(record: RunRecord) -> None:
+    """Unknowns, flagged ones first."""
+    samples = [q for q in record.evaluation.quantities if q.role == "unknown"]
+    if not samples:
+        say("  no unknowns in this run")
+        return
+    ordered = sorted(samples, key=lambda q: (not q.flags, q.sample, q.dilution))
+    confidence = f"{100 * samples[0].confidence:.4g} %"
+    print_table(
+        ("Sample", ">n", ">Dilution", f">Result ({samples[0].kind}, {confidence})", "Flags"),
+        [
+            (
+                q.sample,
+                str(q.replicates),
+                f"× {number(q.dilution)}" if q.dilution != 1 else "",
+                _cell(q, record),
+                "; ".join(in_words(f) for f in q.flags),
+            )
+            for q in ordered
+        ],
+    )
+
+
+def _cell(q: QuantityRecord, record: RunRecord) -> str:
+    verdict = record.evaluation.verdict
+    return result_text(q, verdict.lowest, verdict.highest)
