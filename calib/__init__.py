@@ -9,6 +9,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from calib.bench.laboratory import Laboratory, open_store
     from calib.curves.curve import BackCalculation, Curve
     from calib.curves.diagnostics import Finding
     from calib.curves.fit import fit
@@ -18,7 +19,6 @@ if TYPE_CHECKING:
     from calib.quantification.budget import Component
     from calib.quantification.inverse import Quantity
     from calib.quantification.range import precision_profile, working_range
-    from calib.bench.laboratory import Laboratory, open_store
 
 __version__ = "0.1.0"
 

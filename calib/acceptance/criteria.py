@@ -16,6 +16,7 @@ from calib.acceptance.standard_criteria import (
     HIGHEST,
     LOWEST,
     MIDDLE,
+    RELATIVE_ERRORS,
     ErrorAtHighest,
     ErrorAtLowest,
     ErrorOfStandards,
@@ -76,7 +77,20 @@ def criteria_from(limits: Mapping[str, Limit]) -> tuple[Criterion, ...]:
         check_value(key, limit, CRITERIA[key].quantity)
     _refuse_without_relative_error(complete)
     _refuse_narrow_ends(complete)
-    return tuple(criterion(complete) for key, criterion in CRITERIA.items() if key in complete)
+    return tuple(
+        criterion(complete)
+        for key, criterion in CRITERIA.items()
+        if key in complete and not _counted_by_the_share(key, complete)
+    )
+
+
+def _counted_by_the_share(key: str, limits: Mapping[str, Limit]) -> bool:
+    """Whether a relative-error limit rejects nothing by itself.
+
+    Where a method allows a share of the standards to fail, a single one beyond its limit
+    counts against that share; only without such a share must every standard keep it.
+    """
+    return StandardsPassing.key in limits and key in RELATIVE_ERRORS
 
 
 def _refuse_unknown(limits: Mapping[str, Limit]) -> None:

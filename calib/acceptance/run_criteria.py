@@ -6,7 +6,7 @@ from typing import ClassVar
 from calib.acceptance.criterion import CriterionResult, LimitedCriterion
 from calib.acceptance.evidence import Evidence, JudgedCheck
 from calib.acceptance.limits import Quantity, at_most, within
-from calib.acceptance.wording import amount, count, percent, signed_percent
+from calib.acceptance.wording import amount, count, listed, percent, signed_percent
 
 UNUSABLE_FINDINGS = ("not-converged", "not-identifiable", "too-few-levels", "at-bound")
 """Findings of a curve that no limit of a method can outweigh."""
@@ -88,7 +88,7 @@ class CheckRecovery(LimitedCriterion):
         words = [
             f"{c.label} at {amount(c.level, evidence.concentration_unit)}: {self._say(c)}" for c in shown
         ]
-        return ("beyond the limit: " if failing else "largest: ") + ", ".join(words)
+        return ("beyond the limit: " if failing else "largest: ") + listed(words)
 
     def _say(self, check: JudgedCheck) -> str:
         if math.isnan(check.deviation):

@@ -2,16 +2,26 @@
 
 import math
 from collections.abc import Iterable, Mapping
+from dataclasses import replace
 from typing import ClassVar
 
 from calib.acceptance.criterion import CriterionResult, LimitedCriterion
 from calib.acceptance.evidence import Evidence, JudgedStandard
 from calib.acceptance.limits import Limit, Quantity, at_least, within
-from calib.acceptance.wording import amount, count, percent, relative_error_words, signed_percent
+from calib.acceptance.wording import (
+    amount,
+    count,
+    listed,
+    percent,
+    relative_error_words,
+    signed_percent,
+    worst_first,
+)
 
 MIDDLE = "relative_error"
 LOWEST = "relative_error_lowest"
 HIGHEST = "relative_error_highest"
+RELATIVE_ERRORS = (MIDDLE, LOWEST, HIGHEST)
 
 
 def governing_key(limits: Mapping[str, Limit], level: float, ends: tuple[float, float] | None) -> str:
@@ -62,9 +72,9 @@ class ErrorOfStandards(LimitedCriterion):
     def _detail(
         self, governed: list[JudgedStandard], failing: list[JudgedStandard], evidence: Evidence
     ) -> str:
-        shown = failing or [max(governed, key=lambda s: abs(s.relative_error))]
+        shown = worst_first(failing) or [max(governed, key=lambda s: abs(s.relative_error))]
         words = [relative_error_words(s, evidence.concentration_unit, self.limit.value) for s in shown]
-        return ("beyond the limit: " if failing else "largest: ") + ", ".join(words)
+        return ("beyond the limit: " if failing else "largest: ") + listed(words)
 
 
 class ErrorAtLowest(ErrorOfStandards):
@@ -96,7 +106,14 @@ class StandardsPassing(LimitedCriterion):
 
     def judge(self, evidence: Evidence) -> CriterionResult:
         """Compare the passing share with the limit."""
-        what = f"at least {percent(self.limit.value)} of the standards within their limit"
+        result = self._judge(evidence)
+        return replace(result, source=self._sources())
+
+    def _judge(self, evidence: Evidence) -> CriterionResult:
+        what = (
+            f"at least {percent(self.limit.value)} of the standards within their relative error "
+            f"({self._limits_in_words()})"
+        )
         if not evidence.judged:
             return self._result(what, None, False, "no standard above zero in this run")
         failing = [s for s in evidence.judged if not _keeps_own_limit(s, self.limits, evidence)]
@@ -110,9 +127,19 @@ class StandardsPassing(LimitedCriterion):
     def _named(self, failing: list[JudgedStandard], evidence: Evidence) -> str:
         words = [
             relative_error_words(s, evidence.concentration_unit, _own_limit(s, self.limits, evidence))
-            for s in failing
+            for s in worst_first(failing)
         ]
-        return "; not within: " + ", ".join(words) if words else ""
+        return "; not within: " + listed(words) if words else ""
+
+    def _limits_in_words(self) -> str:
+        """The relative-error limits this share counts against."""
+        whom = {MIDDLE: "", LOWEST: "lowest level ", HIGHEST: "highest level "}
+        return ", ".join(f"{w}{percent(self.limits[k].value)}" for k, w in whom.items() if k in self.limits)
+
+    def _sources(self) -> str:
+        """Where the share and the limits it counts against come from, each once."""
+        keys = (self.key, *RELATIVE_ERRORS)
+        return "; ".join(dict.fromkeys(self.limits[k].cited for k in keys if k in self.limits))
 
 
 class LevelsPassing(LimitedCriterion):

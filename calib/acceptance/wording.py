@@ -36,6 +36,19 @@ def relative_error_words(standard: JudgedStandard, unit: str, limit: float) -> s
     return f"{standard.label} at {amount(standard.level, unit)}: {_outcome(standard, limit)}"
 
 
+def listed(words: list[str], most: int = 4) -> str:
+    """Join so many words; the others are counted."""
+    rest = len(words) - most
+    return ", ".join(words[:most]) + (f" and {rest} more" if rest > 0 else "")
+
+
+def worst_first(standards: list[JudgedStandard]) -> list[JudgedStandard]:
+    """Standards without a back-calculated value first, then by the size of their relative error."""
+    return sorted(
+        standards, key=lambda s: -math.inf if math.isnan(s.relative_error) else -abs(s.relative_error)
+    )
+
+
 def count(number: int, noun: str) -> str:
     """Write a number of things, for example '1 blank' or '2 blanks'."""
     return f"{number} {noun}" if number == 1 else f"{number} {noun}s"

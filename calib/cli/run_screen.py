@@ -91,7 +91,7 @@ def show_curve(record: RunRecord) -> None:
     curve = record.evaluation.curve
     errors = curve.standard_errors
     parts = [
-        f"{name} {number(value)} (fixed)" if name in curve.fixed else f"{name} {rounded(value, errors[name])}"
+        f"{name} {number(value)} (fixed)" if name in curve.fixed else _with_u(name, value, errors[name])
         for name, value in curve.parameters.items()
     ]
     say(f"  {curve.model}: {', '.join(parts)}")
@@ -101,6 +101,11 @@ def show_curve(record: RunRecord) -> None:
     )
     for finding in curve.findings:
         say(f"  ! {finding.message}")
+
+
+def _with_u(name: str, value: float, u: float) -> str:
+    shown, uncertainty = rounded(value, u)
+    return f"{name} {shown} (u {uncertainty})"
 
 
 def show_standards(standards: Iterable[StandardRecord], unit: str) -> None:
