@@ -143,6 +143,7 @@ def _problem(
                 f"{what} names {sorted(unknown)[0]!r}, which model '{model.name}' does not have; "
                 f"its parameters are {', '.join(model.names)}"
             )
+    _refuse_start(model, start)
     held = {n: v for n, v in model.fixed_by_default.items() if n not in bounds and n not in start} | dict(
         fixed
     )
@@ -158,6 +159,14 @@ def _problem(
         raise ModelError(f"fixed {model.names[int(np.argmax(outside))]} lies outside what the model allows")
     ones = np.ones(standards.response.size)
     return Problem(model, standards.concentration, standards.response, ones, template, free, lower, upper)
+
+
+def _refuse_start(model: ResponseModel, start: Mapping[str, float]) -> None:
+    for name, value in start.items():
+        if not np.isfinite(value):
+            raise ModelError(f"start of {name} = {value} must be finite; give a rough value or leave it out")
+        if model.parameters[model.index(name)].positive and value <= 0:
+            raise ModelError(f"start of {name} = {value:g} must be above 0 in model '{model.name}'")
 
 
 def _bounds(model: ResponseModel, standards: Standards, bounds: Bounds) -> tuple[Array, Array]:

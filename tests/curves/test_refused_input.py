@@ -32,6 +32,8 @@ REFUSED: list[tuple[str, type[CalibError], str, dict[str, Any]]] = [
     ("unknown fixed", ModelError, r"fixed names 'top'.*zero, infinite, midpoint, slope", {"fixed": {"top": 1.0}}),
     ("unknown bound", ModelError, "bounds names 'top'", {"bounds": {"top": (0, 1)}}),
     ("unknown start", ModelError, "start names 'top'", {"start": {"top": 1.0}}),
+    ("start of nan", ModelError, "start of slope = nan must be finite", {"start": {"slope": np.nan}}),
+    ("start below zero", ModelError, "start of midpoint = -3 must be above 0", {"start": {"midpoint": -3.0}}),
     ("bounds upside down", ModelError, r"lower < upper, got \(3, 1\)", {"bounds": {"slope": (3, 1)}}),
     ("bound below zero", ModelError, "must allow values above 0", {"bounds": {"midpoint": (-3, -1)}}),
     ("fixed at nan", ModelError, "finite value", {"fixed": {"zero": np.nan}}),
