@@ -34,6 +34,18 @@ def number(value: float | None, digits: int = 4) -> str:
     >>> number(0.25), number(1234567.0), number(0.000012345), number(None)
     ('0.25', '1234567', '1.234e-05', '–')
     """
+    shown = significant(value, digits)
+    return shown.rstrip("0").rstrip(".") if "." in shown and "e" not in shown else shown
+
+
+def significant(value: float | None, digits: int = 4) -> str:
+    """Write a number to so many significant digits, trailing zeros kept.
+
+    Examples
+    --------
+    >>> significant(0.25), significant(99.996), significant(1234567.0), significant(None)
+    ('0.2500', '100.0', '1234567', '–')
+    """
     if value is None or not math.isfinite(value):
         return MISSING
     if value == 0:
@@ -41,7 +53,8 @@ def number(value: float | None, digits: int = 4) -> str:
     if not SMALLEST_PLAIN <= abs(value) < LARGEST_PLAIN:
         return f"{value:.{digits}g}"
     shown = _to_place(value, min(_leading_place(value) - digits + 1, 0))
-    return shown.rstrip("0").rstrip(".") if "." in shown else shown
+    carried = _leading_place(float(shown)) > _leading_place(value) and "." in shown
+    return shown[:-1].rstrip(".") if carried else shown
 
 
 def percent(fraction: float | None, digits: int = 1) -> str:

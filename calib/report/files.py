@@ -1,0 +1,99 @@
+"""Write reports and pictures; a file is there whole or not at all."""
+
+from __future__ import annotations
+
+import json
+import os
+from contextlib import suppress
+from io import BytesIO
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from calib.errors import InputError, UnreadableFile
+
+if TYPE_CHECKING:
+    from matplotlib.figure import Figure
+
+    from calib.bench.records import RunRecord
+
+REPORTS = (".html", ".json")
+PICTURES = (".svg", ".png")
+# The same record gives the same bytes: no date, no random identifiers.
+SALT = "calib"
+
+
+def write_report(record: RunRecord, path: str | Path) -> Path:
+    """Write the report of a run, by suffix: .html or .json.
+
+    Raises
+    ------
+    InputError
+        For another suffix.
+    UnreadableFile
+        When the place cannot be written.
+    """
+    path = Path(path)
+    match _suffix(path, REPORTS):
+        case ".html":
+            from calib.report.html_report import render_run
+
+            text = render_run(record)
+        case _:
+            from calib.report.as_json import run_json
+
+            text = json.dumps(run_json(record), ensure_ascii=False, indent=2, allow_nan=False) + "\n"
+    return _write(path, text.encode())
+
+
+def write_figure(figure: Figure, path: str | Path) -> Path:
+    """Write a picture, by suffix: .svg or .png.
+
+    Raises
+    ------
+    InputError
+        For another suffix.
+    UnreadableFile
+        When the place cannot be written.
+    """
+    path = Path(path)
+    return _write(path, picture(figure, _suffix(path, PICTURES).removeprefix(".")))
+
+
+def picture(figure: Figure, kind: str) -> bytes:
+    """Draw a figure as 'svg' or 'png'; the same figure gives the same bytes."""
+    from matplotlib import rc_context
+
+    metadata: dict[str, Any] = {"Date": None, "Creator": None} if kind == "svg" else {"Software": None}
+    out = BytesIO()
+    with rc_context({"svg.hashsalt": SALT, "svg.fonttype": "path"}):
+        figure.savefig(out, format=kind, metadata=metadata)
+    return out.getvalue()
+
+
+def _suffix(path: Path, allowed: tuple[str, ...]) -> str:
+    suffix = path.suffix.lower()
+    if suffix not in allowed:
+        raise InputError(
+            f"{path.name}: cannot write '{suffix or 'no suffix'}'; end the name in {' or '.join(allowed)}"
+        )
+    return suffix
+
+
+def _write(path: Path, content: bytes) -> Path:
+    """Write beside the place, then put it there in one step."""
+    beside = path.with_name(f".{path.name}.{os.getpid()}.part")
+    try:
+        beside.write_bytes(content)
+        beside.replace(path)
+    except OSError as cause:
+        reason = cause.strerror or type(cause).__name__
+        raise UnreadableFile(f"cannot write {path}: {reason}; choose a place that can be written") from cause
+    finally:
+        _discard(beside)
+    return path
+
+
+def _discard(beside: Path) -> None:
+    """Take away what an interrupted write left; nothing is there after a whole one."""
+    with suppress(OSError):
+        beside.unlink(missing_ok=True)

@@ -1,0 +1,269 @@
+"""The tables of a run as rows of words, for whatever lays them out."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from calib.acceptance.limits import within
+from calib.acceptance.wording import signed_percent
+from calib.bench.flags import in_words
+from calib.report.standard_limits import relative_error_limit
+from calib.report.wording import (
+    LEVEL_DIGITS,
+    MISSING,
+    expanded_text,
+    interval_text,
+    number,
+    percent,
+    quantity_text,
+    significant,
+    with_unit,
+)
+
+if TYPE_CHECKING:
+    from calib.acceptance import CriterionResult
+    from calib.bench.records import BlankRecord, QuantityRecord, RunRecord, StandardRecord
+
+CHECK_LIMITS = {"check": "check_recovery", "first-check": "first_check_recovery"}
+SHARES = ("standards_passing",)
+DEVIATIONS = (
+    "relative_error",
+    "relative_error_lowest",
+    "relative_error_highest",
+    "relative_standard_error",
+    "check_recovery",
+    "first_check_recovery",
+)
+# Of a value outside the calibrated range nothing but the limit is printed, so nothing about its interval.
+ABOUT_THE_INTERVAL = ("lopsided", "one-sided", "no-value")
+
+
+@dataclass(frozen=True, slots=True)
+class StandardRow:
+    """One standard; ``marked`` where it is excluded, absent, saturated or beyond its limit."""
+
+    label: str
+    position: str
+    level: str
+    response: str
+    back_calculated: str
+    relative_error: str
+    limit: str
+    status: str
+    marked: bool
+
+
+@dataclass(frozen=True, slots=True)
+class RuleRow:
+    """One acceptance criterion."""
+
+    what: str
+    detail: str
+    limit: str
+    observed: str
+    verdict: str
+    source: str
+    failed: bool
+
+
+@dataclass(frozen=True, slots=True)
+class BlankRow:
+    """One blank."""
+
+    label: str
+    role: str
+    position: str
+    response: str
+    back_calculated: str
+
+
+@dataclass(frozen=True, slots=True)
+class CheckRow:
+    """One check standard, first check or control sample."""
+
+    label: str
+    role: str
+    nominal: str
+    found: str
+    recovery: str
+    limit: str
+    remarks: str
+
+
+@dataclass(frozen=True, slots=True)
+class UnknownRow:
+    """One unknown at one dilution; ``marked`` where it has no value or a flag."""
+
+    sample: str
+    n: str
+    mean_response: str
+    dilution: str
+    result: str
+    expanded: str
+    k: str
+    interval: str
+    kind: str
+    remarks: str
+    marked: bool
+
+
+def standard_rows(record: RunRecord) -> tuple[StandardRow, ...]:
+    """Standards by level, in the order of the file within one."""
+    ordered = sorted(record.evaluation.standards, key=lambda s: s.concentration)
+    return tuple(_standard(record, s) for s in ordered)
+
+
+def _standard(record: RunRecord, s: StandardRecord) -> StandardRow:
+    limit = relative_error_limit(record, s.concentration) if s.role == "standard" else None
+    error = MISSING
+    if s.relative_error is not None:
+        error = percent_signed(s.relative_error, limit)
+    status = _status(s, limit)
+    return StandardRow(
+        label=s.label,
+        position=s.position or "",
+        level=number(s.concentration, LEVEL_DIGITS),
+        response=s.absent_cause or significant(s.response),
+        back_calculated=significant(s.back_calculated),
+        relative_error=error,
+        limit=MISSING if limit is None else f"± {number(100 * limit)} %",
+        status="; ".join(status),
+        marked=bool(status) and status != ["anchor, not judged"],
+    )
+
+
+def percent_signed(fraction: float, limit: float | None) -> str:
+    """Relative error in percent with its sign, never rounded onto a limit it is beyond."""
+    return signed_percent(fraction, float("inf") if limit is None else limit)
+
+
+def _status(s: StandardRecord, limit: float | None) -> list[str]:
+    words = []
+    if s.excluded:
+        words.append(f"excluded: {s.reason}" if s.reason else "excluded")
+    if s.absent_cause:
+        words.append(f"absent ({s.absent_cause})")
+    if s.saturated:
+        words.append("saturated")
+    if s.role == "anchor":
+        words.append("anchor, not judged")
+    if limit is not None and s.response is not None and not s.excluded:
+        if s.relative_error is None:
+            words.append("no back-calculated value")
+        elif not within(s.relative_error, limit):
+            words.append("beyond the limit")
+    return words
+
+
+def rule_rows(record: RunRecord) -> tuple[RuleRow, ...]:
+    """Acceptance criteria, failed ones first."""
+    ordered = sorted(record.evaluation.verdict.criteria, key=lambda c: c.passed)
+    return tuple(_rule(c, record.definition.concentration_unit) for c in ordered)
+
+
+def _rule(c: CriterionResult, unit: str) -> RuleRow:
+    return RuleRow(
+        what=c.what,
+        detail=c.detail,
+        limit=_criterion_figure(c, c.limit, unit),
+        observed=_criterion_figure(c, c.observed, unit),
+        verdict="kept" if c.passed else "NOT KEPT",
+        source=c.source,
+        failed=not c.passed,
+    )
+
+
+def _criterion_figure(c: CriterionResult, value: float | None, unit: str) -> str:
+    if value is None:
+        return MISSING
+    if c.id in DEVIATIONS and c.limit is not None:
+        return (
+            f"{number(100 * value)} %"
+            if value == c.limit
+            else signed_percent(value, c.limit).removeprefix("+")
+        )
+    if c.id in SHARES:
+        return percent(value)
+    return with_unit(number(value), unit) if c.id == "blank" else number(value)
+
+
+def blank_rows(record: RunRecord) -> tuple[BlankRow, ...]:
+    """Blanks, zero standards and carry-over blanks of the run."""
+    return tuple(_blank(b) for b in record.evaluation.blanks)
+
+
+def _blank(b: BlankRecord) -> BlankRow:
+    return BlankRow(
+        b.label,
+        b.role,
+        b.position or "",
+        b.absent_cause or significant(b.response),
+        number(b.back_calculated, 3),
+    )
+
+
+def check_rows(record: RunRecord) -> tuple[CheckRow, ...]:
+    """Check standards, first checks and control samples."""
+    found = record.evaluation.quantities
+    return tuple(_check(record, q) for q in found if q.role in (*CHECK_LIMITS, "control"))
+
+
+def _check(record: RunRecord, q: QuantityRecord) -> CheckRow:
+    verdict, limit = record.evaluation.verdict, record.definition.limits.get(CHECK_LIMITS.get(q.role, ""))
+    value = q.concentration
+    return CheckRow(
+        label=q.sample,
+        role=q.role,
+        nominal=number(q.nominal, LEVEL_DIGITS),
+        found=quantity_text(q, verdict.lowest, verdict.highest),
+        recovery=percent(value / q.nominal if value is not None and q.nominal else None),
+        limit=MISSING if limit is None else f"100 ± {number(100 * limit.value)} %",
+        remarks=remarks(q),
+    )
+
+
+def unknown_rows(record: RunRecord) -> tuple[UnknownRow, ...]:
+    """Unknowns, worst first: without a value, then flagged, then the others in the order of the file."""
+    found = [q for q in record.evaluation.quantities if q.role == "unknown"]
+    return tuple(_unknown(record, q) for q in sorted(found, key=_badness))
+
+
+def _badness(q: QuantityRecord) -> int:
+    return 0 if q.concentration is None else 1 if q.flags else 2
+
+
+def _unknown(record: RunRecord, q: QuantityRecord) -> UnknownRow:
+    verdict = record.evaluation.verdict
+    return UnknownRow(
+        sample=q.sample,
+        n=str(q.replicates),
+        mean_response=significant(q.mean_response),
+        dilution=f"× {number(q.dilution)}",
+        result=quantity_text(q, verdict.lowest, verdict.highest),
+        expanded=expanded_text(q),
+        k=f"{q.k:.2f}" if expanded_text(q) != MISSING and q.k is not None else MISSING,
+        interval=interval_text(q),
+        kind=q.kind if q.concentration is not None else "",
+        remarks=remarks(q),
+        marked=q.concentration is None or bool(q.flags),
+    )
+
+
+def remarks(q: QuantityRecord) -> str:
+    """Flags in words; of a censored value none about the interval that is not printed."""
+    outside = q.position in ("above", "below")
+    return "; ".join(in_words(f) for f in q.flags if not (outside and f in ABOUT_THE_INTERVAL))
+
+
+def excluded_readings(record: RunRecord) -> tuple[str, ...]:
+    """Readings left out of the fit, with their reason."""
+    return tuple(f"{r.where}: {r.excluded}" for r in record.readings if r.excluded is not None)
+
+
+def absent_readings(record: RunRecord) -> tuple[str, ...]:
+    """Readings without a number, with their cause and place in the file."""
+    found = [r for r in record.readings if r.absent_cause is not None]
+    return tuple(
+        f"{r.where}, {r.role}: {r.absent_cause}" + (f" ({r.place})" if r.place else "") for r in found
+    )
