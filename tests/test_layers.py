@@ -38,7 +38,7 @@ ALLOWED = {
     "intake": set(),
     "store": {"shipped"},
     "bench": {*LAYERS[:7], "shipped", "__version__"},
-    "report": {"acceptance", "drift", "shipped", "__version__"},
+    "report": {"acceptance", "drift", "bench", "shipped", "__version__"},
     "cli": {"bench", "report", "shipped", "__version__"},
 }
 CORE = ("models", "curves", "quantification", "acceptance", "drift")

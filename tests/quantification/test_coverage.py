@@ -1,7 +1,7 @@
 """Nominal 95 % intervals of simulated unknowns contain the truth in about 95 % of cases.
 
 Seeded runs, 8 levels × 2, noise sd = 0.04·mean^0.8 with its true variance function
-assumed. The standard error of a coverage is sqrt(0.95·0.05/runs), 1.1 points for 400 runs
+assumed. The standard error of a coverage is sqrt(0.95·0.05/runs), 1.3 points for 300 runs
 and 1.5 for 200; 3.2 standard errors are allowed at each concentration and 2 for the mean
 over the concentrations. Larger simulations belong to tests/benchmarks.
 """
@@ -17,7 +17,7 @@ from calib.models import response_model
 
 NOISE = calib.assumed_noise("response", exponent=1.6)
 TRUTHS = {
-    "rising 4PL": ("4PL", RISING, (1.0, 3.0, 30.0, 300.0, 1000.0), 400),
+    "rising 4PL": ("4PL", RISING, (1.0, 3.0, 30.0, 300.0, 1000.0), 300),
     "falling 4PL": ("4PL", FALLING, (3.0, 30.0, 300.0), 200),
     "saturation": ("saturation", (0.05, 2.5, 100.0), (1.0, 10.0, 100.0, 600.0), 200),
 }
