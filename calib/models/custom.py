@@ -37,6 +37,10 @@ class CustomModel(ResponseModel):
         with np.errstate(all="ignore"):
             return as_array(self._response(as_array(x), *p))
 
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
+        """Columns of the gradient."""
+        return tuple(np.moveaxis(self.gradient(x, p), -1, 0))
+
     def gradient(self, x: ArrayLike, p: Parameters) -> Array:
         """Use the user's gradient (n, k), or else differentiate numerically.
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import ClassVar
+
 import numpy as np
 from numpy.typing import ArrayLike
 
@@ -12,7 +14,6 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
-    columns,
     half_response,
     positive_range,
 )
@@ -24,6 +25,7 @@ class FirstOrder(ResponseModel):
     name = "first-order"
     formula = "offset + amplitude·(1 − exp(−rate·x))"
     plateau = True
+    amplitude: ClassVar[dict[str, float]] = {"amplitude": 1.0}
     parameters = (
         Parameter("offset", "response at concentration 0", "response", linear=True),
         Parameter("amplitude", "response between offset and plateau", "response", linear=True),
@@ -35,12 +37,12 @@ class FirstOrder(ResponseModel):
         offset, amplitude, rate = p
         return as_array(offset - amplitude * np.expm1(-rate * as_array(x)))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in offset, amplitude and rate."""
         _, amplitude, rate = p
         x = as_array(x)
         share = -np.expm1(-rate * x)
-        return columns(np.ones_like(share), share, amplitude * x * np.exp(-rate * x))
+        return np.ones_like(share), share, amplitude * x * np.exp(-rate * x)
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration."""

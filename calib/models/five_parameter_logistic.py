@@ -15,7 +15,6 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
-    columns,
     half_response,
     positive_range,
 )
@@ -31,6 +30,7 @@ class FiveParameterLogistic(ResponseModel):
     name = "5PL"
     formula = "infinite + (zero − infinite)/(1 + (x/midpoint)^slope)^asymmetry"
     plateau = True
+    amplitude: ClassVar[dict[str, float]] = {"zero": 1.0, "infinite": -1.0}
     parameters: ClassVar[tuple[Parameter, ...]] = (
         Parameter("zero", "response at concentration 0", "response", linear=True),
         Parameter("infinite", "asymptote for large concentrations", "response", linear=True),
@@ -39,12 +39,16 @@ class FiveParameterLogistic(ResponseModel):
         Parameter("asymmetry", "difference between the two bends", "1", 0.01, 100.0, positive=True),
     )
 
-    def _steps(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array, Array]:
-        """(ln x − ln midpoint), 1 − F and ln F with F = 1/(1 + (x/midpoint)^slope)."""
+    def _distance(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array]:
+        """Ln x − ln midpoint, and slope times that (−inf at x = 0)."""
         x = as_array(x)
         distance = np.log(np.where(x > 0, x, 1.0)) - np.log(p[2])
-        exponent = np.where(x > 0, p[3] * distance, -np.inf)
-        return as_array(distance), as_array(expit(exponent)), as_array(-np.logaddexp(0.0, exponent))
+        return as_array(distance), as_array(np.where(x > 0, p[3] * distance, -np.inf))
+
+    def _steps(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array, Array]:
+        """(ln x − ln midpoint), 1 − F and ln F with F = 1/(1 + (x/midpoint)^slope)."""
+        distance, exponent = self._distance(x, p)
+        return distance, as_array(expit(exponent)), as_array(-np.logaddexp(0.0, exponent))
 
     def response(self, x: ArrayLike, p: Parameters) -> Array:
         """Response at concentrations ``x`` >= 0; exactly ``zero`` at x = 0."""
@@ -53,16 +57,16 @@ class FiveParameterLogistic(ResponseModel):
         # Written from the zero response, so that x = 0 is exact.
         return as_array(zero + (zero - infinite) * np.expm1(asymmetry * log_f))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in zero, infinite, midpoint, slope and asymmetry."""
         zero, infinite, midpoint, slope, asymmetry = p
         distance, rest, log_f = self._steps(x, p)
         share = np.exp(asymmetry * log_f)
         fall = (zero - infinite) * asymmetry * share * rest
-        return columns(
+        return (
             share,
             -np.expm1(asymmetry * log_f),
-            fall * slope / midpoint,
+            fall * (slope / midpoint),
             -fall * distance,
             (zero - infinite) * share * log_f,
         )

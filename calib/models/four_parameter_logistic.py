@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike
+from scipy.special import expit
 
 from calib.models.five_parameter_logistic import FiveParameterLogistic, _lattice, _logit_start, _midpoints
-from calib.models.response_model import Array, Parameter, Parameters, as_array, columns
+from calib.models.response_model import Array, Parameter, Parameters, as_array
 
 
 class FourParameterLogistic(FiveParameterLogistic):
@@ -29,13 +30,13 @@ class FourParameterLogistic(FiveParameterLogistic):
         zero, infinite = p[0], p[1]
         return as_array(zero + (infinite - zero) * self._steps(x, p)[1])
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in zero, infinite, midpoint and slope."""
         zero, infinite, midpoint, slope = p
-        distance, rest, log_f = self._steps(x, p)
-        share = np.exp(log_f)
+        distance, exponent = self._distance(x, p)
+        share, rest = expit(-exponent), expit(exponent)
         fall = (zero - infinite) * share * rest
-        return columns(share, rest, fall * slope / midpoint, -fall * distance)
+        return share, rest, fall * (slope / midpoint), -fall * distance
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration; infinite at x = 0 when slope < 1."""

@@ -11,7 +11,6 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
-    columns,
 )
 
 
@@ -31,10 +30,10 @@ class Line(ResponseModel):
         intercept, slope = p
         return as_array(intercept + slope * as_array(x))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in intercept and slope."""
-        x = np.broadcast_arrays(as_array(x), *p)[0]
-        return columns(np.ones_like(x), x)
+        x = as_array(x)
+        return np.ones_like(x), x
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Sensitivity, the same everywhere."""

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import ClassVar
+
 import numpy as np
 from numpy.typing import ArrayLike
 
@@ -12,7 +14,6 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
-    columns,
 )
 
 
@@ -21,6 +22,7 @@ class PowerLaw(ResponseModel):
 
     name = "power-law"
     formula = "offset + scale·x^exponent"
+    amplitude: ClassVar[dict[str, float]] = {"scale": 1.0}
     parameters = (
         Parameter("offset", "response at concentration 0", "response", linear=True),
         Parameter("scale", "response above the offset at concentration 1", "response", linear=True),
@@ -32,13 +34,13 @@ class PowerLaw(ResponseModel):
         offset, scale, exponent = p
         return as_array(offset + scale * as_array(x) ** exponent)
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in offset, scale and exponent."""
         _, scale, exponent = p
         x = as_array(x)
         power = x**exponent
         log_x = np.log(np.where(x > 0, x, 1.0))
-        return columns(np.ones_like(power), power, scale * power * log_x)
+        return np.ones_like(power), power, scale * power * log_x
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration."""

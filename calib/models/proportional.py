@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike
 
-from calib.models.response_model import Array, Parameter, Parameters, ResponseModel, as_array, columns
+from calib.models.response_model import Array, Parameter, Parameters, ResponseModel, as_array
 
 
 class Proportional(ResponseModel):
@@ -20,9 +20,9 @@ class Proportional(ResponseModel):
         """Response at concentrations ``x``."""
         return as_array(p[0] * as_array(x))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivative in the slope."""
-        return columns(np.broadcast_arrays(as_array(x), *p)[0])
+        return (as_array(x),)
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Sensitivity, the same everywhere."""

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike
 
-from calib.models.response_model import Array, Parameter, Parameters, ResponseModel, as_array, columns
+from calib.models.response_model import Array, Parameter, Parameters, ResponseModel, as_array
 
 
 class Quadratic(ResponseModel):
@@ -30,10 +30,10 @@ class Quadratic(ResponseModel):
         x = as_array(x)
         return as_array(intercept + x * (slope + curvature * x))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in the three coefficients."""
-        x = np.broadcast_arrays(as_array(x), *p)[0]
-        return columns(np.ones_like(x), x, x * x)
+        x = as_array(x)
+        return np.ones_like(x), x, x * x
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration."""

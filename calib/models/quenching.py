@@ -14,7 +14,6 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
-    columns,
     half_response,
     positive_range,
 )
@@ -30,6 +29,7 @@ class Quenching(ResponseModel):
     name = "quenching"
     formula = "offset + unquenched/(1 + quenching_constant·x)"
     plateau = True
+    amplitude: ClassVar[dict[str, float]] = {"unquenched": 1.0}
     fixed_by_default: ClassVar[dict[str, float]] = {"offset": 0.0}
     parameters = (
         Parameter("offset", "dark signal left in the response", "response", linear=True),
@@ -42,12 +42,12 @@ class Quenching(ResponseModel):
         offset, unquenched, constant = p
         return as_array(offset + unquenched / (1.0 + constant * as_array(x)))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in offset, unquenched and quenching_constant."""
         _, unquenched, constant = p
         x = as_array(x)
         share = 1.0 / (1.0 + constant * x)
-        return columns(np.ones_like(share), share, -unquenched * x * share * share)
+        return np.ones_like(share), share, -unquenched * x * share * share
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration."""

@@ -70,14 +70,22 @@ class ResponseModel(ABC):
     logarithmic: ClassVar[bool] = True
     plateau: ClassVar[bool] = False
     fixed_by_default: ClassVar[dict[str, float]] = {}
+    # The response is linear in its linear parameters, and its derivatives in the other ones are
+    # proportional to one combination of them: weights by name (empty where there are no others).
+    amplitude: ClassVar[dict[str, float]] = {}
 
     @abstractmethod
     def response(self, x: ArrayLike, p: Parameters) -> Array:
         """Response at concentrations ``x`` (any shape)."""
 
     @abstractmethod
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
+        """Derivatives in each parameter, arrays that broadcast against the response."""
+
     def gradient(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivatives in the parameters, shape of the response + (k,)."""
+        shape = np.broadcast_shapes(np.shape(x), *(np.shape(v) for v in p))
+        return np.stack([np.broadcast_to(d, shape) for d in self.derivatives(x, p)], axis=-1)
 
     @abstractmethod
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
@@ -137,11 +145,6 @@ class ResponseModel(ABC):
 def as_array(x: ArrayLike) -> Array:
     """Float64 view of anything array-like."""
     return np.asarray(x, dtype=np.float64)
-
-
-def columns(*derivatives: Any) -> Array:
-    """Stack the derivatives in each parameter along a new last axis."""
-    return np.stack(np.broadcast_arrays(*derivatives), axis=-1).astype(np.float64, copy=False)
 
 
 def positive_range(x: Array) -> tuple[float, float]:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import ClassVar
+
 import numpy as np
 from numpy.typing import ArrayLike
 
@@ -12,7 +14,6 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
-    columns,
     half_response,
     positive_range,
 )
@@ -24,6 +25,7 @@ class Saturation(ResponseModel):
     name = "saturation"
     formula = "offset + capacity·x/(half + x)"
     plateau = True
+    amplitude: ClassVar[dict[str, float]] = {"capacity": 1.0}
     parameters = (
         Parameter("offset", "response at concentration 0", "response", linear=True),
         Parameter("capacity", "response between offset and plateau", "response", linear=True),
@@ -36,12 +38,12 @@ class Saturation(ResponseModel):
         x = as_array(x)
         return as_array(offset + capacity * (x / (half + x)))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in offset, capacity and half."""
         _, capacity, half = p
         x = as_array(x)
         share = x / (half + x)
-        return columns(np.ones_like(share), share, -capacity * share / (half + x))
+        return np.ones_like(share), share, -capacity * share / (half + x)
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration."""

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import ArrayLike
 
-from calib.models.response_model import Array, Parameter, Parameters, as_array, columns
+from calib.models.response_model import Array, Parameter, Parameters, as_array
 from calib.models.saturation import Saturation
 
 
@@ -26,13 +26,13 @@ class SquaredSaturation(Saturation):
         square = as_array(x) ** 2
         return as_array(offset + capacity * (square / (half * half + square)))
 
-    def gradient(self, x: ArrayLike, p: Parameters) -> Array:
+    def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in offset, capacity and half."""
         _, capacity, half = p
         square = as_array(x) ** 2
         total = half * half + square
         share = square / total
-        return columns(np.ones_like(share), share, -2.0 * capacity * half * share / total)
+        return np.ones_like(share), share, -2.0 * capacity * half * share / total
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration."""
