@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 
@@ -31,6 +31,7 @@ if TYPE_CHECKING:
 
     from calib.bench.records import RunRecord, StandardRecord
 
+CROSS: dict[str, Any] = {"marker": "x", "color": ALARM, "s": 34, "linewidths": 1.1}
 POINTS = 240
 # Room beside the outermost standards, as a factor on the logarithmic axis and a share on the plain one.
 BESIDE_FACTOR, BESIDE_SHARE = 1.35, 0.04
@@ -164,9 +165,9 @@ def _draw_points(axes: Axes, points: Sequence[tuple[StandardRecord, float, float
     }
     for kind, style in styles.items():
         if kind in kinds:
-            axes.scatter(*zip(*kinds[kind], strict=True), zorder=4, label=kind, **style)
-    crossed = np.array([(x, y) for s, x, y in points if s.excluded]).reshape(-1, 2)
-    axes.scatter(*crossed.T, marker="x", color=ALARM, s=34, linewidths=1.1, zorder=5)
+            axes.scatter(*np.transpose(kinds[kind]), zorder=4, label=kind, **style)
+    crossed = np.reshape([(x, y) for s, x, y in points if s.excluded], (-1, 2))
+    axes.scatter(crossed[:, 0], crossed[:, 1], zorder=5, **CROSS)
 
 
 def _kind(standard: StandardRecord) -> str:
@@ -206,7 +207,7 @@ def _draw_others(panels: _Panels, record: RunRecord) -> None:
         if q.role in ("check", "first-check") and q.nominal and q.mean_response is not None
     ]
     if checks:
-        x, y = zip(*checks, strict=True)
+        x, y = np.transpose(checks)
         style: dict[str, Any] = {"marker": "^", "edgecolors": CHECK, "s": 28, **HOLLOW}
         panels.above.scatter(x, y, zorder=4, label="check standard", **style)
     inside = [
@@ -215,7 +216,7 @@ def _draw_others(panels: _Panels, record: RunRecord) -> None:
         if q.role in ("unknown", "control") and q.concentration is not None and q.mean_response is not None
     ]
     if inside:
-        x, y = zip(*inside, strict=True)
+        x, y = np.transpose(inside)
         style = {"marker": "|", "color": UNKNOWN, "s": 80, "linewidths": 1.0}
         panels.above.scatter(x, y, zorder=3.5, label="unknown inside the range", **style)
 
@@ -286,7 +287,7 @@ def _draw_beyond(axes: Axes, points: Sequence[tuple[StandardRecord, float, float
 
 
 def _label(panels: _Panels, record: RunRecord) -> None:
-    heading, analyte = record.heading, record.definition.analyte
+    analyte = record.definition.analyte
     panels.response_axes.set_ylabel(
         in_brackets("response", record.definition.response_unit), fontsize=NORMAL, color=INK
     )
@@ -296,20 +297,20 @@ def _label(panels: _Panels, record: RunRecord) -> None:
     )
     response = record.evaluation.curve.standards.response
     rising = response.size > 1 and response[-1] > response[0]
-    panels.above.legend(
-        loc="upper left" if rising else "upper right",
-        fontsize=SMALL,
-        frameon=False,
-        labelcolor=INK,
-        handletextpad=0.6,
-    )
+    _legend(panels.above, "upper left" if rising else "upper right")
     absent = sum(s.response is None for s in record.evaluation.standards)
     if absent:
         side = 0.99 if rising else 0.01
         words = "1 standard" if absent == 1 else f"{absent} standards"
         _say(panels.above, f"{words} without a response: not drawn", side, 0.02)
-    if heading.void_reason:
-        _say(panels.above, "VOID: counts no longer", 0.5, 0.5)
+
+
+def _legend(axes: Axes, place: Literal["upper left", "upper right"]) -> None:
+    """Name what is drawn; the excluded ones with their cross."""
+    handles, labels = axes.get_legend_handles_labels()
+    cross = axes.scatter([], [], **CROSS)
+    shown = [(h, cross) if label == "excluded" else h for h, label in zip(handles, labels, strict=True)]
+    axes.legend(shown, labels, loc=place, fontsize=SMALL, frameon=False, labelcolor=INK, handletextpad=0.6)
 
 
 def _set_range(panels: _Panels, record: RunRecord) -> None:

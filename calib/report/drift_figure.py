@@ -10,6 +10,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from calib.acceptance.wording import count
+from calib.drift.charts import FEWEST_RUNS
 from calib.report.drawing import ALARM, CURVE, FAINT, INK, NORMAL, RULE, SMALL, new_figure, tidy
 from calib.report.wording import in_brackets, number, with_unit
 
@@ -146,8 +148,8 @@ def _draw_chart(axes: Axes, record: DriftRecord, chart: _Chart) -> None:
     _draw_limits(axes, record, chart)
     _draw_runs(axes, record, chart, low, high)
     if chart.judged and chart.limits is None:
-        count = int(np.isfinite(chart.values).sum())
-        words = "no check standards" if count == 0 else "no limits yet: 10 accepted runs are needed"
+        number_of = int(np.isfinite(chart.values).sum())
+        words = f"no limits yet: {FEWEST_RUNS} accepted runs are needed" if number_of else "no values"
         axes.text(0.01, 0.95, words, transform=axes.transAxes, va="top", fontsize=SMALL, color=FAINT)
 
 
@@ -285,14 +287,14 @@ def _head(figure: Figure, record: DriftRecord, height: float) -> None:
     first, last = record.runs[0].at, record.runs[-1].at
     title = f"Drift of {record.instrument}, method {record.method}"
     figure.text(0.065, 1 - 0.28 / height, title, fontsize=NORMAL + 2, color=INK, weight="bold")
-    words = f"{len(record.runs)} runs, {first:%Y-%m-%d} to {last:%Y-%m-%d}; {_limits_words(record)}"
+    words = f"{count(len(record.runs), 'run')}, {first:%Y-%m-%d} to {last:%Y-%m-%d}; {_limits_words(record)}"
     figure.text(0.065, 1 - 0.47 / height, words, fontsize=NORMAL, color=FAINT)
 
 
 def _limits_words(record: DriftRecord) -> str:
     limits = [s.limits for s in record.review.series if s.limits is not None]
     if not limits:
-        return f"no limits yet ({record.baseline_runs} baseline runs)"
+        return f"no limits yet ({count(record.baseline_runs, 'baseline run')})"
     kind = "provisional limits" if any(v.provisional for v in limits) else "limits"
     return f"{kind} from {record.baseline_runs} baseline runs"
 

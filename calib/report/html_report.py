@@ -80,6 +80,7 @@ def _view(record: RunRecord) -> dict[str, Any]:
         "valid_for": f"{number(definition.valid_hours)} h",
         "confidence": f"{number(100 * definition.interval_confidence)} %",
         "standards": run_rows.standard_rows(record),
+        "reasons": run_rows.reasons(record),
         "rules": run_rows.rule_rows(record),
         "blanks": run_rows.blank_rows(record),
         "checks": run_rows.check_rows(record),

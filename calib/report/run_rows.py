@@ -12,6 +12,7 @@ from calib.report.standard_limits import relative_error_limit
 from calib.report.wording import (
     LEVEL_DIGITS,
     MISSING,
+    NO_RESULT,
     expanded_text,
     interval_text,
     number,
@@ -37,6 +38,9 @@ DEVIATIONS = (
 )
 # Of a value outside the calibrated range nothing but the limit is printed, so nothing about its interval.
 ABOUT_THE_INTERVAL = ("lopsided", "one-sided", "no-value")
+
+
+LONGEST_DETAIL = 160
 
 
 @dataclass(frozen=True, slots=True)
@@ -184,8 +188,22 @@ def _criterion_figure(c: CriterionResult, value: float | None, unit: str) -> str
             else signed_percent(value, c.limit).removeprefix("+")
         )
     if c.id in SHARES:
-        return percent(value)
+        return f"{number(100 * value, 3)} %"
     return with_unit(number(value), unit) if c.id == "blank" else number(value)
+
+
+def reasons(record: RunRecord) -> tuple[str, ...]:
+    """What was not kept, each in one sentence; a long list of readings is left to the rules."""
+    return tuple(
+        f"{row.what}: {row.detail if len(row.detail) <= LONGEST_DETAIL else _in_short(row)}"
+        for row in rule_rows(record)
+        if row.failed
+    )
+
+
+def _in_short(row: RuleRow) -> str:
+    seen = f"observed {row.observed}, " if row.observed != MISSING else ""
+    return f"{seen}every reading named under Rules"
 
 
 def blank_rows(record: RunRecord) -> tuple[BlankRow, ...]:
@@ -234,19 +252,21 @@ def _badness(q: QuantityRecord) -> int:
 
 
 def _unknown(record: RunRecord, q: QuantityRecord) -> UnknownRow:
-    verdict = record.evaluation.verdict
+    """A row; a void run keeps its readings and gives no result."""
+    verdict, void = record.evaluation.verdict, record.heading.void_reason is not None
+    expanded = MISSING if void else expanded_text(q)
     return UnknownRow(
         sample=q.sample,
         n=str(q.replicates),
         mean_response=significant(q.mean_response),
         dilution=f"× {number(q.dilution)}",
-        result=quantity_text(q, verdict.lowest, verdict.highest),
-        expanded=expanded_text(q),
-        k=f"{q.k:.2f}" if expanded_text(q) != MISSING and q.k is not None else MISSING,
-        interval=interval_text(q),
-        kind=q.kind if q.concentration is not None else "",
-        remarks=remarks(q),
-        marked=q.concentration is None or bool(q.flags),
+        result=NO_RESULT if void else quantity_text(q, verdict.lowest, verdict.highest),
+        expanded=expanded,
+        k=f"{q.k:.2f}" if expanded != MISSING and q.k is not None else MISSING,
+        interval=MISSING if void else interval_text(q),
+        kind=q.kind if q.concentration is not None and not void else "",
+        remarks="the run is void: no result" if void else remarks(q),
+        marked=void or q.concentration is None or bool(q.flags),
     )
 
 
