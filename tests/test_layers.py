@@ -112,14 +112,7 @@ def test_every_package_is_a_known_layer() -> None:
     assert found <= set(LAYERS), "give the new package its place in this file"
 
 
-def layer_cases() -> Iterator[object]:
-    for layer in LAYERS:
-        reason = "cli/demo.py, options.py and store.py open and upgrade the store themselves, past the bench"
-        marks = [pytest.mark.xfail(reason=reason, strict=True)] if layer == "cli" else []
-        yield pytest.param(layer, marks=marks)
-
-
-@pytest.mark.parametrize("layer", list(layer_cases()))
+@pytest.mark.parametrize("layer", list(LAYERS))
 def test_a_layer_uses_only_what_lies_below(layer: str) -> None:
     wrong = [
         i

@@ -28,16 +28,16 @@ def demo(into: Path, as_json: bool) -> None:
 
     An interrupted demo goes on where it stopped.
     """
+    from calib.bench.keep_store import open_laboratory_store
     from calib.bench.review_drift import review_instrument, reviewed_pairs
     from calib.bench.set_up_demo import set_up_demo
     from calib.bench.show_run import show_run
     from calib.cli.screen import progress_bar
     from calib.report.figures import drift_figure
     from calib.report.files import write_figure, write_report
-    from calib.store import open_store
 
     path = _folder(into) / STORE_NAME
-    with open_store(path) as store:
+    with open_laboratory_store(path, create=True) as store:
         with progress_bar("logging the season") as progress:
             season = set_up_demo(store, progress)
         today = [show_run(store, n) for n in season.today]

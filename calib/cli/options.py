@@ -52,13 +52,32 @@ def acting(by: str | None) -> str:
         raise InputError("nobody is named: give --by NAME") from cause
 
 
+def store_address(ctx: click.Context) -> str | None:
+    """Address of the store that was asked for; None for the one in the user's data folder."""
+    return ctx.find_root().obj or os.environ.get("CALIB_STORE") or None
+
+
+def _seconds(variable: str, default: float) -> float:
+    text = os.environ.get(variable)
+    if text is None:
+        return default
+    try:
+        seconds = float(text)
+    except ValueError:
+        seconds = -1.0
+    if not 0 <= seconds <= 3600:
+        raise InputError(f"{variable} = {text!r} must be a number of seconds from 0 to 3600")
+    return seconds
+
+
 @contextmanager
 def opened(ctx: click.Context, *, create: bool = False) -> Iterator[Store]:
     """The store this command works on."""
-    from calib.store import default_store_path, open_store
+    from calib.bench.keep_store import open_laboratory_store
 
-    url = ctx.find_root().obj or os.environ.get("CALIB_STORE") or default_store_path()
-    store = open_store(url, create=create)
+    store = open_laboratory_store(
+        store_address(ctx), create=create, busy_seconds=_seconds("CALIB_BUSY_SECONDS", 30.0)
+    )
     try:
         yield store
     finally:

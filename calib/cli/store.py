@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
 
 import click
 
-from calib.cli.options import DAMAGED, echo_json, json_option, opened
+from calib.cli.options import DAMAGED, echo_json, json_option, opened, store_address
 
 
 @click.group()
@@ -49,10 +48,10 @@ def check(ctx: click.Context, all_curves: bool, as_json: bool) -> int:
 @click.pass_context
 def backup(ctx: click.Context, target: Path, as_json: bool) -> int:
     """Copy the store while it is in use, and check the copy."""
-    from calib.store import backup_store
+    from calib.bench.keep_store import back_up
 
     with opened(ctx) as opened_store:
-        made = backup_store(opened_store, target)
+        made = back_up(opened_store, target)
     sound = made.check.sound
     if as_json:
         from calib.report.as_json import plain
@@ -72,10 +71,9 @@ def backup(ctx: click.Context, target: Path, as_json: bool) -> int:
 @click.pass_context
 def upgrade(ctx: click.Context, as_json: bool) -> None:
     """Bring an older store to this version, after a backup beside it."""
-    from calib.store import default_store_path, upgrade_store
+    from calib.bench.keep_store import upgrade as upgrade_store
 
-    url = ctx.find_root().obj or os.environ.get("CALIB_STORE") or default_store_path()
-    done = upgrade_store(url)
+    done = upgrade_store(store_address(ctx))
     if as_json:
         echo_json(
             {

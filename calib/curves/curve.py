@@ -68,6 +68,8 @@ class Curve:
         Degrees of freedom behind `scale` (infinite when it is known).
     r_squared, aicc : float
         Shown, never judged.
+    determined : (k,) bool array
+        False for parameters on a bound or in a direction the standards say nothing about.
     converged : bool
     findings : tuple of Finding
     solver : str
@@ -87,6 +89,7 @@ class Curve:
     coverage_freedom: float
     r_squared: float
     aicc: float
+    determined: NDArray[np.bool_]
     converged: bool
     findings: tuple[Finding, ...]
     solver: str
@@ -103,8 +106,8 @@ class Curve:
 
     @property
     def standard_errors(self) -> dict[str, float]:
-        """Standard uncertainty of each parameter; 0 for a fixed one."""
-        u = np.sqrt(np.diag(self.covariance))
+        """Standard uncertainty of each parameter; 0 for a fixed one, nan for one not determined."""
+        u = np.where(self.determined, np.sqrt(np.diag(self.covariance)), np.nan)
         return {n: float(v) for n, v in zip(self.response_model.names, u, strict=True)}
 
     @property

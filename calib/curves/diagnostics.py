@@ -17,6 +17,11 @@ PLATEAU_RELATIVE_U = 0.25
 PLATEAU_CONDITION = 40.0
 PLATEAU_SHARE = 0.5
 SINGULAR = 1e-12
+# Share of a direction that was cut off from which on a parameter counts as not determined.
+LOADING = 1e-6
+# The condition rule was measured for curves of up to four free parameters: an asymmetry raises the
+# condition of a complete curve above it by itself.
+CONDITION_PARAMETERS = 4
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,36 +46,47 @@ class Information:
         1/kappa² (0 when singular).
     leverage : (n,) array
         Diagonal of the hat matrix.
+    determined : (k,) bool array
+        False for parameters on a bound, or with a part in a direction that was cut off as
+        singular: their variance would come out too small.
     """
 
     inverse: Array
     condition: float
     reciprocal: float
     leverage: Array
+    determined: NDArray[np.bool_]
 
 
 def information(problem: Problem, parameters: Array) -> Information:
     """Evaluate J'WJ at the solution through a singular-value decomposition."""
-    k = parameters.size
     c = problem.coordinates(parameters)
+    on_bound = at_bound(problem, c)
     jacobian = problem.jacobian(c) * problem.scale
+    with np.errstate(over="ignore", invalid="ignore"):
+        length = np.linalg.norm(jacobian, axis=0)
+        usable = np.where((length > 0) & np.isfinite(length), length, 1.0)
+        left, singular, right = np.linalg.svd(jacobian / usable, full_matrices=False)
+        kept = singular > singular[0] * np.sqrt(SINGULAR)
+        chain = np.where(problem.in_logarithm, parameters[problem.free], 1.0)
+        root = (right[kept].T / singular[kept]) * (chain / usable)[:, None]
+        inverse = np.zeros((parameters.size, parameters.size))
+        inverse[np.ix_(problem.free, problem.free)] = root @ root.T
+    determined = np.ones(parameters.size, dtype=bool)
+    determined[problem.free] = ~on_bound & (np.sum(right[~kept] ** 2, axis=0) < LOADING)
+    condition = _condition(jacobian[:, ~on_bound])
+    return Information(inverse, condition, 1.0 / condition**2, np.sum(left[:, kept] ** 2, axis=1), determined)
+
+
+def _condition(jacobian: Array) -> float:
+    """Kappa of the columns scaled to length one, those on a bound left out."""
+    if jacobian.shape[1] == 0:
+        return 1.0
     length = np.linalg.norm(jacobian, axis=0)
-    usable = np.where(length > 0, length, 1.0)
-    left, singular, right = np.linalg.svd(jacobian / usable, full_matrices=False)
-    top = singular[0] if singular.size else 0.0
-    kept = singular > top * np.sqrt(SINGULAR)
-    inverse_root = (right[kept].T / singular[kept]) / usable[:, None]
-    chain = np.where(problem.in_logarithm, parameters[problem.free], 1.0)
-    inverse_root = inverse_root * chain[:, None]
-    inverse = np.zeros((k, k))
-    inverse[np.ix_(problem.free, problem.free)] = inverse_root @ inverse_root.T
-    lowest = singular[-1] if singular.size and length.min(initial=np.inf) > 0 else 0.0
-    return Information(
-        inverse,
-        float(top / lowest) if lowest > 0 else np.inf,
-        float((lowest / top) ** 2) if top > 0 else 0.0,
-        np.sum(left[:, kept] ** 2, axis=1),
-    )
+    if not np.all((length > 0) & np.isfinite(length)):
+        return np.inf
+    singular = np.linalg.svd(jacobian / length, compute_uv=False)
+    return float(singular[0] / singular[-1]) if singular[-1] > 0 else np.inf
 
 
 def findings_of(
@@ -114,15 +130,29 @@ def _not_converged(solution: Solution, stable: bool) -> Finding:
 
 
 def _bounds_hit(problem: Problem, parameters: Array) -> list[Finding]:
-    hit = at_bound(problem, problem.coordinates(parameters))
-    positions = np.flatnonzero(problem.free)[hit]
+    """Parameters on a bound; a sanity bound of a curve with plateaus is told by `_plateaus`."""
     return [
         Finding(
             "at-bound",
             f"{problem.model.names[i]} = {parameters[i]:.6g} sits on its bound "
             f"[{problem.lower[i]:.6g}, {problem.upper[i]:.6g}]; its standard error means nothing",
         )
-        for i in positions
+        for i in _on_bound(problem, parameters)
+        if problem.given_bounds[i] or not problem.model.plateau
+    ]
+
+
+def _on_bound(problem: Problem, parameters: Array) -> list[int]:
+    hit = at_bound(problem, problem.coordinates(parameters))
+    return [int(i) for i in np.flatnonzero(problem.free)[hit]]
+
+
+def _sanity_bounds_hit(problem: Problem, parameters: Array) -> list[str]:
+    """The best curve lies at infinity: values inside the standards stand all the same."""
+    return [
+        f"{problem.model.names[i]} runs away to {parameters[i]:.2g}"
+        for i in _on_bound(problem, parameters)
+        if not problem.given_bounds[i]
     ]
 
 
@@ -160,7 +190,8 @@ def _plateaus(problem: Problem, p: Array, info: Information, scale: float) -> li
     u = scale * float(np.sqrt(gradient @ info.inverse @ gradient))
     if u > PLATEAU_RELATIVE_U * abs(span):
         reasons.append(f"u of the span between the plateaus is {100 * u / abs(span):.0f} % of it")
-    if info.condition > PLATEAU_CONDITION:
+    reasons.extend(_sanity_bounds_hit(problem, p))
+    if info.condition > PLATEAU_CONDITION and problem.free.sum() <= CONDITION_PARAMETERS:
         reasons.append(f"condition of the parameters {info.condition:.0f}, above {PLATEAU_CONDITION:.0f}")
     if not reasons:
         return []

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from scipy.special import chdtrc
 
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding, Information, findings_of, information
@@ -30,6 +31,8 @@ NOISE_NAMES = ("uniform", "relative", *ESTIMATED)
 GRID_STARTS = 3
 PASSES = 60
 SETTLED = 1e-11
+# One honest run in a thousand contradicts its own standard uncertainties.
+CONTRADICTED = 1e-3
 ONE_RUN = "estimated from this run"
 
 
@@ -157,8 +160,17 @@ def _problem(
     outside = ~free & ((template < lower) | (template > upper)) & model.positive
     if outside.any():
         raise ModelError(f"fixed {model.names[int(np.argmax(outside))]} lies outside what the model allows")
-    ones = np.ones(standards.response.size)
-    return Problem(model, standards.concentration, standards.response, ones, template, free, lower, upper)
+    return Problem(
+        model=model,
+        x=standards.concentration,
+        y=standards.response,
+        root_weight=np.ones(standards.response.size),
+        template=template,
+        free=free,
+        lower=lower,
+        upper=upper,
+        given_bounds=np.array([n in bounds for n in model.names]),
+    )
 
 
 def _refuse_start(model: ResponseModel, start: Mapping[str, float]) -> None:
@@ -254,17 +266,7 @@ def _follow(problem: Problem, noise: NoiseModel, starts: list[Array], solver: st
 
 
 def _weighted(problem: Problem, noise: NoiseModel, mean: Array) -> Problem:
-    root_weight = 1.0 / np.sqrt(noise.at_standards(mean, problem.x))
-    return Problem(
-        problem.model,
-        problem.x,
-        problem.y,
-        root_weight,
-        problem.template,
-        problem.free,
-        problem.lower,
-        problem.upper,
-    )
+    return replace(problem, root_weight=1.0 / np.sqrt(noise.at_standards(mean, problem.x)))
 
 
 def _curve(fitted: _Fitted, standards: Standards, solver: str) -> Curve:
@@ -290,9 +292,10 @@ def _curve(fitted: _Fitted, standards: Standards, solver: str) -> Curve:
         scale=scale,
         coverage_freedom=np.inf if known else float(nu),
         r_squared=_r_squared(problem, solution),
+        determined=info.determined,
         aicc=_aicc(solution.weighted_sum, standards.response.size, int(problem.free.sum())),
         converged=solution.converged and fitted.stable,
-        findings=findings + _noise_findings(noise),
+        findings=findings + _noise_findings(noise) + _contradicted(noise, solution.weighted_sum, nu),
         solver=solver,
     )
 
@@ -311,6 +314,22 @@ def _noise_findings(noise: NoiseModel) -> tuple[Finding, ...]:
         Finding(
             "variance-from-one-run",
             "variance function from 1 run: nominal 95 % intervals cover about 89–95 %",
+        ),
+    )
+
+
+def _contradicted(noise: NoiseModel, chi_square: float, nu: int) -> tuple[Finding, ...]:
+    """Known standard uncertainties that the scatter of the readings contradicts."""
+    if not noise.known_scale or nu <= 0:
+        return ()
+    probability = float(chdtrc(nu, chi_square))
+    if probability >= CONTRADICTED:
+        return ()
+    return (
+        Finding(
+            "u-contradicted",
+            f"the residuals are larger than the given standard uncertainties allow (chi-square {chi_square:.4g} "
+            f"with {nu} degrees of freedom, p = {probability:.1e}); check u or the model",
         ),
     )
 
@@ -352,6 +371,7 @@ def _unfitted(problem: Problem, standards: Standards, requested: str | NoiseMode
         coverage_freedom=0.0,
         r_squared=np.nan,
         aicc=np.nan,
+        determined=~problem.free,
         converged=False,
         findings=(Finding("too-few-levels", message),),
         solver=solver,

@@ -1,21 +1,19 @@
 """Weighted nonlinear least squares for one run.
 
 Everything the rest of calib knows of solving is `solve`: a problem goes in, a
-solution comes out. Positive parameters are solved in their logarithm, residuals are
-scaled to order one, and every solution is polished with Gauss–Newton steps through an
-orthogonal factorisation, which gives the last digits that a stopping rule leaves.
+solution comes out. Built-in models go through the stacked solver, formulas of the user
+through a general one. Positive parameters are solved in their logarithm, and residuals
+are scaled to order one.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import least_squares, minimize
 
+from calib.curves.stack_solver import Stack, solve_stack
 from calib.errors import ModelError
 from calib.models import ResponseModel
 
@@ -42,6 +40,8 @@ class Problem:
     free : (k,) bool array
     lower, upper : (k,) arrays
         Bounds in natural coordinates.
+    given_bounds : (k,) bool array
+        Which bounds somebody asked for; the others are the model's wide sanity bounds.
     """
 
     model: ResponseModel
@@ -52,11 +52,17 @@ class Problem:
     free: NDArray[np.bool_]
     lower: Array
     upper: Array
+    given_bounds: NDArray[np.bool_]
 
     @property
     def scale(self) -> float:
         """Norm of the weighted responses."""
         return float(np.linalg.norm(self.root_weight * self.y)) or 1.0
+
+    @property
+    def separable(self) -> bool:
+        """Whether linear parameters can be eliminated and one amplitude carries the others."""
+        return bool(self.model.amplitude) or bool(self.model.linear.all())
 
     @property
     def in_logarithm(self) -> NDArray[np.bool_]:
@@ -139,10 +145,38 @@ def solve(problem: Problem, starts: list[Array], solver: str) -> Solution:
     """
     if solver not in SOLVERS:
         raise ModelError(f"unknown solver '{solver}'; known are {', '.join(SOLVERS)}")
-    one = _simplex if solver == "simplex" else _least_squares
     inside = [_inside(problem, s) for s in starts]
-    found = [_described(problem, one(problem, c)) for c in inside]
-    return min(found, key=lambda s: (not np.isfinite(s.weighted_sum), s.weighted_sum))
+    if solver == "simplex":
+        from calib.curves.simplex import simplex
+
+        found = [simplex(problem, c) for c in inside]
+    elif problem.separable:
+        return _described(problem, _best_of_stack(problem, inside))
+    else:
+        from calib.curves.general_solver import general_least_squares
+
+        found = [general_least_squares(problem, c) for c in inside]
+    described = [_described(problem, c) for c in found]
+    return min(described, key=lambda s: (not np.isfinite(s.weighted_sum), s.weighted_sum))
+
+
+def _best_of_stack(problem: Problem, starts: list[Array]) -> Array:
+    """Solver coordinates of the best solution; several starts are a stack of the same run."""
+    count = len(starts)
+    scaled = problem.root_weight / problem.scale
+    stack = Stack(
+        model=problem.model,
+        x=problem.x[:, None],
+        y=np.repeat(problem.y[:, None], count, axis=1),
+        root_weight=scaled[:, None],
+        pure=np.zeros(count),
+        template=problem.template,
+        free=problem.free,
+        lower=problem.lower[:, None],
+        upper=problem.upper[:, None],
+    )
+    found = solve_stack(stack, np.stack([problem.parameters(c) for c in starts], axis=1))
+    return problem.coordinates(found.parameters[:, int(np.argmin(found.total))])
 
 
 def linear_start(problem: Problem, cells: Array, keep: int) -> list[Array]:
@@ -198,78 +232,8 @@ def _inside(problem: Problem, start: Array) -> Array:
     return np.clip(c, low + 1e-9 * width, high - 1e-9 * width)
 
 
-def _least_squares(problem: Problem, start: Array) -> Array:
-    if problem.model.linear[problem.free].all():
-        # Linear in everything: one Gauss–Newton step is the exact solution.
-        polished = _polish(problem, start)
-        if _within(problem, polished):
-            return polished
-    if start.size <= problem.y.size:
-        free_run = least_squares(
-            problem.residual,
-            start,
-            problem.jacobian,
-            method="lm",
-            x_scale="jac",
-            ftol=1e-15,
-            xtol=1e-15,
-            gtol=1e-15,
-            max_nfev=4000,
-        ).x
-        if _within(problem, free_run):
-            return _polish(problem, free_run)
-    bounded = least_squares(
-        problem.residual,
-        start,
-        problem.jacobian,
-        bounds=problem.limits(),
-        method="trf",
-        x_scale="jac",
-        ftol=1e-15,
-        xtol=1e-15,
-        gtol=1e-15,
-        max_nfev=2000,
-    ).x
-    return _polish(problem, bounded)
-
-
-def _simplex(problem: Problem, start: Array) -> Array:
-    """Nelder–Mead, restarted until it stands still; no derivative is used."""
-    low, high = problem.limits()
-    here = start
-    value = np.inf
-    for _ in range(12):
-        options: Any = {
-            "xatol": 1e-10,
-            "fatol": 1e-18,
-            "maxiter": 4000,
-            "maxfev": 8000,
-            "adaptive": start.size > 4,
-            "initial_simplex": _first_simplex(here, low, high),
-        }
-        bounds = list(zip(low.tolist(), high.tolist(), strict=True))
-        found = minimize(_total(problem), here, method="Nelder-Mead", bounds=bounds, options=options)
-        here = found.x
-        if value - found.fun <= 1e-12 * found.fun:
-            break
-        value = found.fun
-    return np.asarray(here, dtype=np.float64)
-
-
-def _total(problem: Problem) -> Callable[[Array], float]:
-    return lambda c: float(np.sum(problem.residual(c) ** 2))
-
-
-def _first_simplex(here: Array, low: Array, high: Array) -> Array:
-    steps = np.where(here != 0, 0.05 * np.abs(here), 0.01)
-    corners = np.tile(here, (here.size + 1, 1))
-    for j in range(here.size):
-        up = here[j] + steps[j]
-        corners[j + 1, j] = up if up <= high[j] else here[j] - steps[j]
-    return np.clip(corners, low, high)
-
-
-def _within(problem: Problem, coordinates: Array) -> bool:
+def within(problem: Problem, coordinates: Array) -> bool:
+    """Whether solver coordinates lie strictly inside the bounds."""
     low, high = problem.limits()
     return bool(np.all((coordinates > low) & (coordinates < high)))
 
@@ -293,26 +257,6 @@ def gauss_newton_step(jacobian: Array, residual: Array) -> tuple[Array, float]:
     scaled = jacobian / length
     step, *_ = np.linalg.lstsq(scaled, -residual, rcond=None)
     return step / length, float(np.linalg.norm(scaled @ step))
-
-
-def _polish(problem: Problem, coordinates: Array) -> Array:
-    """Gauss–Newton steps inside the bounds while they do not make the sum larger."""
-    here = coordinates
-    r = problem.residual(here)
-    total = float(r @ r)
-    for _ in range(50):
-        step, tangent = gauss_newton_step(problem.jacobian(here), r)
-        candidate = here + step
-        if not np.all(np.isfinite(candidate)) or not _within(problem, candidate):
-            return here
-        r_new = problem.residual(candidate)
-        new_total = float(r_new @ r_new)
-        if not new_total <= total * (1.0 + 1e-14):
-            return here
-        here, r, total = candidate, r_new, new_total
-        if tangent <= 1e-13 * np.sqrt(total) + 1e-17:
-            return here
-    return here
 
 
 def _described(problem: Problem, coordinates: Array) -> Solution:

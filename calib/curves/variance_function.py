@@ -11,7 +11,6 @@ from collections.abc import Callable
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import minimize_scalar
 
 from calib.curves.noise import AdditiveRelativeNoise, NoiseModel, PowerOfMeanNoise, response_floor
 from calib.errors import MethodError
@@ -48,6 +47,8 @@ def estimate_variance_function(
     MethodError
         For an unknown family.
     """
+    from scipy.optimize import minimize_scalar
+
     span = max(float(np.ptp(mean)), float(np.max(np.abs(mean))) * 1e-6, 1e-300)
     candidate: Callable[[float], NoiseModel]
     if family == "power-of-mean":

@@ -6,7 +6,6 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import brentq
 
 from calib.curves.curve import Curve
 from calib.models import CustomModel
@@ -97,6 +96,8 @@ class Axis:
         return x
 
     def _root(self, y: float) -> float:
+        from scipy.optimize import brentq
+
         def miss(x: float) -> float:
             return float(self.curve.predict(x)) - y
 

@@ -1,12 +1,15 @@
-"""The store: append-only tables in SQLite, one transaction and one chain entry per change."""
+"""The store: append-only tables in SQLite, one transaction and one chain entry per change.
 
-from calib.store.backup import Backup, backup_store
+What a day at the bench does not need (check, backup, upgrade) is loaded on first use.
+"""
+
+from importlib import import_module
+from typing import TYPE_CHECKING
+
 from calib.store.base import Base
 from calib.store.chain import GENESIS, ChainEntry
-from calib.store.check import StoreCheck, check_store
 from calib.store.current import is_current
 from calib.store.curves import Curve, CurveStandard, VerdictRow
-from calib.store.findings import StoreFinding
 from calib.store.instruments import Event, Instrument
 from calib.store.lots import StandardLot
 from calib.store.methods import Method
@@ -15,7 +18,22 @@ from calib.store.originals import Original
 from calib.store.quantities import QuantityRow
 from calib.store.runs import Exclusion, Reading, Run, RunFacts, RunVoid
 from calib.store.session import Store
-from calib.store.upgrade import Upgrade, upgrade_store
+
+if TYPE_CHECKING:
+    from calib.store.backup import Backup, backup_store
+    from calib.store.check import StoreCheck, check_store
+    from calib.store.findings import StoreFinding
+    from calib.store.upgrade import Upgrade, upgrade_store
+
+_LATER = {
+    "Backup": "calib.store.backup",
+    "StoreCheck": "calib.store.check",
+    "StoreFinding": "calib.store.findings",
+    "Upgrade": "calib.store.upgrade",
+    "backup_store": "calib.store.backup",
+    "check_store": "calib.store.check",
+    "upgrade_store": "calib.store.upgrade",
+}
 
 __all__ = [
     "GENESIS",
@@ -48,3 +66,9 @@ __all__ = [
     "store_path",
     "upgrade_store",
 ]
+
+
+def __getattr__(name: str) -> object:
+    if name not in _LATER:
+        raise AttributeError(f"module 'calib.store' has no attribute {name!r}")
+    return getattr(import_module(_LATER[name]), name)

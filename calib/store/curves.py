@@ -15,7 +15,8 @@ class Curve(Base):
     """A fitted curve as it was computed: estimates, covariance, the noise model it used.
 
     ``parameters`` maps names to values, ``covariance`` is a list of rows in the
-    same order; a cell that is undefined is null. ``lowest`` and ``highest`` are
+    same order; a cell that is undefined is null. ``undetermined`` names parameters
+    without a standard error. ``lowest`` and ``highest`` are
     the calibrated range in the run's concentration unit.
     """
 
@@ -30,6 +31,7 @@ class Curve(Base):
     noise: Mapped[dict[str, Any]]
     parameters: Mapped[dict[str, Any]]
     covariance: Mapped[list[Any]]
+    undetermined: Mapped[list[Any]]
     residual_sum: Mapped[float | None]
     residual_sd: Mapped[float | None]
     degrees_of_freedom: Mapped[float]

@@ -217,6 +217,7 @@ def _curve() -> None:
         sa.Column("noise", sa.JSON(none_as_null=True), nullable=False),
         sa.Column("parameters", sa.JSON(none_as_null=True), nullable=False),
         sa.Column("covariance", sa.JSON(none_as_null=True), nullable=False),
+        sa.Column("undetermined", sa.JSON(none_as_null=True), nullable=False),
         sa.Column("residual_sum", sa.Double(), nullable=True),
         sa.Column("residual_sd", sa.Double(), nullable=True),
         sa.Column("degrees_of_freedom", sa.Double(), nullable=False),

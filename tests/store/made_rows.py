@@ -86,6 +86,7 @@ def curve(run_id: int, **other: object) -> st.Curve:
         "noise": {"kind": "uniform"},
         "parameters": {"intercept": -0.0, "slope": 0.1 + 0.2},
         "covariance": [[1e-6, None], [None, 1e-9]],
+        "undetermined": [],
         "degrees_of_freedom": 3,
         "converged": True,
         "findings": [],

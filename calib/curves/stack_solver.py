@@ -1,0 +1,445 @@
+"""Weighted nonlinear least squares over a stack of runs: one loop for all of them.
+
+Arrays have the readings of a run along the first axis and the runs along the last,
+contiguous one. Parameters in which the response is linear are eliminated in closed form at
+every step (Golub and Pereyra 1973, with the exact projection of Ruhe and Wedin 1980), so
+that only the one to three others are searched, positive ones in their logarithm. Steps are
+Gauss–Newton, damped (Levenberg 1944, Marquardt 1963) only after a step that failed. A step
+that would cross a bound is shortened as a whole; a parameter that sits on its bound and
+pushes outwards is held there. A run stops when the predicted decrease no longer matters,
+after one last full step, and leaves the stack.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calib.models import ResponseModel
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+CHUNK = 4096
+STEPS = 250
+# A predicted decrease of this share of the weighted sum, pure error included, moves a
+# parameter by about a hundred-millionth of its standard error; one full step follows.
+ENOUGH = 1e-17
+# Floor for noise-free data, as a share of the weighted squares of the responses.
+FLOOR = 1e-26
+# Below this share a decrease of the sum is lost in its rounding.
+CLOSE = 1e-13
+FIRST_DAMPING, MOST_DAMPING, NO_DAMPING = 1e-3, 1e12, 1e-7
+# Leave the stack when so large a part of it is finished: copying costs less than carrying on.
+LEAVE_SHARE = 0.125
+
+
+@dataclass(frozen=True, slots=True)
+class Stack:
+    """R runs of n readings (or of n levels with replicates collapsed).
+
+    Attributes
+    ----------
+    x : (n, 1) or (n, R) array
+    y : (n, R) array
+        0 where a reading is absent.
+    root_weight : (n, 1) or (n, R) array
+        Square roots of the weights; 0 where a reading is absent.
+    pure : (R,) array
+        Weighted pure-error sum that collapsing left behind.
+    template : (k,) array
+        Values of fixed parameters.
+    free : (k,) bool array
+    lower, upper : (k, 1) or (k, R) arrays
+    """
+
+    model: ResponseModel
+    x: Array
+    y: Array
+    root_weight: Array
+    pure: Array
+    template: Array
+    free: Mask
+    lower: Array
+    upper: Array
+
+    @property
+    def runs(self) -> int:
+        """Number of runs."""
+        return int(self.y.shape[-1])
+
+    def take(self, which: NDArray[np.intp] | slice) -> Stack:
+        """Some of the runs."""
+        return replace(
+            self,
+            x=_some(self.x, which),
+            y=self.y[:, which],
+            root_weight=_some(self.root_weight, which),
+            pure=self.pure[which],
+            lower=_some(self.lower, which),
+            upper=_some(self.upper, which),
+        )
+
+
+@dataclass(frozen=True, slots=True)
+class StackSolution:
+    """Where each run of a stack ended.
+
+    Attributes
+    ----------
+    parameters : (k, R) array
+    total : (R,) array
+        Weighted sum of squares without the pure error.
+    tangent : (R,) array
+        Norm of the residual's part in the tangent plane; 0 at an exact minimum.
+    steps : (R,) int array
+    """
+
+    parameters: Array
+    total: Array
+    tangent: Array
+    steps: NDArray[np.intp]
+
+
+@dataclass(frozen=True, slots=True)
+class _Roles:
+    """What happens to each parameter: eliminated, searched, or held."""
+
+    eliminated: tuple[int, ...]
+    searched: tuple[int, ...]
+    in_logarithm: tuple[bool, ...]
+    held_linear: tuple[int, ...]
+    amplitude: tuple[tuple[int, float], ...]
+    unit: Array
+
+
+@dataclass(frozen=True, slots=True)
+class _Point:
+    """A stack evaluated at searched coordinates."""
+
+    residual: Array
+    total: Array
+    linear: Array
+    tangents: Sequence[Array]
+
+
+def solve_stack(stack: Stack, starts: Array) -> StackSolution:
+    """Minimise the weighted sum of squares of every run.
+
+    Parameters
+    ----------
+    stack : Stack
+        Of a model whose derivatives are proportional to one amplitude (all built-in ones).
+    starts : (k, R) array
+        Start values in natural coordinates, inside the bounds; those of eliminated
+        parameters are not used.
+
+    Returns
+    -------
+    StackSolution
+        Runs that cannot be evaluated at their start keep it, with an infinite total.
+    """
+    roles = _roles(stack)
+    parts = [
+        _solve_chunk(stack.take(slice(i, i + CHUNK)), roles, starts[:, i : i + CHUNK])
+        for i in range(0, stack.runs, CHUNK)
+    ]
+    if len(parts) == 1:
+        return parts[0]
+    return StackSolution(
+        np.concatenate([p.parameters for p in parts], axis=1),
+        np.concatenate([p.total for p in parts]),
+        np.concatenate([p.tangent for p in parts]),
+        np.concatenate([p.steps for p in parts]),
+    )
+
+
+def _some(values: Array, which: NDArray[np.intp] | slice) -> Array:
+    return values if values.shape[-1] == 1 else values[:, which]
+
+
+def _roles(stack: Stack) -> _Roles:
+    """Eliminate the free linear parameters without bounds; search the other free ones."""
+    model, free = stack.model, stack.free
+    unbounded = np.all(np.isneginf(stack.lower), axis=1) & np.all(np.isposinf(stack.upper), axis=1)
+    eliminated = model.linear & free & unbounded
+    searched = free & ~eliminated
+    unit = np.zeros(free.size)
+    for name, weight in model.amplitude.items():
+        unit[model.index(name)] = max(weight, 0.0)
+    return _Roles(
+        tuple(int(i) for i in np.flatnonzero(eliminated)),
+        tuple(int(i) for i in np.flatnonzero(searched)),
+        tuple(bool(model.positive[i]) for i in np.flatnonzero(searched)),
+        tuple(int(i) for i in np.flatnonzero(model.linear & ~eliminated)),
+        tuple((model.index(name), weight) for name, weight in model.amplitude.items()),
+        unit,
+    )
+
+
+def _solve_chunk(stack: Stack, roles: _Roles, starts: Array) -> StackSolution:
+    """Iterate until every run of the chunk is finished."""
+    runs = stack.runs
+    found = StackSolution(
+        np.array(starts, dtype=np.float64),
+        np.full(runs, np.inf),
+        np.full(runs, np.inf),
+        np.zeros(runs, dtype=np.intp),
+    )
+    with np.errstate(all="ignore"):
+        floor = FLOOR * np.sum((stack.root_weight * stack.y) ** 2, axis=0)
+        _iterate(stack, roles, _coordinates(roles, starts), floor, found)
+    return found
+
+
+def _iterate(stack: Stack, roles: _Roles, theta: Array, floor: Array, found: StackSolution) -> None:
+    index = np.arange(stack.runs)
+    low, high = _limits(stack, roles)
+    here = _evaluate(stack, roles, theta)
+    damping = np.zeros(stack.runs)
+    for count in range(1, STEPS + 1):
+        normal, slope = _normal_equations(here)
+        free_now = ~_held_at_bound(theta, slope, low, high)
+        step, predicted = _step(normal, slope, damping, free_now)
+        reach = _reach(theta, step, low, high)
+        trial = theta + reach * step
+        there = _evaluate(stack, roles, trial)
+        enough = predicted <= ENOUGH * (here.total + stack.pure) + floor
+        # Close to the minimum the sums no longer tell two points apart; the step still does.
+        close = predicted <= CLOSE * (here.total + stack.pure) + floor
+        taken = (there.total < here.total) | (close & (there.total <= here.total * (1.0 + CLOSE) + floor))
+        last = enough & (damping == 0.0) & (reach == 1.0)
+        theta, here = _accept(taken, trial, theta, there, here)
+        stuck = damping >= MOST_DAMPING
+        done = last | (enough & taken) | stuck | ~np.isfinite(here.total) | (predicted <= 0.0)
+        damping = _next_damping(damping, taken)
+        if count == STEPS:
+            done[:] = True
+        if not done.any():
+            continue
+        _record(found, index, done, stack, roles, theta, here, count, low, high)
+        keep = np.flatnonzero(~done)
+        if keep.size == 0:
+            return
+        # Finished runs are recorded once; the others go on without them.
+        index, theta, damping, floor = index[keep], theta[:, keep], damping[keep], floor[keep]
+        stack, here = stack.take(keep), _take(here, keep)
+        low, high = _some(low, keep), _some(high, keep)
+
+
+def _coordinates(roles: _Roles, p: Array) -> Array:
+    """Searched coordinates (m, R) of full parameters (k, R)."""
+    rows = [np.log(p[i]) if log else p[i] for i, log in zip(roles.searched, roles.in_logarithm, strict=True)]
+    return np.array(rows) if rows else np.empty((0, p.shape[1]))
+
+
+def _limits(stack: Stack, roles: _Roles) -> tuple[Array, Array]:
+    low, high = stack.lower[list(roles.searched)], stack.upper[list(roles.searched)]
+    log = np.array(roles.in_logarithm, dtype=bool)[:, None]
+    return np.where(log, np.log(np.maximum(low, 0.0)), low), np.where(
+        log, np.log(np.maximum(high, 0.0)), high
+    )
+
+
+def _natural(roles: _Roles, stack: Stack, theta: Array) -> list[Array | float]:
+    """Parameters for the model: searched values, fixed values, unit amplitude."""
+    p: list[Array | float] = [
+        float(u) if linear else float(t)
+        for u, t, linear in zip(roles.unit, stack.template, stack.model.linear, strict=True)
+    ]
+    for row, i, log in zip(theta, roles.searched, roles.in_logarithm, strict=True):
+        if not stack.model.linear[i]:
+            p[i] = np.exp(row) if log else row
+    return p
+
+
+def _evaluate(stack: Stack, roles: _Roles, theta: Array) -> _Point:
+    """Residual, linear parameters and the tangents of the searched ones, all projected."""
+    p = _natural(roles, stack, theta)
+    derivative = stack.model.derivatives(stack.x, p)
+    weight = stack.root_weight
+    linear: dict[int, Array | float] = {}
+    rest = stack.y
+    for i in roles.held_linear:
+        linear[i] = theta[roles.searched.index(i)] if i in roles.searched else float(stack.template[i])
+        rest = rest - linear[i] * derivative[i]
+    residual = weight * rest
+    basis = [np.broadcast_to(weight * derivative[i], residual.shape) for i in roles.eliminated]
+    orthogonal, triangle = _orthogonalise(basis)
+    parts = [_dot(q, residual) for q in orthogonal]
+    for q, part in zip(orthogonal, parts, strict=True):
+        residual = residual - part * q
+    solved = _back_substitute(triangle, parts)
+    linear.update(zip(roles.eliminated, solved, strict=True))
+    amplitude = sum((w * linear[i] for i, w in roles.amplitude), start=np.zeros(()))
+    tangents = []
+    for i, log in zip(roles.searched, roles.in_logarithm, strict=True):
+        if stack.model.linear[i]:
+            tangent = weight * derivative[i]
+        else:
+            tangent = (weight * derivative[i]) * (amplitude * p[i] if log else amplitude)
+        tangents.append(_project_out(np.broadcast_to(tangent, residual.shape), orthogonal))
+    kept = np.array(solved) if solved else np.empty((0, residual.shape[1]))
+    return _Point(residual, _dot(residual, residual), kept, tangents)
+
+
+def _dot(a: Array, b: Array) -> Array:
+    return np.asarray(np.einsum("nr,nr->r", a, b))
+
+
+def _orthogonalise(basis: Sequence[Array]) -> tuple[list[Array], list[list[Array]]]:
+    """Modified Gram–Schmidt, twice where three columns can lean on each other."""
+    orthogonal: list[Array] = []
+    triangle: list[list[Array]] = []
+    rounds = 2 if len(basis) > 2 else 1
+    for v in basis:
+        column = [np.zeros(v.shape[1]) for _ in orthogonal]
+        for _ in range(rounds):
+            for j, q in enumerate(orthogonal):
+                part = _dot(q, v)
+                column[j] = column[j] + part
+                v = v - part * q
+        length = np.sqrt(_dot(v, v))
+        orthogonal.append(v / np.where(length > 0, length, 1.0))
+        triangle.append([*column, length])
+    return orthogonal, triangle
+
+
+def _back_substitute(triangle: list[list[Array]], parts: Sequence[Array]) -> list[Array]:
+    """Linear parameters from the triangular factor (columns) and the projections."""
+    count = len(parts)
+    solved: list[Array] = [np.zeros(())] * count
+    for i in reversed(range(count)):
+        value = parts[i]
+        for j in range(i + 1, count):
+            value = value - triangle[j][i] * solved[j]
+        length = triangle[i][i]
+        solved[i] = np.where(length > 0, value / np.where(length > 0, length, 1.0), 0.0)
+    return solved
+
+
+def _project_out(v: Array, orthogonal: Sequence[Array]) -> Array:
+    for q in orthogonal:
+        v = v - _dot(q, v) * q
+    return v
+
+
+def _normal_equations(here: _Point) -> tuple[Array, Array]:
+    """J'J (m, m, R) and J'r (m, R) of the searched coordinates."""
+    m = len(here.tangents)
+    normal = np.empty((m, m, here.total.size))
+    slope = np.empty((m, here.total.size))
+    for i, a in enumerate(here.tangents):
+        slope[i] = _dot(a, here.residual)
+        for j in range(i, m):
+            normal[i, j] = normal[j, i] = _dot(a, here.tangents[j])
+    return normal, slope
+
+
+def _held_at_bound(theta: Array, slope: Array, low: Array, high: Array) -> Mask:
+    """Coordinates on a bound that the steepest descent would push across."""
+    return ((theta <= low) & (slope < 0)) | ((theta >= high) & (slope > 0))
+
+
+def _step(normal: Array, slope: Array, damping: Array, free_now: Mask) -> tuple[Array, Array]:
+    """Damped Gauss–Newton step and the decrease of the sum it predicts."""
+    m = slope.shape[0]
+    if m == 0:
+        return slope, np.zeros(damping.size)
+    matrix, right = normal.copy(), np.where(free_now, slope, 0.0)
+    if not free_now.all():
+        both = free_now[:, None] & free_now[None, :]
+        matrix = np.where(both, matrix, 0.0)
+    for i in range(m):
+        diagonal = matrix[i, i]
+        matrix[i, i] = np.where(diagonal > 0, diagonal * (1.0 + damping), 1.0)
+    step = _solve_small(matrix, right)
+    curved = np.einsum("ir,ijr,jr->r", step, normal, step)
+    predicted = 2.0 * np.einsum("ir,ir->r", step, right) - curved
+    return step, np.where(np.isfinite(predicted), predicted, 0.0)
+
+
+def _solve_small(matrix: Array, right: Array) -> Array:
+    """Solve m × m systems along the last axis by elimination without pivoting.
+
+    The matrices are positive (semi)definite after damping, where no pivoting is needed.
+    """
+    m = right.shape[0]
+    a, b = matrix.copy(), right.copy()
+    for i in range(m):
+        for j in range(i + 1, m):
+            factor = a[j, i] / a[i, i]
+            a[j, i:] -= factor * a[i, i:]
+            b[j] -= factor * b[i]
+    for i in reversed(range(m)):
+        for j in range(i + 1, m):
+            b[i] -= a[i, j] * b[j]
+        b[i] = b[i] / a[i, i]
+    return np.where(np.isfinite(b), b, 0.0)
+
+
+def _reach(theta: Array, step: Array, low: Array, high: Array) -> Array:
+    """Share of the whole step that stays inside the bounds (R,)."""
+    if step.shape[0] == 0:
+        return np.ones(step.shape[1])
+    room = np.where(step > 0, high - theta, low - theta)
+    share = np.where(step != 0, room / np.where(step != 0, step, 1.0), np.inf)
+    return np.asarray(np.minimum(1.0, np.maximum(share.min(axis=0), 0.0)))
+
+
+def _accept(taken: Mask, trial: Array, theta: Array, there: _Point, here: _Point) -> tuple[Array, _Point]:
+    if taken.all():
+        return trial, there
+    return np.where(taken, trial, theta), _Point(
+        np.where(taken, there.residual, here.residual),
+        np.where(taken, there.total, here.total),
+        np.where(taken, there.linear, here.linear),
+        [np.where(taken, a, b) for a, b in zip(there.tangents, here.tangents, strict=True)],
+    )
+
+
+def _next_damping(damping: Array, taken: Mask) -> Array:
+    """Ten times less after a good step, none once it is small; ten times more after a bad one."""
+    less = np.where(damping > NO_DAMPING, damping * 0.1, 0.0)
+    return np.where(taken, less, np.maximum(damping * 10.0, FIRST_DAMPING))
+
+
+def _take(here: _Point, keep: NDArray[np.intp]) -> _Point:
+    return _Point(
+        here.residual[:, keep],
+        here.total[keep],
+        here.linear[:, keep],
+        [t[:, keep] for t in here.tangents],
+    )
+
+
+def _record(
+    found: StackSolution,
+    index: NDArray[np.intp],
+    done: Mask,
+    stack: Stack,
+    roles: _Roles,
+    theta: Array,
+    here: _Point,
+    count: int,
+    low: Array,
+    high: Array,
+) -> None:
+    """Write the finished runs into the solution."""
+    rows = index[done]
+    for i in range(stack.free.size):
+        if not stack.free[i]:
+            found.parameters[i, rows] = stack.template[i]
+    for row, i in zip(here.linear, roles.eliminated, strict=True):
+        found.parameters[i, rows] = row[done]
+    for row, i, log in zip(theta, roles.searched, roles.in_logarithm, strict=True):
+        found.parameters[i, rows] = np.exp(row[done]) if log else row[done]
+    found.total[rows] = np.where(np.isfinite(here.total[done]), here.total[done], np.inf)
+    found.steps[rows] = count
+    normal, slope = _normal_equations(here)
+    free_now = ~_held_at_bound(theta, slope, low, high)
+    step, _ = _step(normal, slope, np.zeros(theta.shape[1]), free_now)
+    found.tangent[rows] = np.sqrt(np.maximum(np.einsum("ir,ir->r", step, slope * free_now), 0.0))[done]
