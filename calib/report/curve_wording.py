@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
 from calib.report.wording import MISSING, number, percent, rounded, with_unit
@@ -38,10 +39,14 @@ def parameter_rows(
     rows = []
     for parameter in curve.response_model.parameters:
         value, u = curve.parameters[parameter.name], errors[parameter.name]
-        shown, uncertainty = (number(value), "held") if parameter.name in fixed else rounded(value, u)
+        shown, uncertainty = (number(value), "held") if parameter.name in fixed else _with_u(value, u)
         unit = unit_words(parameter.unit_of, concentration_unit, response_unit)
         rows.append((parameter.name, parameter.meaning, shown, uncertainty, unit))
     return tuple(rows)
+
+
+def _with_u(value: float, u: float) -> tuple[str, str]:
+    return rounded(value, u) if math.isfinite(u) else (number(value), "not determined")
 
 
 def residual_sd_text(curve: Curve, concentration_unit: str, response_unit: str) -> str:

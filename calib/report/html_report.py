@@ -85,6 +85,7 @@ def _view(record: RunRecord) -> dict[str, Any]:
         "blanks": run_rows.blank_rows(record),
         "checks": run_rows.check_rows(record),
         "unknowns": run_rows.unknown_rows(record),
+        "one_kind": run_rows.one_kind(record),
         "excluded": run_rows.excluded_readings(record),
         "absent": run_rows.absent_readings(record),
         "versions": _versions(),

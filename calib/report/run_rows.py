@@ -270,6 +270,12 @@ def _unknown(record: RunRecord, q: QuantityRecord) -> UnknownRow:
     )
 
 
+def one_kind(record: RunRecord) -> str:
+    """Kind of uncertainty, 'curve only' or 'combined', where all unknowns share it; else empty."""
+    kinds = {q.kind for q in record.evaluation.quantities if q.role == "unknown"}
+    return kinds.pop() if len(kinds) == 1 else ""
+
+
 def remarks(q: QuantityRecord) -> str:
     """Flags in words; of a censored value none about the interval that is not printed."""
     outside = q.position in ("above", "below")

@@ -133,6 +133,23 @@ def test_unknowns_worst_first(records: dict[str, RunRecord]) -> None:
     assert next(row for row in rows if row.sample == "L-0302-01").result == "1.53 ug/L"
 
 
+def test_kind_of_uncertainty_is_named(records: dict[str, RunRecord]) -> None:
+    record = records["falling"]
+    assert "U [ug/L] curve only k" in Page(render_run(record)).text
+    first, *others = record.evaluation.quantities
+    mixed = (replace(first, role="unknown", kind="combined"), *others)
+    text = Page(render_run(replace(record, evaluation=replace(record.evaluation, quantities=mixed)))).text
+    assert "U [ug/L] k Interval [ug/L] Kind" in text
+
+
+def test_a_run_of_unknowns_names_the_run_of_its_curve(records: dict[str, RunRecord]) -> None:
+    record = records["falling"]
+    later = replace(record, heading=replace(record.heading, kind="unknowns", id=99), curve_run=1)
+    text = Page(render_run(later)).text
+    assert "Run 99: unknowns on an earlier curve" in text
+    assert "The standards of run 1, whose curve is used here." in text
+
+
 def test_record_is_traceable(records: dict[str, RunRecord]) -> None:
     record = records["rising"]
     text = Page(render_run(record)).text
