@@ -1,5 +1,6 @@
 """What a verdict rests on: the standards, checks and blanks as the fitted curve reads them."""
 
+import math
 from collections.abc import Iterable
 from dataclasses import dataclass
 
@@ -17,7 +18,7 @@ class JudgedStandard:
     level : float
         Nominal concentration, in the unit of the evidence.
     response : float
-        Response, in the run's response unit.
+        Response, in the run's response unit; nan where the detector gave none (saturated).
     back_calculated : float
         Concentration at which the curve has this response; nan where there is none.
     relative_error : float
@@ -97,8 +98,8 @@ class Evidence:
 
     @property
     def fitted(self) -> tuple[JudgedStandard, ...]:
-        """The judged readings that are in the fit."""
-        return tuple(s for s in self.judged if not s.excluded)
+        """The judged readings that are in the fit; a saturated one without a response is not."""
+        return tuple(s for s in self.judged if not s.excluded and not math.isnan(s.response))
 
     @property
     def ends(self) -> tuple[float, float] | None:

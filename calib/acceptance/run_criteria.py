@@ -6,7 +6,7 @@ from typing import ClassVar
 from calib.acceptance.criterion import CriterionResult, LimitedCriterion
 from calib.acceptance.evidence import Evidence, JudgedCheck
 from calib.acceptance.limits import Quantity, at_most, within
-from calib.acceptance.wording import amount, count, listed, percent, signed_percent
+from calib.acceptance.wording import amount, count, figure, listed, percent, signed_percent, with_unit
 
 UNUSABLE_FINDINGS = ("not-converged", "not-identifiable", "too-few-levels", "at-bound")
 """Findings of a curve that no limit of a method can outweigh."""
@@ -41,7 +41,7 @@ class ResidualSd(LimitedCriterion):
         """Compare the residual standard deviation with the limit; without a value it fails."""
         observed = evidence.residual_sd
         what = f"residual standard deviation at most {self.limit.value:g} (scale of the noise model)"
-        detail = "no value" if math.isnan(observed) else f"{observed:g}"
+        detail = "no value" if math.isnan(observed) else figure(observed, self.limit.value)
         return self._result(what, observed, within(observed, self.limit.value), detail)
 
 
@@ -62,7 +62,9 @@ class Blank(LimitedCriterion):
             detail = f"{missing} of {count(len(blanks), 'blank')} without a back-calculated value"
             return self._result(what, None, False, detail)
         largest = max(blanks)
-        detail = f"largest of {count(len(blanks), 'blank')}: {amount(largest, unit)}"
+        detail = (
+            f"largest of {count(len(blanks), 'blank')}: {with_unit(figure(largest, self.limit.value), unit)}"
+        )
         return self._result(what, largest, at_most(largest, self.limit.value), detail)
 
 

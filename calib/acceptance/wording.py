@@ -26,9 +26,22 @@ def signed_percent(fraction: float, limit: float) -> str:
     return f"{100 * fraction:+.{decimals}f} %"
 
 
+def figure(value: float, limit: float) -> str:
+    """Write an observed value to four digits, or as many as tell it from a limit it exceeds."""
+    digits = 4
+    while value > limit and float(f"{value:.{digits}g}") <= limit and digits < MOST_DECIMALS:
+        digits += 1
+    return f"{value:.{digits}g}"
+
+
+def with_unit(text: str, unit: str) -> str:
+    """Append a unit; a bare ratio (unit '1') has none."""
+    return text if unit == "1" else f"{text} {unit}"
+
+
 def amount(concentration: float, unit: str) -> str:
-    """Write a concentration with its unit; a bare ratio (unit '1') has none."""
-    return f"{concentration:g}" if unit == "1" else f"{concentration:g} {unit}"
+    """Write a nominal concentration with its unit."""
+    return with_unit(f"{concentration:g}", unit)
 
 
 def relative_error_words(standard: JudgedStandard, unit: str, limit: float) -> str:

@@ -121,8 +121,7 @@ def amend_run(store: tables.Store, number: int, change: Change, *, reason: str, 
     with store.change(action="amend run", by=by, reason=reason) as session:
         record = load_run(session, number, (0, ""))
         _refuse_void(session, number)
-        if change.of_facts:
-            _amend_facts(session, number, change, reason, by, now)
+        _amend_facts(session, number, change, reason, by, now)
         _amend_readings(session, record.readings, number, change)
         session.flush()
         if change.instrument and record.heading.kind == "calibration":
@@ -261,6 +260,7 @@ def _requantify(session: Session, number: int) -> None:
 
 
 def _amend_facts(session: Session, number: int, change: Change, reason: str, by: str, now: datetime) -> None:
+    """New facts with the reason, also where only readings change: they have no reason of their own."""
     old = facts_of(session, number)
     instrument = instrument_named(session, change.instrument) if change.instrument else None
     lot = lot_named(session, change.lot) if change.lot else None

@@ -10,6 +10,8 @@ from sqlalchemy.orm import Session
 from calib import store as tables
 from calib.errors import NotFound
 
+LARGEST_KEY = 2**63 - 1  # what a database holds
+
 
 def instrument_named(session: Session, name: str) -> tables.Instrument:
     """Instrument of that name.
@@ -36,7 +38,7 @@ def method_named(session: Session, name: str, version: int | None = None) -> tab
     """
     query = select(tables.Method).where(tables.Method.name == name)
     if version is not None:
-        query = query.where(tables.Method.version == version)
+        query = query.where(tables.Method.version == min(version, LARGEST_KEY))
     row = session.scalar(query.order_by(tables.Method.version.desc()).limit(1))
     if row is None:
         known = session.scalars(select(tables.Method.name).distinct().order_by(tables.Method.name)).all()
@@ -68,7 +70,7 @@ def run_numbered(session: Session, number: int) -> tables.Run:
     NotFound
         Naming the last run there is.
     """
-    row = session.get(tables.Run, number)
+    row = session.get(tables.Run, number) if number <= LARGEST_KEY else None
     if row is None:
         last = session.scalar(select(func.max(tables.Run.id)))
         hint = f"the last one is {last}" if last else "none is logged yet"

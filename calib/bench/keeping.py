@@ -104,7 +104,7 @@ def exclusions_in_force(session: Session, run_id: int) -> dict[int, tables.Exclu
         .join(tables.Exclusion, tables.Exclusion.reading_id == tables.Reading.id)
         .where(tables.Reading.run_id == run_id, tables.is_current(tables.Exclusion))
     )
-    return dict(session.execute(query).tuples().all())
+    return {row[0]: row[1] for row in session.execute(query)}
 
 
 def measured_of(

@@ -12,7 +12,7 @@ from sqlalchemy.orm import Session
 from calib import store as tables
 from calib.bench.evaluate import evaluate
 from calib.bench.keeping import add_evaluation, add_quantities
-from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicate
+from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.records import Evaluation, RunRecord
 from calib.bench.show_run import show_run
 from calib.errors import InputError
@@ -55,6 +55,7 @@ def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, 
     plan = evaluated.plan
     now = store.now()
     with store.change(action="log run", by=plan.by) as session:
+        refuse_duplicates(session, plan.file, plan.runs)
         original_id = add_original(session, plan.file, now)
         numbers = [
             _write(session, plan, run, evaluation, original_id, now)
@@ -84,7 +85,6 @@ def _write(
     original_id: int,
     now: datetime,
 ) -> int:
-    refuse_duplicate(session, plan.file, run)
     run_id = add_run(session, plan, run, original_id, now)
     reading_ids = add_readings(session, run_id, run)
     curve_id = add_evaluation(session, run_id, evaluation, reading_ids, by=plan.by, at=now)

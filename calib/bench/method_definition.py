@@ -29,6 +29,7 @@ OPTIONAL = (
     "curve",
 )
 DURATION = re.compile(r"^\s*(\d+(?:\.\d+)?)\s*(min|h|d)\s*$")
+LONGEST_HOURS = 87660.0
 HOURS = {"min": 1.0 / 60.0, "h": 1.0, "d": 24.0}
 
 
@@ -258,4 +259,7 @@ def _valid_hours(table: object) -> float:
     match = DURATION.match(text) if isinstance(text, str) else None
     if match is None or float(match[1]) == 0:
         raise MethodError(f'curve.valid_for = {text!r} must be a time such as "90 min", "24 h" or "7 d"')
-    return float(match[1]) * HOURS[match[2]]
+    hours = float(match[1]) * HOURS[match[2]]
+    if hours > LONGEST_HOURS:
+        raise MethodError(f"curve.valid_for = {text!r} is longer than ten years; correct it")
+    return hours

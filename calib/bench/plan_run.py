@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from datetime import datetime, timedelta, timezone
 from pathlib import Path
 
@@ -15,7 +15,7 @@ from calib.bench.find import instrument_named, lot_named, method_named
 from calib.bench.keeping import definition_of, is_saturated
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured
-from calib.errors import DuplicateFile, InputError
+from calib.errors import DuplicateFile, InputError, UnknownUnit
 from calib.intake import (
     ParsedFile,
     ParsedReading,
@@ -85,19 +85,26 @@ def plan_file(store: tables.Store, path: str | Path, options: LogOptions) -> Log
     parsed = read_file(path, layout=options.layout)
     with store.reading() as session:
         runs = tuple(_plan(session, parsed, run, options) for run in parsed.runs)
-        for run in runs:
-            refuse_duplicate(session, parsed, run)
+        _refuse_one_method_for_two(parsed, runs)
+        refuse_duplicates(session, parsed, runs)
     return LogPlan(parsed, runs, options.by)
 
 
-def refuse_duplicate(session: Session, file: ParsedFile, run: PlannedRun) -> None:
-    """Refuse a run whose bytes or readings are in the store under this method.
+def refuse_duplicates(session: Session, file: ParsedFile, runs: Sequence[PlannedRun]) -> None:
+    """Refuse a file of which a run's bytes or readings are in the store under its method.
+
+    To be asked before any run of the file is written: the runs of one file share its bytes.
 
     Raises
     ------
     DuplicateFile
         Naming the run that holds them.
     """
+    for run in runs:
+        _refuse_duplicate(session, file, run)
+
+
+def _refuse_duplicate(session: Session, file: ParsedFile, run: PlannedRun) -> None:
     same_bytes = tables.Original.fingerprint == file.fingerprint
     same_content = tables.Run.content_fingerprint == run.content_fingerprint
     found = session.execute(
@@ -118,6 +125,17 @@ def refuse_duplicate(session: Session, file: ParsedFile, run: PlannedRun) -> Non
     )
 
 
+def _refuse_one_method_for_two(file: ParsedFile, runs: Sequence[PlannedRun]) -> None:
+    first: dict[tuple[int, str], PlannedRun] = {}
+    for run in runs:
+        other = first.setdefault((run.instrument.id, run.method.name), run)
+        if other is not run:
+            raise InputError(
+                f"{file.name}: method {run.method.name} cannot be for both '{other.parsed.analyte}' and "
+                f"'{run.parsed.analyte}'; give --method once for each analyte, or name the method in the file"
+            )
+
+
 def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOptions) -> PlannedRun:
     instrument = instrument_named(session, _agreed(file, "instrument", options.instrument, run.instrument))
     if run.serial and instrument.serial and run.serial != instrument.serial:
@@ -129,7 +147,7 @@ def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOption
     definition = definition_of(method)
     at = _moment(file, run, instrument, options.at)
     lot_name = options.lot or run.lot
-    factor = conversion_factor(run.concentration_unit, definition.concentration_unit)
+    factor = _unit_factor(file, run, definition)
     _require_response_unit(file, run, definition)
     return PlannedRun(
         parsed=run,
@@ -141,9 +159,14 @@ def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOption
         operator=run.operator or options.by,
         lot=lot_named(session, lot_name) if lot_name else None,
         measured=tuple(_measured(i, r, factor, instrument) for i, r in enumerate(run.readings, start=1)),
-        content_fingerprint=content_fingerprint(run),
+        content_fingerprint=content_fingerprint(_resolved(run, instrument.name, definition.analyte, at)),
         notes=_notes(run, definition, factor),
     )
+
+
+def _resolved(run: ParsedRun, instrument: str, analyte: str, at: datetime) -> ParsedRun:
+    """The run with what its file may leave open, so that another form of it has the same fingerprint."""
+    return replace(run, instrument=instrument, analyte=analyte, at=at)
 
 
 def _agreed(file: ParsedFile, what: str, said: str | None, written: str | None) -> str:
@@ -194,6 +217,13 @@ def _first_reading_time(readings: Sequence[ParsedReading]) -> datetime | None:
 def _offset_minutes(at: datetime) -> int:
     offset = at.utcoffset()
     return int(offset.total_seconds() // 60) if offset else 0
+
+
+def _unit_factor(file: ParsedFile, run: ParsedRun, definition: MethodDefinition) -> float:
+    try:
+        return conversion_factor(run.concentration_unit, definition.concentration_unit)
+    except UnknownUnit as cause:
+        raise UnknownUnit(f"{file.name}, method {definition.name}: {cause}") from cause
 
 
 def _require_response_unit(file: ParsedFile, run: ParsedRun, definition: MethodDefinition) -> None:

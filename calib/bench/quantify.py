@@ -11,7 +11,7 @@ from calib import store as tables
 from calib.bench.find import current_curve, run_numbered
 from calib.bench.keeping import add_quantities
 from calib.bench.log_run import add_original, add_readings, add_run
-from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicate
+from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.quantities import quantities_of
 from calib.bench.records import QuantityRecord, RunRecord
 from calib.bench.show_run import load_run, local, show_run
@@ -38,6 +38,7 @@ def quantify_plan(store: tables.Store, plan: LogPlan) -> tuple[RunRecord, ...]:
     now = store.now()
     numbers = []
     with store.change(action="quantify unknowns", by=plan.by) as session:
+        refuse_duplicates(session, plan.file, plan.runs)
         original_id = add_original(session, plan.file, now)
         for run, curve, quantities in zip(plan.runs, curves, results, strict=True):
             numbers.append(_write(session, plan, run, curve, quantities, original_id, now))
@@ -63,8 +64,8 @@ def curve_in_force(session: Session, run: PlannedRun) -> tables.Curve:
     Raises
     ------
     InputError
-        When there is none, or when a later curve was rejected: nobody goes back to an
-        older curve because the new one failed.
+        When there is none, when a later curve was rejected (nobody goes back to an older
+        curve because the new one failed), or when the method has a new version since.
     """
     latest = session.execute(
         select(tables.Run, tables.RunFacts, tables.VerdictRow.decision)
@@ -95,6 +96,11 @@ def curve_in_force(session: Session, run: PlannedRun) -> tables.Curve:
             f"the latest curve of {where} (run {source.id}, {measured:%Y-%m-%d %H:%M}) was rejected; "
             "log new standards: an older curve is not taken instead"
         )
+    if source.method_id != run.method.id:
+        raise InputError(
+            f"the latest curve of {where} (run {source.id}, {measured:%Y-%m-%d %H:%M}) was judged under another "
+            f"version of the method than {run.method.version}, the present one; log new standards"
+        )
     _refuse_expired(run, source, facts.at, measured)
     curve = current_curve(session, source.id)
     if curve is None:
@@ -120,7 +126,6 @@ def _write(
     original_id: int,
     now: datetime,
 ) -> int:
-    refuse_duplicate(session, plan.file, run)
     still = curve_in_force(session, run)
     if still.id != curve.id:
         raise InputError(f"{plan.file.name}: the curve in force changed meanwhile; run the command again")

@@ -41,7 +41,7 @@ def quantities_of(
     groups = [tuple(g) for g in _groups(readings)]
     present = [g for g in groups if any(r.response is not None for r in g)]
     found: Quantity | None = None
-    if usable and present:
+    if present and curve.converged:
         found = invert(
             curve,
             [_mean(g) for g in present],
@@ -49,9 +49,18 @@ def quantities_of(
             confidence=definition.interval_confidence,
         )
     order = {id(g): i for i, g in enumerate(present)}
+    tests = ("check", "first-check")
     return tuple(
         _record(
-            definition, curve, g, found, order.get(id(g)), lowest, highest, None if usable else unusable_flag
+            definition,
+            curve,
+            g,
+            # A check is read back on a rejected curve too: it is part of why it was rejected.
+            found if usable or g[0].role in tests else None,
+            order.get(id(g)),
+            lowest,
+            highest,
+            None if usable else unusable_flag,
         )
         for g in groups
     )
@@ -92,6 +101,8 @@ def _record(
         return _without_value(definition, one, responses, (*flags, cause))
     position = _position(float(found.value[i]), found.position[i], lowest, highest)
     flags += _value_flags(found, i, position)
+    if unusable:
+        flags += (unusable,)
     if len(responses) > 1 and replicates_disagree(curve, responses):
         flags += ("replicate-spread",)
     value, inside = _finite(found.value[i]), position == "inside"
@@ -166,7 +177,8 @@ def _reading_flags(group: Sequence[Measured], present: int) -> tuple[str, ...]:
 def _value_flags(found: Quantity, i: int, position: str) -> tuple[str, ...]:
     flags = []
     if position != "inside":
-        flags.append(f"{position}-range")
+        # Nothing about the interval is reported outside the range, so nothing is flagged about it.
+        return (f"{position}-range", *(("off-curve",) if found.state[i] == "off-curve" else ()))
     match found.state[i]:
         case "asymmetric":
             flags.append("lopsided")

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import date, datetime
 
 from calib.acceptance import CriterionResult
 from calib.bench.method_definition import MethodDefinition
@@ -170,10 +171,26 @@ class Amendment:
 
 
 @dataclass(frozen=True, slots=True)
+class LotFacts:
+    """What the certificate of a standard lot says."""
+
+    name: str
+    material: str
+    certified_value: float | None
+    unit: str | None
+    expanded_uncertainty: float | None
+    coverage_factor: float | None
+    expiry: date | None
+    certificate: str | None
+
+
+@dataclass(frozen=True, slots=True)
 class RunRecord:
     """A run as the store holds it now.
 
     A run of unknowns has no standards of its own; its curve is the one it names.
+    ``attempts_that_day`` counts the calibration runs of this instrument and method on
+    the same local day, this one included; ``versions`` are those the curve was fitted with.
     """
 
     heading: RunHeading
@@ -184,5 +201,8 @@ class RunRecord:
     readings: tuple[Measured, ...]
     amendments: tuple[Amendment, ...]
     curves_before: int
+    attempts_that_day: int
+    versions: Mapping[str, str]
+    lot: LotFacts | None
     chain_sequence: int
     chain_head: str

@@ -117,15 +117,12 @@ def add_instrument(
 def list_instruments(store: tables.Store) -> tuple[InstrumentRecord, ...]:
     """All instruments with the number of runs logged on each."""
     with store.reading() as session:
-        counts = dict(
-            session.execute(
-                select(tables.RunFacts.instrument_id, func.count())
-                .where(tables.is_current(tables.RunFacts))
-                .group_by(tables.RunFacts.instrument_id)
-            )
-            .tuples()
-            .all()
+        query = (
+            select(tables.RunFacts.instrument_id, func.count())
+            .where(tables.is_current(tables.RunFacts))
+            .group_by(tables.RunFacts.instrument_id)
         )
+        counts = {row[0]: row[1] for row in session.execute(query)}
         rows = session.scalars(select(tables.Instrument).order_by(tables.Instrument.name)).all()
     return tuple(
         InstrumentRecord(

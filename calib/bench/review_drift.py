@@ -61,7 +61,7 @@ class DriftRecord:
     recovery_percent : (runs,) array
         Mean recovery of the check standards of each run, percent; nan without any.
     review : DriftReview
-        Charts of ln response at the references and ln recovery, with limits and signals.
+        Charts of the response at the references and of ln recovery, with limits and signals.
     restart : int
         First run of the present segment.
     """
@@ -120,18 +120,28 @@ def review_instrument(
         events = _events(session, instrument)
     if not rows:
         raise NotFound(f"no run of instrument {instrument} with method {method} is logged; nothing to review")
-    restart = next((i for i, r in enumerate(rows) if since is None or r.at >= since), len(rows))
+    restart = next((i for i, r in enumerate(rows) if since is None or _begins_by(since, r.at)), len(rows))
     return _review(instrument, definition, rows, events, restart)
 
 
+def _begins_by(since: datetime, at: datetime) -> bool:
+    """Whether a run is not before a moment; one without an offset is on the clock of the run."""
+    return at >= (since if since.tzinfo else since.replace(tzinfo=at.tzinfo))
+
+
 def reviewed_pairs(store: tables.Store) -> tuple[tuple[str, str], ...]:
-    """Instruments and methods that have calibration runs."""
+    """Instruments and methods that have calibration runs which are not void."""
     query = (
         select(tables.Instrument.name, tables.Method.name)
         .join(tables.RunFacts, tables.RunFacts.instrument_id == tables.Instrument.id)
         .join(tables.Run, tables.Run.id == tables.RunFacts.run_id)
         .join(tables.Method, tables.Method.id == tables.Run.method_id)
-        .where(tables.Run.kind == "calibration", tables.is_current(tables.RunFacts))
+        .outerjoin(tables.RunVoid, tables.RunVoid.run_id == tables.Run.id)
+        .where(
+            tables.Run.kind == "calibration",
+            tables.RunVoid.id.is_(None),
+            tables.is_current(tables.RunFacts),
+        )
         .distinct()
         .order_by(tables.Instrument.name, tables.Method.name)
     )
@@ -200,7 +210,7 @@ def _recoveries(session: Session, runs: Sequence[int]) -> dict[int, tuple[float,
     )
     found: dict[int, tuple[float, ...]] = {}
     for row in session.scalars(query):
-        if row.concentration is not None and row.nominal:
+        if row.concentration is not None and row.nominal and row.concentration > 0:
             value = float(ln_recovery(row.concentration, row.nominal))
             found[row.run_id] = (*found.get(row.run_id, ()), value)
     return found

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import tomllib
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -46,6 +46,8 @@ class DemoSeason:
         Files that were refused.
     rejected : tuple of (file, reasons)
         Runs whose curve was rejected, with the failing criteria.
+    corrected : tuple of (file, decision)
+        Runs with readings excluded afterwards by a person, and their verdict then.
     today : tuple of int
         Runs of the last day.
     """
@@ -55,6 +57,7 @@ class DemoSeason:
     present: int
     refused: tuple[tuple[str, str], ...]
     rejected: tuple[tuple[str, str], ...]
+    corrected: tuple[tuple[str, str], ...]
     today: tuple[int, ...]
 
 
@@ -71,6 +74,7 @@ def set_up_demo(store: tables.Store, progress: Progress) -> DemoSeason:
     logged = present = 0
     refused: list[tuple[str, str]] = []
     rejected: list[tuple[str, str]] = []
+    corrected: list[tuple[str, str]] = []
     for done, file in enumerate(files):
         progress(done, len(files), file.name)
         if file.name in known:
@@ -87,7 +91,7 @@ def set_up_demo(store: tables.Store, progress: Progress) -> DemoSeason:
             for r in records
             if not r.evaluation.verdict.accepted
         )
-        _exclude(store, file.name, records[0].heading.id or 0, laboratory)
+        corrected.extend(_exclude(store, file.name, records[0].heading.id or 0, laboratory))
     progress(len(files), len(files), "")
     today = laboratory["today"].isoformat()
     lines = list_runs(store)
@@ -97,6 +101,7 @@ def set_up_demo(store: tables.Store, progress: Progress) -> DemoSeason:
         present,
         tuple(refused),
         tuple(rejected),
+        tuple(corrected),
         tuple(line.id for line in lines if line.at.date().isoformat() == today),
     )
 
@@ -139,10 +144,13 @@ def _register(store: tables.Store, folder: Path, laboratory: Mapping[str, Any]) 
             add_event(store, e["instrument"], at=e["at"], kind=e["kind"], what=e["what"], by=e["by"])
 
 
-def _exclude(store: tables.Store, name: str, number: int, laboratory: Mapping[str, Any]) -> None:
+def _exclude(
+    store: tables.Store, name: str, number: int, laboratory: Mapping[str, Any]
+) -> Iterator[tuple[str, str]]:
     """Exclusions a person of the laboratory decided on with an assignable cause."""
     for exclusion in laboratory.get("exclusion", []):
         if exclusion["file"] == name:
-            exclude_readings(
+            record = exclude_readings(
                 store, number, exclusion["readings"], reason=exclusion["reason"], by=exclusion["by"]
             )
+            yield name, record.evaluation.verdict.decision

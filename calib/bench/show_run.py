@@ -11,7 +11,14 @@ from sqlalchemy.orm import Session, aliased
 
 from calib import store as tables
 from calib.bench.evaluate import BLANK_ROLES, blank_records, fitted_readings
-from calib.bench.find import current_curve, facts_of, run_numbered, void_of
+from calib.bench.find import (
+    current_curve,
+    facts_of,
+    instrument_named,
+    method_named,
+    run_numbered,
+    void_of,
+)
 from calib.bench.keeping import (
     WITHDRAWN,
     current_quantities,
@@ -25,7 +32,7 @@ from calib.bench.keeping import (
     verdict_record,
 )
 from calib.bench.method_definition import MethodDefinition
-from calib.bench.records import Amendment, Evaluation, Measured, RunHeading, RunRecord
+from calib.bench.records import Amendment, Evaluation, LotFacts, Measured, RunHeading, RunRecord
 from calib.intake import conversion_factor
 
 
@@ -65,8 +72,17 @@ def list_runs(
         Only these.
     last : int, optional
         Only so many of the latest.
+
+    Raises
+    ------
+    NotFound
+        When there is no such instrument or method.
     """
     with store.reading() as session:
+        if instrument is not None:
+            instrument_named(session, instrument)
+        if method is not None:
+            method_named(session, method)
         rows = session.execute(_listing(instrument, method)).all()
     lines = tuple(
         RunLine(
@@ -147,6 +163,9 @@ def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
         readings=own,
         amendments=_amendments(session, run),
         curves_before=_curves_before(session, curve_row.run_id),
+        attempts_that_day=_attempts(session, run, method.name),
+        versions=dict(curve_row.versions),
+        lot=_lot_facts(session, run.id),
         chain_sequence=head[0],
         chain_head=head[1],
     )
@@ -233,6 +252,44 @@ def heading_of(session: Session, run: tables.Run, method: tables.Method) -> RunH
         concentration_unit=run.concentration_unit,
         response_unit=run.response_unit,
         void_reason=void.reason if void else None,
+    )
+
+
+def _attempts(session: Session, run: tables.Run, method: str) -> int:
+    """Calibration runs of one instrument and method on the local day of a run."""
+    facts = facts_of(session, run.id)
+    start = local(facts.at, facts.offset_minutes).replace(hour=0, minute=0, second=0, microsecond=0)
+    query = (
+        select(func.count())
+        .select_from(tables.Run)
+        .join(tables.RunFacts, tables.RunFacts.run_id == tables.Run.id)
+        .join(tables.Method, tables.Method.id == tables.Run.method_id)
+        .where(
+            tables.Run.kind == "calibration",
+            tables.Method.name == method,
+            tables.RunFacts.instrument_id == facts.instrument_id,
+            tables.RunFacts.at >= start,
+            tables.RunFacts.at < start + timedelta(days=1),
+            tables.is_current(tables.RunFacts),
+        )
+    )
+    return int(session.scalar(query) or 0)
+
+
+def _lot_facts(session: Session, run_id: int) -> LotFacts | None:
+    lot_id = facts_of(session, run_id).lot_id
+    if lot_id is None:
+        return None
+    lot = session.get_one(tables.StandardLot, lot_id)
+    return LotFacts(
+        lot.name,
+        lot.material,
+        lot.certified_value,
+        lot.unit,
+        lot.expanded_uncertainty,
+        lot.coverage_factor,
+        lot.expiry,
+        lot.certificate,
     )
 
 

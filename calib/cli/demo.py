@@ -42,7 +42,7 @@ def demo(into: Path, as_json: bool) -> None:
             season = set_up_demo(store, progress)
         today = [show_run(store, n) for n in season.today]
         reviews = [review_instrument(store, i, m) for i, m in reviewed_pairs(store)]
-    shown = today[-1]
+    shown = max(today, key=lambda r: len(r.evaluation.quantities))
     write_report(shown, into / REPORT_NAME)
     for review in reviews:
         write_figure(drift_figure(review), into / f"drift_{review.instrument}.png")
@@ -66,6 +66,10 @@ def _folder(into: Path) -> Path:
     return into
 
 
+def _shortened(text: str, most: int = 100) -> str:
+    return text if len(text) <= most else text[: most - 1].rstrip(" ,;:") + "…"
+
+
 def _json(into: Path, season: DemoSeason, today: list[RunRecord], reviews: list[Any]) -> dict[str, Any]:
     from calib.report.as_json import drift_json, plain, run_json
 
@@ -87,10 +91,12 @@ def _show(
     from calib.cli.screen import say
 
     say(f"{season.laboratory} (fictional): {season.logged} files logged, {season.present} there before")
-    for file, message in season.refused:
-        say(f"  refused   {file}: {message.partition('; ')[0]}")
+    for _, message in season.refused:
+        say(f"  refused   {message.partition('; ')[0]}")
     for file, reason in season.rejected:
-        say(f"  rejected  {file}: {reason}")
+        say(f"  rejected  {file}: {_shortened(reason)}")
+    for file, decision in season.corrected:
+        say(f"  corrected {file}: {decision} after a person's exclusion with its cause")
     say()
     say("Today", "bold")
     for record in today:

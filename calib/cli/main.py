@@ -79,8 +79,8 @@ def run(arguments: list[str]) -> int:
     except CalibError as error:
         click.echo(f"calib: {_one_line(str(error))}", err=True)
         return 1
-    except BrokenPipeError:
-        sys.stderr.close()
+    except SystemExit:
+        # click and rich leave in this way, and no other, when whoever reads the output closed the pipe.
         return 0
     return code if isinstance(code, int) else 0
 

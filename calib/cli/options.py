@@ -21,6 +21,8 @@ F = TypeVar("F", bound=Callable[..., Any])
 REJECTED = 3
 DAMAGED = 4
 
+FIRST_YEAR, LAST_YEAR = 1950, 2200  # as for the times in a file
+
 
 def by_option(command: F) -> F:
     """Add --by: who acts. It records a name and does not prove an identity."""
@@ -89,11 +91,14 @@ def moment(text: str | None, option: str = "--at") -> datetime | None:
     if text is None:
         return None
     try:
-        return datetime.fromisoformat(text)
+        at = datetime.fromisoformat(text)
     except ValueError as cause:
         raise InputError(
             f"{option} {text!r} is no time; write 2026-03-02T08:20, with +01:00 if needed"
         ) from cause
+    if not FIRST_YEAR <= at.year <= LAST_YEAR:
+        raise InputError(f"{option} {text!r} lies outside {FIRST_YEAR} to {LAST_YEAR}; correct the year")
+    return at
 
 
 def echo_json(value: Any) -> None:

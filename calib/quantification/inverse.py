@@ -9,7 +9,7 @@ lopsided or open, and it says so instead of printing a symmetric ±.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -100,7 +100,8 @@ def invert(
     confidence : float
         Two-sided.
     interval : {'inversion', 'delta'}
-        'delta' is the symmetric summary value ± q·u, which covers too little near a plateau.
+        'delta' is the symmetric summary value ± q·u, which covers too little near a plateau;
+        `Quantity.state` still tells what the inversion finds.
     components : sequence of Component
         Further uncertainties, added inside the inversion.
 
@@ -191,15 +192,12 @@ class _Search:
         return value, u, nu
 
     def delta(self) -> Quantity:
-        """Symmetric interval value ± q·u."""
+        """Limits value ± q·u; the state and k are those of the inversion, which says whether they hold."""
+        inverted = self.inversion()
         value, curve_u, nu = self.estimate()
         u = np.sqrt(curve_u**2 + value**2 * self.extra)
-        q = two_sided(nu, self.confidence)
-        state = np.where(np.isfinite(u), "ok", np.where(self.beyond(q)[1], "off-curve", "no-estimate"))
-        k = np.where(np.isfinite(u), q, np.nan)
-        with np.errstate(invalid="ignore"):
-            lower, upper = value - q * u, value + q * u
-        return self.quantity(value, u, lower, upper, k, nu, state, np.zeros(u.size, bool), curve_u)
+        half = two_sided(nu, self.confidence) * u
+        return replace(inverted, value=value, u=u, curve_u=curve_u, lower=value - half, upper=value + half)
 
     def inversion(self) -> Quantity:
         """Interval by inversion of the prediction band."""

@@ -50,6 +50,8 @@ def run_json(record: RunRecord) -> dict[str, Any]:
         "quantities": [_quantity(q) for q in evaluation.quantities if q.role in ("unknown", "control")],
         "amendments": [plain(a) for a in record.amendments],
         "earlier_curves": record.curves_before,
+        "attempts_that_day": record.attempts_that_day,
+        "versions": dict(record.versions),
         "record_chain": {"sequence": record.chain_sequence, "head": record.chain_head},
     }
 

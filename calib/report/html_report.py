@@ -88,6 +88,8 @@ def _view(record: RunRecord) -> dict[str, Any]:
         "one_kind": run_rows.one_kind(record),
         "excluded": run_rows.excluded_readings(record),
         "absent": run_rows.absent_readings(record),
+        "lot": lot_in_words(record),
+        "fitted_with": ", ".join(f"{name} {version}" for name, version in sorted(record.versions.items())),
         "versions": _versions(),
         "cautions": CAUTIONS,
     }
@@ -115,6 +117,25 @@ def calibrated_range(record: RunRecord) -> str:
         return "none"
     ends = f"{number(verdict.lowest, LEVEL_DIGITS)} to {number(verdict.highest, LEVEL_DIGITS)}"
     return with_unit(ends, record.definition.concentration_unit)
+
+
+def lot_in_words(record: RunRecord) -> str:
+    """Standard lot with certificate, value, expanded uncertainty and expiry."""
+    lot = record.lot
+    if lot is None:
+        return "not named"
+    parts = [lot.name]
+    if lot.certified_value is not None:
+        value = number(lot.certified_value)
+        if lot.expanded_uncertainty is not None:
+            value += f" ± {number(lot.expanded_uncertainty)}"
+        k = f" (k = {number(lot.coverage_factor)})" if lot.coverage_factor is not None else ""
+        parts.append(with_unit(value, lot.unit or "1") + k)
+    if lot.certificate:
+        parts.append(f"certificate {lot.certificate}")
+    if lot.expiry is not None:
+        parts.append(f"expires {lot.expiry.isoformat()}")
+    return ", ".join(parts)
 
 
 def _inline_picture(record: RunRecord) -> Any:

@@ -80,7 +80,9 @@ def require_current(path: Path) -> None:
 
 def _require_sqlite(path: Path) -> None:
     if not path.exists():
-        raise NotFound(f"there is no store {path}; check the name, or create it with calib log or calib demo")
+        raise NotFound(
+            f"there is no store {path}; check the name, or create it with calib instrument add or calib demo"
+        )
     if path.is_dir():
         raise NotAStore(f"{path} is a folder; name the store file in it")
     with files_in_words("read the store", path), path.open("rb") as file:
