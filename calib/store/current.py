@@ -1,5 +1,6 @@
 """Which version of a record is in force."""
 
+from functools import cache
 from typing import Any
 
 from sqlalchemy import ColumnElement, exists
@@ -8,6 +9,7 @@ from sqlalchemy.orm import aliased
 from calib.store.base import Base
 
 
+@cache  # building the condition costs more than the query it serves
 def is_current(table: type[Base]) -> ColumnElement[bool]:
     """Condition for a query: no later row supersedes this one.
 
