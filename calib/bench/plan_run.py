@@ -26,6 +26,9 @@ from calib.intake import (
 )
 
 
+SMALLEST, LARGEST = 1e-100, 1e100  # numbers beyond only overflow in a fit
+
+
 @dataclass(frozen=True, slots=True)
 class LogOptions:
     """What a person says beside the file; what the file says itself need not be repeated."""
@@ -149,6 +152,8 @@ def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOption
     lot_name = options.lot or run.lot
     factor = _unit_factor(file, run, definition)
     _require_response_unit(file, run, definition)
+    for reading in run.readings:
+        _require_measurable(file, reading)
     return PlannedRun(
         parsed=run,
         instrument=instrument,
@@ -232,6 +237,15 @@ def _require_response_unit(file: ParsedFile, run: ParsedRun, definition: MethodD
             f"{file.name}: responses are in '{run.response_unit}', but method {definition.name} expects "
             f"'{definition.response_unit}'; choose the right method or correct the unit in the file"
         )
+
+
+def _require_measurable(file: ParsedFile, reading: ParsedReading) -> None:
+    for value in (reading.concentration, reading.response, reading.dilution):
+        if value and not SMALLEST <= abs(value) <= LARGEST:
+            raise InputError(
+                f"{file.name}: {reading.place}: {value:g} is no measured number: it lies beyond "
+                f"{SMALLEST:g} to {LARGEST:g}; correct it"
+            )
 
 
 def _measured(ordinal: int, reading: ParsedReading, factor: float, instrument: tables.Instrument) -> Measured:
