@@ -1,6 +1,6 @@
 """Writes the season of the fictional Ostrel Lake Laboratory, the same bytes every time.
 
-Run `python sample_runs/generate.py` to rewrite `season/` and `truth.json`.
+Run `python sample_runs/generate.py` to rewrite `season/`, `later/` and `truth.json`.
 """
 
 from __future__ import annotations
@@ -21,6 +21,8 @@ from laboratory_truth import (
     Cup,
     Plan,
     RandomState,
+    afternoon_cups,
+    afternoon_seed,
     calibration_cups,
     measure,
     random_state,
@@ -169,7 +171,30 @@ def season(laboratory: Mapping[str, Any]) -> Iterator[SeasonFile]:
                 yield second_upload(file)
 
 
-def truth_text(laboratory: Mapping[str, Any], files: list[SeasonFile]) -> str:
+def afternoon_file(laboratory: Mapping[str, Any]) -> SeasonFile:
+    """Samples that came on the last afternoon, read on the electrode without standards of their own."""
+    instrument = next(one for one in laboratory["instrument"] if one["name"] == "EE-3")
+    day, plan = laboratory["today"], PLANS["EE-3"]
+    morning = random_state(seed_of(plan, day))
+    started = started_at(instrument, day, morning).replace(hour=15, minute=10)
+    morning.random_sample()  # the operator of the morning
+    parameters = true_parameters(plan, day, morning)
+    random = random_state(afternoon_seed(plan, day))
+    cups = afternoon_cups(plan, day, random)
+    measured = read_cups(plan, list(cups), parameters, random, ORDINARY)
+    lot = lot_of(laboratory, "EE-3", day)
+    run = SeasonRun(
+        "EE-3", instrument["serial"], instrument["method"], started, "RS", lot["name"], cups, tuple(measured)
+    )
+    place = f"later/EE-3_{day.isoformat()}_afternoon.txt"
+    truth = {**truth_of(place, run, parameters, ORDINARY), "seed": afternoon_seed(plan, day), "steps": []}
+    left_out = ("fault", "expected", "decision", "fails")  # a file without standards is not judged
+    return SeasonFile(
+        place, STYLES["EE-3", None].write(run), {k: v for k, v in truth.items() if k not in left_out}
+    )
+
+
+def truth_text(laboratory: Mapping[str, Any], files: list[SeasonFile], later: SeasonFile) -> str:
     """JSON with one file a line, so that a difference shows the day it belongs to."""
     lines = ",\n".join(json.dumps(file.truth, ensure_ascii=False) for file in files)
     head = json.dumps(
@@ -177,22 +202,25 @@ def truth_text(laboratory: Mapping[str, Any], files: list[SeasonFile]) -> str:
             "schema": 1,
             "laboratory": laboratory["name"],
             "note": "invented; the concentration of an unknown is that of the sample before dilution",
-        }
+            "later": [later.truth],
+        },
+        ensure_ascii=False,
     )
     return f'{head[:-1]}, "files": [\n{lines}\n]}}\n'
 
 
 def write_season(into: Path) -> int:
-    """Rewrite `season/` and `truth.json` below `into`; returns the number of files."""
+    """Rewrite `season/`, `later/` and `truth.json` below `into`; returns the number of files."""
     laboratory = tomllib.loads((HERE / "laboratory.toml").read_text(encoding="utf-8"))
-    files = list(season(laboratory))
-    shutil.rmtree(into / "season", ignore_errors=True)
-    for file in files:
+    files, later = list(season(laboratory)), afternoon_file(laboratory)
+    for folder in ("season", "later"):
+        shutil.rmtree(into / folder, ignore_errors=True)
+    for file in (*files, later):
         target = into / file.place
         target.parent.mkdir(parents=True, exist_ok=True)
         target.write_bytes(file.content)
-    (into / "truth.json").write_bytes(truth_text(laboratory, files).encode())
-    return len(files)
+    (into / "truth.json").write_bytes(truth_text(laboratory, files, later).encode())
+    return len(files) + 1
 
 
 def main() -> None:

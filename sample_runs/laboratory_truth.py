@@ -218,7 +218,11 @@ def seed_of(plan: Plan, day: date) -> tuple[int, int, int]:
     return SEED, plan.ordinal, (day - FIRST_DAY).days
 
 
-def random_state(seed: tuple[int, int, int]) -> RandomState:
+def afternoon_seed(plan: Plan, day: date) -> tuple[int, int, int, int]:
+    return *seed_of(plan, day), 15
+
+
+def random_state(seed: tuple[int, ...]) -> RandomState:
     """RandomState, because numpy promises that its streams never change (NEP 19); Generator's may."""
     return RandomState(np.random.MT19937(np.random.SeedSequence(seed)))
 
@@ -282,6 +286,16 @@ def unknown_cups(plan: Plan, day: date, last_day: date, random: RandomState) -> 
         if region == "above" and plan.dilute_above != 1.0 and dilution == 1.0:
             cups += [Cup(label, "unknown", None, content / plan.dilute_above, plan.dilute_above)] * 2
     return cups
+
+
+def afternoon_cups(plan: Plan, day: date, random: RandomState) -> tuple[Cup, ...]:
+    """Six samples twice: one of them diluted, one above the standards."""
+    cups: list[Cup] = []
+    for number in range(1, 7):
+        region, dilution = "above" if number == 4 else "inside", 10.0 if number == 6 else 1.0
+        content = draw_concentration(plan.ranges[region], random)
+        cups += [Cup(f"{plan.prefix}-{day:%m%d}-P{number}", "unknown", None, content, dilution)] * 2
+    return tuple(cups)
 
 
 def measure(plan: Plan, content: float, parameters: Parameters, deviate: float) -> float:

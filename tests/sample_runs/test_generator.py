@@ -17,7 +17,8 @@ LAST_DAY = "2026-05-29"
 def season_files(folder: Path) -> dict[str, bytes]:
     return {
         file.relative_to(folder).as_posix(): file.read_bytes()
-        for file in (folder / "season").rglob("*")
+        for part in ("season", "later")
+        for file in (folder / part).rglob("*")
         if file.is_file()
     }
 
@@ -25,6 +26,11 @@ def season_files(folder: Path) -> dict[str, bytes]:
 @pytest.fixture(scope="module")
 def truth():
     return json.loads((SAMPLE_RUNS / "truth.json").read_text(encoding="utf-8"))["files"]
+
+
+@pytest.fixture(scope="module")
+def later():
+    return json.loads((SAMPLE_RUNS / "truth.json").read_text(encoding="utf-8"))["later"]
 
 
 @pytest.fixture(scope="module")
@@ -41,8 +47,8 @@ def test_generator_reproduces_the_kept_files_byte_for_byte(tmp_path):
     assert (tmp_path / "truth.json").read_bytes() == (SAMPLE_RUNS / "truth.json").read_bytes()
 
 
-def test_truth_covers_every_file_once(truth):
-    assert sorted(entry["file"] for entry in truth) == sorted(season_files(SAMPLE_RUNS))
+def test_truth_covers_every_file_once(truth, later):
+    assert sorted(entry["file"] for entry in [*truth, *later]) == sorted(season_files(SAMPLE_RUNS))
 
 
 def test_every_instrument_has_one_first_file_each_working_day(truth, laboratory):
@@ -61,6 +67,17 @@ def test_last_day_is_clean_and_reaches_outside_the_standards_on_the_photometer(t
     assert [entry["fault"] for entry in today] == [None] * 4
     assert sum(concentration > 6.4 for concentration in concentrations) >= 2
     assert sum(concentration < 0.25 for concentration in concentrations) >= 1
+
+
+def test_afternoon_holds_samples_only_on_the_instrument_as_it_was_that_morning(truth, later):
+    (afternoon,) = later
+    (morning,) = [e for e in truth if (e["instrument"], e["day"]) == ("EE-3", LAST_DAY)]
+    assert afternoon["parameters"] == morning["parameters"]
+    assert b"standard;" not in (SAMPLE_RUNS / afternoon["file"]).read_bytes()
+    contents = {s["sample"]: s["concentration"] / s["dilution"] for s in afternoon["unknowns"]}
+    assert len(contents) == 6
+    assert [s for s, content in contents.items() if content > 30.0] == ["N-0529-P4"]
+    assert [s["dilution"] for s in afternoon["unknowns"]] == [1.0] * 5 + [10.0]
 
 
 def test_refused_file_has_the_bytes_of_the_first(truth):
