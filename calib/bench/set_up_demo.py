@@ -23,7 +23,7 @@ from calib.bench.register import (
     list_lots,
     list_methods,
 )
-from calib.bench.show_run import list_runs
+from calib.bench.show_run import list_runs, show_run
 from calib.errors import DuplicateFile
 from calib.shipped import shipped
 
@@ -70,7 +70,7 @@ def set_up_demo(store: tables.Store, progress: Progress) -> DemoSeason:
     laboratory = tomllib.loads((folder / "laboratory.toml").read_text(encoding="utf-8"))
     _register(store, folder, laboratory)
     files = sorted((folder / "season").rglob("*.*"), key=_order_of_measurement)
-    known = {line.file for line in list_runs(store)}
+    known = {line.file: line.id for line in list_runs(store)}
     logged = present = 0
     refused: list[tuple[str, str]] = []
     rejected: list[tuple[str, str]] = []
@@ -79,6 +79,7 @@ def set_up_demo(store: tables.Store, progress: Progress) -> DemoSeason:
         progress(done, len(files), file.name)
         if file.name in known:
             present += 1
+            corrected.extend(_exclude(store, file.name, known[file.name], laboratory))
             continue
         try:
             records = log_plan(store, evaluate_plan(plan_file(store, file, LogOptions(by=KEEPER))))
@@ -147,9 +148,12 @@ def _register(store: tables.Store, folder: Path, laboratory: Mapping[str, Any]) 
 def _exclude(
     store: tables.Store, name: str, number: int, laboratory: Mapping[str, Any]
 ) -> Iterator[tuple[str, str]]:
-    """Exclusions a person of the laboratory decided on with an assignable cause."""
+    """Exclusions a person of the laboratory decided on with an assignable cause.
+
+    A run that was corrected since it was logged is left as it is.
+    """
     for exclusion in laboratory.get("exclusion", []):
-        if exclusion["file"] == name:
+        if exclusion["file"] == name and not show_run(store, number).curves_before:
             record = exclude_readings(
                 store, number, exclusion["readings"], reason=exclusion["reason"], by=exclusion["by"]
             )
