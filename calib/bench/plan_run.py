@@ -25,7 +25,6 @@ from calib.intake import (
     read_file,
 )
 
-
 SMALLEST, LARGEST = 1e-100, 1e100  # numbers beyond only overflow in a fit
 
 
