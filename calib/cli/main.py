@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import sys
 from importlib import import_module
+from io import TextIOWrapper
 
 import click
 
@@ -61,6 +62,10 @@ def cli(ctx: click.Context, store: str | None) -> None:
 
 def main() -> None:
     """Run the command line and leave with its exit code."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, TextIOWrapper):
+            # A sign the terminal does not know must not stop a command whose work is done.
+            stream.reconfigure(errors="replace")
     sys.exit(run(sys.argv[1:]))
 
 

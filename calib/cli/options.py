@@ -102,5 +102,5 @@ def moment(text: str | None, option: str = "--at") -> datetime | None:
 
 
 def echo_json(value: Any) -> None:
-    """Print JSON; NaN cannot occur in it."""
-    click.echo(json.dumps(value, indent=2, ensure_ascii=False, allow_nan=False))
+    """Print JSON, in ASCII so that no terminal or pipe can bend it; NaN cannot occur in it."""
+    click.echo(json.dumps(value, indent=2, allow_nan=False))

@@ -73,6 +73,21 @@ def test_a_reader_that_has_seen_enough_is_no_failure(worked, arguments):
     assert (process.returncode, process.stderr) == (0, b"")
 
 
+@pytest.mark.parametrize("encoding", ["ascii", "cp1252"])
+def test_a_terminal_that_lacks_a_sign_stops_nothing(worked, encoding):
+    for arguments, code in ((("run", "show", "2"), 0), (("run", "refit", "2", "--reason", "µ ≥ Ω"), 3)):
+        done = subprocess.run(
+            [*CALIB, "--store", str(worked.store), *arguments],
+            capture_output=True,
+            timeout=120,
+            check=False,
+            env={**os.environ, "CALIB_BY": "KM", "PYTHONIOENCODING": encoding},
+        )
+        assert (done.returncode, done.stderr) == (code, b"")
+    told = start("--store", worked.store, "run", "show", "2", "--json", PYTHONIOENCODING=encoding)
+    assert json.loads(told.stdout)["amendments"][-1]["reason"] == "µ ≥ Ω"
+
+
 LOOK = """
 import json, sys
 from calib.cli.main import run
