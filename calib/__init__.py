@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from calib.curves.diagnostics import Finding
     from calib.curves.fit import fit
     from calib.curves.noise import NoiseModel, assumed_noise
+    from calib.curves.stack import CurveStack, fit_stack
     from calib.errors import CalibError
     from calib.models import RESPONSE_MODELS, custom_model
     from calib.quantification.budget import Component
@@ -27,6 +28,7 @@ _HOME = {
     "CalibError": "calib.errors",
     "Component": "calib.quantification.budget",
     "Curve": "calib.curves.curve",
+    "CurveStack": "calib.curves.stack",
     "Finding": "calib.curves.diagnostics",
     "NoiseModel": "calib.curves.noise",
     "Quantity": "calib.quantification.inverse",
@@ -34,6 +36,7 @@ _HOME = {
     "assumed_noise": "calib.curves.noise",
     "custom_model": "calib.models",
     "fit": "calib.curves.fit",
+    "fit_stack": "calib.curves.stack",
     "Laboratory": "calib.bench.laboratory",
     "open_store": "calib.bench.laboratory",
     "precision_profile": "calib.quantification.range",
@@ -46,6 +49,7 @@ __all__ = [
     "CalibError",
     "Component",
     "Curve",
+    "CurveStack",
     "Finding",
     "Laboratory",
     "NoiseModel",
@@ -53,6 +57,7 @@ __all__ = [
     "assumed_noise",
     "custom_model",
     "fit",
+    "fit_stack",
     "open_store",
     "precision_profile",
     "working_range",

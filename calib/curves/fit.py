@@ -11,6 +11,7 @@ from scipy.special import chdtrc
 
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding, Information, findings_of, information
+from calib.curves.levels import collapsed, uncollapsed
 from calib.curves.noise import (
     GivenNoise,
     NoiseModel,
@@ -18,7 +19,8 @@ from calib.curves.noise import (
     UniformNoise,
     given_noise,
 )
-from calib.curves.solver import Problem, Solution, linear_start, solve
+from calib.curves.reweight import PASSES, SETTLED, solve_with_noise
+from calib.curves.solver import SOLVERS, Problem, Solution, solve, stack_of_one
 from calib.curves.standards import Standards, checked_standards, frozen
 from calib.curves.variance_function import ESTIMATED, estimate_variance_function
 from calib.errors import MethodError, ModelError
@@ -28,22 +30,23 @@ Array = NDArray[np.float64]
 Bounds = Mapping[str, tuple[float, float]]
 
 NOISE_NAMES = ("uniform", "relative", *ESTIMATED)
-GRID_STARTS = 3
-PASSES = 60
-SETTLED = 1e-11
 # One honest run in a thousand contradicts its own standard uncertainties.
 CONTRADICTED = 1e-3
 ONE_RUN = "estimated from this run"
 
 
 @dataclass(frozen=True, slots=True)
-class _Fitted:
-    """A solution together with the noise model it belongs to."""
+class Fitted:
+    """A solution together with the noise model it belongs to.
+
+    ``second`` holds the parameters of a second solution with nearly the same sum.
+    """
 
     solution: Solution
     noise: NoiseModel
     problem: Problem
     stable: bool
+    second: Array | None = None
 
 
 def fit(
@@ -102,16 +105,21 @@ def fit(
     chosen = response_model(model)
     standards = checked_standards(concentration, response, chosen)
     given = given_noise(u, relative_sd, standards.response.size)
-    requested = _requested_noise(noise, given)
-    problem = _problem(chosen, standards, fixed or {}, bounds or {}, start or {})
+    requested = requested_noise(noise, given)
+    problem = problem_of(chosen, standards, fixed or {}, bounds or {}, start or {})
     if standards.levels < int(problem.free.sum()):
-        return _unfitted(problem, standards, requested, solver)
-    starts = _starts(problem, standards, start or {})
-    fitted = _fit_with_noise(problem, requested, starts, solver)
-    return _curve(fitted, standards, solver)
+        return unfitted_curve(problem, standards, requested, solver)
+    if solver not in SOLVERS:
+        raise ModelError(f"unknown solver '{solver}'; known are {', '.join(SOLVERS)}")
+    if isinstance(requested, str):
+        fitted = _fit_estimating_noise(problem, requested, start or {}, solver)
+    else:
+        fitted = _fit_with_noise(problem, requested.bound_to(problem.y), start or {}, solver)
+    return curve_from(fitted, standards, solver)
 
 
-def _requested_noise(noise: str | NoiseModel, given: GivenNoise | None) -> str | NoiseModel:
+def requested_noise(noise: str | NoiseModel, given: GivenNoise | None) -> str | NoiseModel:
+    """Noise model asked for; a name stays a name where it is to be estimated."""
     if given is not None:
         if noise != "uniform":
             raise MethodError("u and relative_sd replace the noise model; leave noise at 'uniform'")
@@ -132,13 +140,14 @@ def _requested_noise(noise: str | NoiseModel, given: GivenNoise | None) -> str |
     raise MethodError(f"unknown noise model {noise!r}; known are {', '.join(NOISE_NAMES)}")
 
 
-def _problem(
+def problem_of(
     model: ResponseModel,
     standards: Standards,
     fixed: Mapping[str, float],
     bounds: Bounds,
     start: Mapping[str, float],
 ) -> Problem:
+    """Model, fixed values and bounds of a fit, checked against the model's parameters."""
     for what, names in (("fixed", fixed), ("bounds", bounds), ("start", start)):
         unknown = set(names) - set(model.names)
         if unknown:
@@ -195,81 +204,130 @@ def _bounds(model: ResponseModel, standards: Standards, bounds: Bounds) -> tuple
     return lower, upper
 
 
-def _starts(problem: Problem, standards: Standards, start: Mapping[str, float]) -> list[Array]:
-    """Start given, or else from the data and from the best cells of the model's grid."""
-    model = problem.model
-    missing = [n for n, f in zip(model.names, problem.free, strict=True) if f and n not in start]
-    if not missing:
+def _given(problem: Problem, start: Mapping[str, float]) -> dict[int, Array]:
+    """Start values by index of parameter."""
+    return {
+        problem.model.index(n): np.array([v])
+        for n, v in start.items()
+        if problem.free[problem.model.index(n)]
+    }
+
+
+def _starts(problem: Problem, start: Mapping[str, float]) -> list[Array]:
+    """Starts for the solvers that take one run at a time: given ones, else the stack's solution."""
+    given = _given(problem, start)
+    if len(given) == int(problem.free.sum()) or not problem.separable:
         p = problem.template.copy()
-        for name, value in start.items():
-            if problem.free[model.index(name)]:
-                p[model.index(name)] = value
+        missing = [n for i, n in enumerate(problem.model.names) if problem.free[i] and i not in given]
+        if missing:
+            problem.model.start(problem.x, problem.y)  # a formula of the user refuses in words
+        for i, value in given.items():
+            p[i] = value[0]
         return [p]
-    data = model.start(standards.concentration, standards.response)
-    for name, value in start.items():
-        data[model.index(name)] = value
-    data[~problem.free] = problem.template[~problem.free]
-    nonlinear = data[~model.linear][None, :]
-    cells = model.grid(standards.concentration)
-    return linear_start(problem, nonlinear, 1) + linear_start(problem, cells, GRID_STARTS) or [data]
+    levels = collapsed(problem.x, problem.y[:, None])
+    with np.errstate(all="ignore"):
+        data = problem.model.start(levels.x, levels.mean)[:, 0]
+    for i, value in given.items():
+        data[i] = value[0]
+    return [np.where(problem.free, data, problem.template)]
 
 
-def _fit_with_noise(
-    problem: Problem, requested: str | NoiseModel, starts: list[Array], solver: str
-) -> _Fitted:
-    if isinstance(requested, str):
-        return _fit_estimating_noise(problem, requested, starts, solver)
-    noise = requested.bound_to(problem.y)
+def _fit_with_noise(problem: Problem, noise: NoiseModel, start: Mapping[str, float], solver: str) -> Fitted:
+    """Solve one run under a noise model that is bound to its responses."""
+    if problem.separable and solver == "least-squares":
+        return _fit_through_stack(problem, noise, start)
+    starts = _starts(problem, start)
     if noise.follows_fit:
         first = solve(problem, starts, solver)
         return _follow(problem, noise, [first.parameters, *starts], solver)
-    weighted = _weighted(problem, noise, problem.y)
-    return _Fitted(solve(weighted, starts, solver), noise, weighted, stable=True)
+    weighted = weighted_problem(problem, noise, problem.y)
+    return Fitted(solve(weighted, starts, solver), noise, weighted, stable=True)
 
 
-def _fit_estimating_noise(problem: Problem, family: str, starts: list[Array], solver: str) -> _Fitted:
+def _fit_through_stack(problem: Problem, noise: NoiseModel, start: Mapping[str, float]) -> Fitted:
+    """One run is a stack of one."""
+    stack = stack_of_one(problem)
+    column = problem.y[:, None]
+    # Standard deviations given reading by reading forbid collapsing.
+    levels = uncollapsed(problem.x, column) if isinstance(noise, GivenNoise) else collapsed(problem.x, column)
+    sorted_noise = _sorted(noise, problem.x)
+    given = _given(problem, start)
+    starts: Array | dict[int, Array] = given
+    if len(given) == int(problem.free.sum()):
+        starts = _full_start(problem, given)
+    settled = solve_with_noise(stack, levels, sorted_noise, starts)
+    found = settled.found
+    parameters = found.parameters[:, 0]
+    mean = problem.model.response(problem.x, parameters)
+    weighted = weighted_problem(problem, noise, mean)
+    offset = float(found.tangent[0] / np.sqrt(found.total[0])) if found.total[0] > 0 else 0.0
+    solution = Solution(parameters, float(found.total[0]), bool(found.converged[0]), offset)
+    return Fitted(solution, noise, weighted, bool(settled.stable[0]), found.second.get(0))
+
+
+def _full_start(problem: Problem, given: Mapping[int, Array]) -> Array:
+    """All start values as a column; fixed parameters keep their value."""
+    p = problem.template.copy()
+    for i, values in given.items():
+        p[i] = values[0]
+    return p[:, None]
+
+
+def _sorted(noise: NoiseModel, x: Array) -> NoiseModel:
+    """Given standard deviations in the order of the sorted readings, a column of the stack."""
+    if not isinstance(noise, GivenNoise):
+        return noise
+    order = np.argsort(x, kind="stable")
+    return replace(noise, sd=np.asarray(noise.sd)[order, None])
+
+
+def _fit_estimating_noise(problem: Problem, family: str, start: Mapping[str, float], solver: str) -> Fitted:
     """Alternate between the curve and its variance function until both stand still."""
     noise: NoiseModel = PowerOfMeanNoise(1.4, ONE_RUN).bound_to(problem.y)
-    fitted = _fit_with_noise(problem, noise, starts, solver)
+    fitted = _fit_with_noise(problem, noise, start, solver)
     for _ in range(PASSES):
         before = noise.variance(problem.y, problem.x)
         noise = _estimated(fitted, family)
-        fitted = _follow(problem, noise, [fitted.solution.parameters], solver)
+        here = dict(zip(problem.model.names, fitted.solution.parameters.tolist(), strict=True))
+        second = fitted.second
+        fitted = replace(_fit_with_noise(problem, noise, here, solver), second=second)
         after = noise.variance(problem.y, problem.x)
         # Only the shape counts: a common factor is taken up by the scale.
         shape = np.log(after / before)
         if np.ptp(shape) < 1e-6:
             return fitted
-    return _Fitted(fitted.solution, fitted.noise, fitted.problem, stable=False)
+    return replace(fitted, stable=False)
 
 
-def _estimated(fitted: _Fitted, family: str) -> NoiseModel:
+def _estimated(fitted: Fitted, family: str) -> NoiseModel:
     mean = fitted.problem.model.response(fitted.problem.x, fitted.solution.parameters)
     leverage = information(fitted.problem, fitted.solution.parameters).leverage
     return estimate_variance_function(family, fitted.problem.y - mean, mean, leverage, ONE_RUN)
 
 
-def _follow(problem: Problem, noise: NoiseModel, starts: list[Array], solver: str) -> _Fitted:
+def _follow(problem: Problem, noise: NoiseModel, starts: list[Array], solver: str) -> Fitted:
     """Refit with weights at the fitted means until the means stand still."""
     mean = problem.model.response(problem.x, starts[0])
     candidates = starts
     size = float(np.max(np.abs(problem.y))) or 1.0
     for _ in range(PASSES):
-        weighted = _weighted(problem, noise, mean)
+        weighted = weighted_problem(problem, noise, mean)
         solution = solve(weighted, candidates, solver)
         fitted = problem.model.response(problem.x, solution.parameters)
         moved = float(np.max(np.abs(fitted - mean)))
         mean, candidates = fitted, [solution.parameters]
         if not moved > SETTLED * size:
-            return _Fitted(solution, noise, weighted, stable=True)
-    return _Fitted(solution, noise, weighted, stable=False)
+            return Fitted(solution, noise, weighted, stable=True)
+    return Fitted(solution, noise, weighted, stable=False)
 
 
-def _weighted(problem: Problem, noise: NoiseModel, mean: Array) -> Problem:
+def weighted_problem(problem: Problem, noise: NoiseModel, mean: Array) -> Problem:
+    """The same problem with weights at fitted means."""
     return replace(problem, root_weight=1.0 / np.sqrt(noise.at_standards(mean, problem.x)))
 
 
-def _curve(fitted: _Fitted, standards: Standards, solver: str) -> Curve:
+def curve_from(fitted: Fitted, standards: Standards, solver: str) -> Curve:
+    """The frozen curve of one run."""
     problem, solution = fitted.problem, fitted.solution
     nu = standards.response.size - int(problem.free.sum())
     mean = problem.model.response(problem.x, solution.parameters)
@@ -295,7 +353,12 @@ def _curve(fitted: _Fitted, standards: Standards, solver: str) -> Curve:
         determined=info.determined,
         aicc=_aicc(solution.weighted_sum, standards.response.size, int(problem.free.sum())),
         converged=solution.converged and fitted.stable,
-        findings=findings + _noise_findings(noise) + _contradicted(noise, solution.weighted_sum, nu),
+        findings=(
+            *findings,
+            *_noise_findings(noise),
+            *_contradicted(noise, solution.weighted_sum, nu),
+            *_second_solution(fitted),
+        ),
         solver=solver,
     )
 
@@ -314,6 +377,19 @@ def _noise_findings(noise: NoiseModel) -> tuple[Finding, ...]:
         Finding(
             "variance-from-one-run",
             "variance function from 1 run: nominal 95 % intervals cover about 89–95 %",
+        ),
+    )
+
+
+def _second_solution(fitted: Fitted) -> tuple[Finding, ...]:
+    if fitted.second is None:
+        return ()
+    pairs = zip(fitted.problem.model.names, fitted.second, strict=True)
+    return (
+        Finding(
+            "two-solutions",
+            "a second curve fits nearly as well and reads the standards back differently "
+            f"({', '.join(f'{n} {v:.4g}' for n, v in pairs)}); add levels or fix a parameter",
         ),
     )
 
@@ -349,13 +425,20 @@ def _aicc(weighted_sum: float, n: int, free: int) -> float:
     return float(n * np.log(weighted_sum / n) + 2 * k + 2 * k * (k + 1) / (n - k - 1))
 
 
-def _unfitted(problem: Problem, standards: Standards, requested: str | NoiseModel, solver: str) -> Curve:
+def unfitted_curve(
+    problem: Problem,
+    standards: Standards,
+    requested: str | NoiseModel,
+    solver: str,
+    finding: Finding | None = None,
+) -> Curve:
     """A curve that could not be fitted, with the reason as its finding."""
     k, count = len(problem.model.names), int(problem.free.sum())
     message = (
         f"{standards.levels} distinct level(s) for {count} free parameters of model "
         f"'{problem.model.name}'; measure at least {count} levels"
     )
+    unbound = standards.response.size == 0
     return Curve(
         response_model=problem.model,
         values=frozen(np.where(problem.free, np.nan, problem.template)),
@@ -363,7 +446,9 @@ def _unfitted(problem: Problem, standards: Standards, requested: str | NoiseMode
         lower=frozen(problem.lower),
         upper=frozen(problem.upper),
         covariance=frozen(np.full((k, k), np.nan)),
-        noise=UniformNoise() if isinstance(requested, str) else requested.bound_to(standards.response),
+        noise=UniformNoise()
+        if unbound or isinstance(requested, str)
+        else requested.bound_to(standards.response),
         standards=standards,
         residual_sum=np.nan,
         degrees_of_freedom=max(standards.response.size - count, 0),
@@ -373,6 +458,6 @@ def _unfitted(problem: Problem, standards: Standards, requested: str | NoiseMode
         aicc=np.nan,
         determined=~problem.free,
         converged=False,
-        findings=(Finding("too-few-levels", message),),
+        findings=(finding or Finding("too-few-levels", message),),
         solver=solver,
     )

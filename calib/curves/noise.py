@@ -58,7 +58,7 @@ class NoiseModel(ABC):
         return self.variance(mean, concentration)
 
     def bound_to(self, response: Array) -> NoiseModel:
-        """The same model with what it needs of this run's responses."""
+        """The same model with what it needs of the responses of a run (n,), or of R runs (n, R)."""
         return self
 
     def after_fit(self, mean: Array) -> NoiseModel:
@@ -93,16 +93,20 @@ class UniformNoise(NoiseModel):
 
 @dataclass(frozen=True, slots=True)
 class PowerOfMeanNoise(NoiseModel):
-    """Variance proportional to |mean|^exponent; exponent 2 is a constant CV."""
+    """Variance proportional to |mean|^exponent; exponent 2 is a constant CV.
+
+    In a stack the floor is an array, one for each run.
+    """
 
     exponent: float
     origin: str = "assumed"
-    floor: float | None = None
+    floor: float | Array | None = None
     kind: ClassVar[str] = "power-of-mean"
 
     def variance(self, mean: Array, concentration: Array) -> Array:
         """|mean|^exponent, not below the floor."""
-        size = np.maximum(np.abs(mean), self.floor or np.finfo(float).tiny)
+        floor = np.finfo(float).tiny if self.floor is None else self.floor
+        size = np.maximum(np.abs(mean), floor)
         return np.asarray(size**self.exponent, dtype=np.float64)
 
     def bound_to(self, response: Array) -> NoiseModel:
@@ -188,7 +192,7 @@ class GivenNoise(NoiseModel):
     response, beyond them the nearest one holds.
     """
 
-    sd: tuple[float, ...]
+    sd: tuple[float, ...] | Array
     known: bool
     mean: tuple[float, ...] = ()
     kind: ClassVar[str] = "given"
@@ -229,10 +233,15 @@ class GivenNoise(NoiseModel):
         return {"kind": self.kind, "sd": list(self.sd), "known": self.known, "mean": list(self.mean)}
 
 
-def response_floor(response: Array) -> float:
-    """Smallest mean a power is taken of, from the range of the responses."""
-    span = float(np.ptp(response))
-    return FLOOR_SHARE * span if span > 0 else max(float(np.max(np.abs(response))), 1.0) * FLOOR_SHARE
+def response_floor(response: Array) -> float | Array:
+    """Smallest mean a power is taken of, from the range of the responses; nan is absent."""
+    absent = np.isnan(response)
+    span = np.max(np.where(absent, -np.inf, response), axis=0) - np.min(
+        np.where(absent, np.inf, response), axis=0
+    )
+    size = np.max(np.where(absent, 0.0, np.abs(response)), axis=0)
+    floor = FLOOR_SHARE * np.where(span > 0, span, np.maximum(size, 1.0))
+    return float(floor) if response.ndim == 1 else floor
 
 
 def assumed_noise(of: str, exponent: float = 2.0) -> NoiseModel:

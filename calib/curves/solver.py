@@ -1,9 +1,8 @@
-"""Weighted nonlinear least squares for one run.
+"""One run as a problem, and the solvers that take one run at a time.
 
-Everything the rest of calib knows of solving is `solve`: a problem goes in, a
-solution comes out. Built-in models go through the stacked solver, formulas of the user
-through a general one. Positive parameters are solved in their logarithm, and residuals
-are scaled to order one.
+Built-in models go through the stacked solver (`reweight`, `search`, `stack_solver`);
+formulas of the user and the simplex come here. Positive parameters are solved in their
+logarithm, and residuals are scaled to order one.
 """
 
 from __future__ import annotations
@@ -13,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from calib.curves.stack_solver import Stack, solve_stack
+from calib.curves.stack_solver import Stack
 from calib.errors import ModelError
 from calib.models import ResponseModel
 
@@ -150,8 +149,6 @@ def solve(problem: Problem, starts: list[Array], solver: str) -> Solution:
         from calib.curves.simplex import simplex
 
         found = [simplex(problem, c) for c in inside]
-    elif problem.separable:
-        return _described(problem, _best_of_stack(problem, inside))
     else:
         from calib.curves.general_solver import general_least_squares
 
@@ -160,66 +157,19 @@ def solve(problem: Problem, starts: list[Array], solver: str) -> Solution:
     return min(described, key=lambda s: (not np.isfinite(s.weighted_sum), s.weighted_sum))
 
 
-def _best_of_stack(problem: Problem, starts: list[Array]) -> Array:
-    """Solver coordinates of the best solution; several starts are a stack of the same run."""
-    count = len(starts)
-    scaled = problem.root_weight / problem.scale
-    stack = Stack(
+def stack_of_one(problem: Problem) -> Stack:
+    """Model, fixed values, bounds and raw readings of one run as a stack."""
+    return Stack(
         model=problem.model,
         x=problem.x[:, None],
-        y=np.repeat(problem.y[:, None], count, axis=1),
-        root_weight=scaled[:, None],
-        pure=np.zeros(count),
+        y=problem.y[:, None],
+        root_weight=problem.root_weight[:, None],
+        pure=np.zeros(1),
         template=problem.template,
         free=problem.free,
         lower=problem.lower[:, None],
         upper=problem.upper[:, None],
     )
-    found = solve_stack(stack, np.stack([problem.parameters(c) for c in starts], axis=1))
-    return problem.coordinates(found.parameters[:, int(np.argmin(found.total))])
-
-
-def linear_start(problem: Problem, cells: Array, keep: int) -> list[Array]:
-    """Best grid cells, their linear parameters solved in closed form.
-
-    Parameters
-    ----------
-    problem : Problem
-    cells : (cells, q) array
-        Values of the q parameters that are not linear.
-    keep : int
-        How many of the best to return, as full parameter vectors.
-    """
-    linear = problem.model.linear & problem.free
-    if not cells.shape[0]:
-        return []
-    p = _cell_parameters(problem, cells)
-    columns = [v[:, None] for v in p.T]
-    with np.errstate(all="ignore"):
-        rest = (problem.y - problem.model.response(problem.x, columns)) * problem.root_weight
-        basis = problem.model.gradient(problem.x, columns)[..., linear] * problem.root_weight[:, None]
-    basis = np.broadcast_to(basis, (cells.shape[0], *basis.shape[-2:]))
-    rest = np.broadcast_to(rest, basis.shape[:2])
-    usable = np.all(np.isfinite(basis), axis=(1, 2)) & np.all(np.isfinite(rest), axis=1)
-    if not usable.any():
-        return []
-    p, basis, rest = p[usable], basis[usable], rest[usable]
-    orthogonal = np.linalg.qr(basis)[0] if linear.any() else basis
-    explained = np.einsum("cnl,cn->cl", orthogonal, rest)
-    left = np.einsum("cn,cn->c", rest, rest) - np.einsum("cl,cl->c", explained, explained)
-    best = np.argsort(left, kind="stable")[:keep]
-    for i in best:
-        p[i, linear] = np.linalg.lstsq(basis[i], rest[i], rcond=None)[0]
-    return [p[i] for i in best]
-
-
-def _cell_parameters(problem: Problem, cells: Array) -> Array:
-    """Full vectors (cells, k): the cell's values, fixed values, linear ones at zero."""
-    p = np.tile(problem.template, (cells.shape[0], 1))
-    p[:, ~problem.model.linear] = cells
-    p[:, ~problem.free] = problem.template[~problem.free]
-    p[:, problem.model.linear & problem.free] = 0.0
-    return p
 
 
 def _inside(problem: Problem, start: Array) -> Array:

@@ -14,8 +14,10 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
+    ends,
     half_response,
     positive_range,
+    rows_of,
 )
 
 
@@ -59,7 +61,8 @@ class FirstOrder(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Rate from the half-way concentration; the rest follows in closed form."""
-        return np.array([y[np.argmin(x)], np.ptp(y) * 1.2, np.log(2.0) / half_response(x, y)])
+        low_end, high_end = ends(y)
+        return rows_of(low_end, 1.2 * (high_end - low_end), np.log(2.0) / half_response(x, y))
 
     def grid(self, x: Array) -> Array:
         """Rates from nearly a line to a plateau reached at the lowest standard."""

@@ -15,8 +15,10 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
+    ends,
     half_response,
     positive_range,
+    rows_of,
 )
 
 
@@ -91,7 +93,8 @@ class FiveParameterLogistic(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Logit regression between plateaus set just outside the readings."""
-        return np.append(_logit_start(x, y), 1.0)
+        start = _logit_start(x, y)
+        return np.vstack([start, np.ones(start.shape[1])])
 
     def grid(self, x: Array) -> Array:
         """Midpoint, slope and asymmetry on a coarse lattice around the standards."""
@@ -127,18 +130,22 @@ def _lattice(*axes: Array) -> Array:
 
 
 def _logit_start(x: Array, y: Array) -> Array:
-    """Zero, infinite, midpoint and slope; the linearised form serves as a start only."""
-    low_end, high_end = y[x == x.min()].mean(), y[x == x.max()].mean()
+    """Zero, infinite, midpoint and slope (4, R); the linearised form serves as a start only."""
+    low_end, high_end = ends(y)
     margin = 0.05 * (high_end - low_end)
     zero, infinite = low_end - margin, high_end + margin
-    inside = x > 0
-    span = infinite - zero
-    if span == 0 or np.unique(x[inside]).size < 2:
-        return np.array([zero, infinite, half_response(x, y), 1.0])
-    share = np.clip((y[inside] - zero) / span, 0.01, 0.99)
-    logit, log_x = np.log(share / (1.0 - share)), np.log(x[inside])
-    slope = float(np.polyfit(log_x, logit, 1)[0])
-    if slope <= 0.05:
-        return np.array([zero, infinite, half_response(x, y), 1.0])
-    midpoint = float(np.exp(log_x.mean() - logit.mean() / slope))
-    return np.array([zero, infinite, midpoint, min(slope, 20.0)])
+    span = np.where(infinite != zero, infinite - zero, 1.0)
+    used = np.isfinite(y) & (x > 0)
+    share = np.clip(np.where(used, (y - zero) / span, 0.5), 0.01, 0.99)
+    logit = np.log(share / (1.0 - share))
+    log_x = np.broadcast_to(np.log(np.where(x > 0, x, 1.0)), y.shape)
+    count = np.maximum(used.sum(axis=0), 1)
+    mean_x = np.where(used, log_x, 0.0).sum(axis=0) / count
+    mean_logit = np.where(used, logit, 0.0).sum(axis=0) / count
+    across = np.where(used, log_x - mean_x, 0.0)
+    spread = np.sum(across**2, axis=0)
+    slope = np.sum(across * (logit - mean_logit), axis=0) / np.where(spread > 0, spread, 1.0)
+    usable = (slope > 0.05) & (infinite != zero)
+    steep = np.where(usable, np.minimum(slope, 20.0), 1.0)
+    middle = np.where(usable, np.exp(mean_x - mean_logit / steep), half_response(x, y))
+    return rows_of(zero, infinite, middle, steep)

@@ -14,6 +14,8 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
+    ends,
+    rows_of,
 )
 
 
@@ -57,7 +59,8 @@ class PowerLaw(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Exponent 1: the other two follow in closed form."""
-        return np.array([y.min(), np.ptp(y), 1.0])
+        low_end, high_end = ends(y)
+        return rows_of(low_end, high_end - low_end, 1.0)
 
     def grid(self, x: Array) -> Array:
         """Exponents from strongly bent down to strongly bent up."""

@@ -35,7 +35,7 @@ class Proportional(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Any start will do: the slope is solved in closed form."""
-        return np.array([0.0])
+        return np.zeros((1, y.shape[1]))
 
     def grid(self, x: Array) -> Array:
         """Nothing to search."""

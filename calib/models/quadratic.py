@@ -52,7 +52,7 @@ class Quadratic(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Any start will do: the coefficients are solved in closed form."""
-        return np.array([y.mean(), 0.0, 0.0])
+        return np.zeros((3, y.shape[1]))
 
     def grid(self, x: Array) -> Array:
         """Nothing to search."""

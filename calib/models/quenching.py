@@ -14,8 +14,10 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
+    ends,
     half_response,
     positive_range,
+    rows_of,
 )
 
 
@@ -64,7 +66,7 @@ class Quenching(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Constant from the half-way concentration; the rest follows in closed form."""
-        return np.array([0.0, y[np.argmin(x)], 1.0 / half_response(x, y)])
+        return rows_of(0.0, ends(y)[0], 1.0 / half_response(x, y))
 
     def grid(self, x: Array) -> Array:
         """Constants from hardly quenched to quenched at the lowest standard."""

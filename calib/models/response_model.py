@@ -97,7 +97,11 @@ class ResponseModel(ABC):
 
     @abstractmethod
     def start(self, x: Array, y: Array) -> Array:
-        """Data-driven start values (k,) from standards x (n,), y (n,)."""
+        """Data-driven start values (k, R) of R runs.
+
+        ``x`` (n, 1) or (n, R) rises along the first axis; ``y`` (n, R) is nan where a
+        reading is absent.
+        """
 
     @abstractmethod
     def grid(self, x: Array) -> Array:
@@ -153,14 +157,33 @@ def positive_range(x: Array) -> tuple[float, float]:
     return (float(above.min()), float(above.max())) if above.size else (1.0, 1.0)
 
 
-def half_response(x: Array, y: Array) -> float:
-    """Concentration at which the standards are half-way between their ends."""
-    order = np.argsort(x, kind="stable")
-    xs, first = np.unique(x[order], return_index=True)
-    means = np.add.reduceat(y[order], first) / np.diff(np.append(first, x.size))
-    middle = 0.5 * (means[0] + means[-1])
-    rising = means[-1] >= means[0]
-    ordered = np.maximum.accumulate(means if rising else -means)
-    guess = float(np.interp(middle if rising else -middle, ordered, xs))
-    low, high = positive_range(x)
-    return min(max(guess, low), high)
+def ends(y: Array) -> tuple[Array, Array]:
+    """First and last response present in each run (R,)."""
+    present = np.isfinite(y)
+    rows = np.arange(y.shape[1])
+    first = present.argmax(axis=0)
+    last = y.shape[0] - 1 - present[::-1].argmax(axis=0)
+    return y[first, rows], y[last, rows]
+
+
+def half_response(x: Array, y: Array) -> Array:
+    """Concentration at which each run is half-way between its ends (R,), above zero."""
+    low_end, high_end = ends(y)
+    sign = np.where(high_end >= low_end, 1.0, -1.0)
+    height = np.fmax.accumulate(sign * (y - 0.5 * (low_end + high_end)), axis=0)
+    rows = np.arange(y.shape[1])
+    after = np.clip((height >= 0).argmax(axis=0), 1, y.shape[0] - 1)
+    levels = np.broadcast_to(x, y.shape)
+    x0, x1 = levels[after - 1, rows], levels[after, rows]
+    y0, y1 = height[after - 1, rows], height[after, rows]
+    with np.errstate(divide="ignore", invalid="ignore"):
+        share = np.where(y1 > y0, np.clip(-y0 / (y1 - y0), 0.0, 1.0), 0.5)
+    guess = x0 + np.where(np.isfinite(share), share, 0.5) * (x1 - x0)
+    high = levels.max(axis=0)
+    low = np.min(np.where(levels > 0, levels, high), axis=0)
+    return as_array(np.clip(np.where(np.isfinite(guess), guess, low), low, high))
+
+
+def rows_of(*values: Array | float) -> Array:
+    """Stack start values of the parameters: (k, R)."""
+    return np.array(np.broadcast_arrays(*values), dtype=np.float64)

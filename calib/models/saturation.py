@@ -14,8 +14,10 @@ from calib.models.response_model import (
     Parameters,
     ResponseModel,
     as_array,
+    ends,
     half_response,
     positive_range,
+    rows_of,
 )
 
 
@@ -60,7 +62,8 @@ class Saturation(ResponseModel):
 
     def start(self, x: Array, y: Array) -> Array:
         """Half where the standards are half-way; the rest follows in closed form."""
-        return np.array([y[np.argmin(x)], np.ptp(y) * 1.5, half_response(x, y)])
+        low_end, high_end = ends(y)
+        return rows_of(low_end, 1.5 * (high_end - low_end), half_response(x, y))
 
     def grid(self, x: Array) -> Array:
         """Half from well below the lowest to far above the highest standard."""

@@ -138,7 +138,7 @@ def test_start_is_finite_and_inside_the_bounds(
     model = MODELS[name]
     x = np.array([0.0, 0.1, 0.5, 1.0, 5.0, 20.0])
     y = response_scale * (3.0 + direction * x / (2.0 + x))
-    start = model.start(x * concentration_scale, y)
+    start = model.start(x[:, None] * concentration_scale, y[:, None])[:, 0]
     lower, upper = model.bounds(x * concentration_scale)
     assert start.shape == (len(model.names),)
     assert np.isfinite(start).all()

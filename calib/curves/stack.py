@@ -1,0 +1,394 @@
+"""Many runs fitted at once: a year of runs, or a hundred thousand simulations."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from calib.curves.curve import Curve
+from calib.curves.diagnostics import Finding
+from calib.curves.fit import (
+    Bounds,
+    Fitted,
+    curve_from,
+    fit,
+    problem_of,
+    requested_noise,
+    unfitted_curve,
+    weighted_problem,
+)
+from calib.curves.levels import Levels, collapsed, uncollapsed
+from calib.curves.noise import GivenNoise, NoiseModel, given_noise
+from calib.curves.reweight import Settled, solve_with_noise
+from calib.curves.search import Found
+from calib.curves.solver import Problem, Solution, stack_of_one
+from calib.curves.stack_solver import Stack
+from calib.curves.standards import Standards, frozen
+from calib.errors import InputError
+from calib.models import CustomModel, ResponseModel, response_model
+
+Array = NDArray[np.float64]
+Mask = NDArray[np.bool_]
+
+OK = "ok"
+TOO_FEW_LEVELS = "too-few-levels"
+NOT_FINITE = "not-finite"
+# Covariances are inverted in blocks, so that memory stays flat.
+BLOCK = 4096
+
+
+@dataclass(frozen=True, slots=True)
+class CurveStack(Sequence[Curve]):
+    """Result of `fit_stack`; ``stack[i]`` is the `Curve` of run i.
+
+    Attributes
+    ----------
+    parameter_names : tuple of str
+    parameters : (runs, k) array
+        nan where a run could not be fitted.
+    covariance : (runs, k, k) array
+        Zero for fixed parameters; nan without residual degrees of freedom.
+    residual_sum : (runs,) array
+        Weighted sum of squared residuals.
+    degrees_of_freedom : (runs,) int array
+    converged : (runs,) bool array
+    status : tuple of str
+        'ok', 'too-few-levels' or 'not-finite' for each run.
+    """
+
+    parameter_names: tuple[str, ...]
+    parameters: Array
+    covariance: Array
+    residual_sum: Array
+    degrees_of_freedom: NDArray[np.intp]
+    converged: Mask
+    status: tuple[str, ...]
+    _problem: Problem
+    _noise: str | NoiseModel
+    _concentration: Array
+    _response: Array
+    _stable: Mask
+    _tangent: Array
+    _second: Mapping[int, Array]
+    _curves: Mapping[int, Curve]
+
+    @property
+    def residual_sd(self) -> Array:
+        """Square root of residual_sum over degrees of freedom (runs,); nan without any."""
+        nu = self.degrees_of_freedom
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.where(nu > 0, np.sqrt(self.residual_sum / nu), np.nan)
+
+    def __len__(self) -> int:
+        return int(self.parameters.shape[0])
+
+    def __getitem__(self, i: int) -> Curve:  # type: ignore[override]
+        if not -len(self) <= i < len(self):
+            raise IndexError(f"run {i} of a stack of {len(self)}")
+        i %= len(self)
+        if i in self._curves:
+            return self._curves[i]
+        standards = self._standards(i)
+        problem = replace(
+            self._problem,
+            x=standards.concentration,
+            y=standards.response,
+            root_weight=np.ones(standards.response.size),
+        )
+        if self.status[i] == NOT_FINITE:
+            finding = Finding(
+                NOT_FINITE, "a response of this run is infinite; leave it out (nan) or correct it"
+            )
+            return unfitted_curve(problem, standards, self._noise, "least-squares", finding)
+        if self.status[i] != OK:
+            return unfitted_curve(problem, standards, self._noise, "least-squares")
+        return self._curve(i, problem, standards)
+
+    def _standards(self, i: int) -> Standards:
+        y = self._response[:, i]
+        present = np.isfinite(y)
+        x = self._concentration if self._concentration.ndim == 1 else self._concentration[:, i]
+        return Standards(frozen(x[present]), frozen(y[present]))
+
+    def _curve(self, i: int, problem: Problem, standards: Standards) -> Curve:
+        assert isinstance(self._noise, NoiseModel)
+        noise = self._noise
+        if isinstance(noise, GivenNoise):
+            noise = replace(noise, sd=tuple(np.asarray(noise.sd)[np.isfinite(self._response[:, i])]))
+        noise = noise.bound_to(standards.response)
+        parameters = self.parameters[i]
+        total = float(self.residual_sum[i])
+        offset = float(self._tangent[i] / np.sqrt(total)) if total > 0 else 0.0
+        solution = Solution(parameters, total, bool(self.converged[i]), offset)
+        weighted = weighted_problem(problem, noise, problem.model.response(problem.x, parameters))
+        fitted = Fitted(solution, noise, weighted, bool(self._stable[i]), self._second.get(i))
+        return curve_from(fitted, standards, "least-squares")
+
+
+def fit_stack(
+    concentration: ArrayLike,
+    response: ArrayLike,
+    model: str | ResponseModel = "4PL",
+    *,
+    noise: str | NoiseModel = "uniform",
+    u: ArrayLike | None = None,
+    relative_sd: ArrayLike | None = None,
+    fixed: Mapping[str, float] | None = None,
+    bounds: Bounds | None = None,
+    start: Mapping[str, ArrayLike] | None = None,
+) -> CurveStack:
+    """Fit the same model to many runs at once.
+
+    Parameters
+    ----------
+    concentration : (n,) or (runs, n) array
+        Levels, shared by all runs or given for each.
+    response : (runs, n) array
+        nan marks an absent reading.
+    model, noise, u, relative_sd, fixed, bounds
+        As in `calib.fit`; ``u`` and ``relative_sd`` are (n,), shared by all runs.
+    start : mapping, optional
+        Start values by name, one number or one for each run.
+
+    Returns
+    -------
+    CurveStack
+        A run that cannot be fitted has its status and finding, and leaves the others alone.
+
+    Raises
+    ------
+    InputError, ModelError, MethodError
+        For input that cannot be used at all.
+
+    Examples
+    --------
+    >>> import numpy as np, calib
+    >>> x = np.array([1.0, 2.0, 4.0, 8.0, 16.0])
+    >>> runs = np.array([[10, 18, 30, 45, 58], [11, 19, 32, 47, 61]])
+    >>> stack = calib.fit_stack(x, runs, model="saturation", fixed={"offset": 0.0})
+    >>> len(stack), bool(stack.converged.all())
+    (2, True)
+    """
+    chosen = response_model(model)
+    x, y = _arrays(concentration, response, chosen)
+    requested = requested_noise(noise, given_noise(u, relative_sd, y.shape[0]))
+    template = Standards(x.max(axis=1) if x.ndim == 2 else x, np.zeros(x.shape[0]))
+    starts = {name: _per_run(name, values, y.shape[1]) for name, values in (start or {}).items()}
+    scalar = {name: float(values[0]) for name, values in starts.items()}
+    problem = problem_of(chosen, template, fixed or {}, bounds or {}, scalar)
+    status = _statuses(x, y, int(problem.free.sum()))
+    usable = np.flatnonzero([s == OK for s in status])
+    if isinstance(requested, str) or isinstance(chosen, CustomModel):
+        return _one_by_one(problem, x, y, requested, usable, status, fixed, bounds, starts)
+    kept = np.where(np.isinf(y), np.nan, y)
+    levels, bound = _levels(x, kept[:, usable], requested)
+    stack = stack_of_one(problem)
+    if x.ndim == 2:
+        stack = _own_bounds(stack, problem, x[:, usable])
+    given = {
+        problem.model.index(n): v[usable] for n, v in starts.items() if problem.free[problem.model.index(n)]
+    }
+    settled = solve_with_noise(stack, levels, bound, _starts(problem, given, usable.size))
+    return _assembled(problem, requested, x, kept, levels, bound, settled, usable, status)
+
+
+def _arrays(concentration: ArrayLike, response: ArrayLike, model: ResponseModel) -> tuple[Array, Array]:
+    """Concentrations (n,) or (n, runs) and responses (n, runs), runs last."""
+    x, y = np.asarray(concentration, dtype=np.float64), np.asarray(response, dtype=np.float64)
+    if y.ndim != 2 or y.size == 0:
+        raise InputError(f"response must be (runs, readings), got shape {y.shape}")
+    if x.shape not in ((y.shape[1],), y.shape):
+        raise InputError(
+            f"concentration has shape {x.shape} for responses of shape {y.shape}; give (n,) or (runs, n)"
+        )
+    if not np.all(np.isfinite(x)):
+        raise InputError("a concentration is not finite; mark an absent reading by a response of nan")
+    if model.logarithmic and np.any(x < 0):
+        raise InputError(f"a concentration is negative; model '{model.name}' lives on x >= 0")
+    return (np.ascontiguousarray(x.T) if x.ndim == 2 else x), np.ascontiguousarray(y.T)
+
+
+def _per_run(name: str, values: ArrayLike, runs: int) -> Array:
+    array = np.asarray(values, dtype=np.float64)
+    if array.shape not in ((), (runs,)):
+        raise InputError(
+            f"start of {name} has shape {array.shape}; give one number or one for each of {runs} runs"
+        )
+    return np.broadcast_to(array, (runs,)).copy()
+
+
+def _statuses(x: Array, y: Array, needed: int) -> tuple[str, ...]:
+    present = ~np.isnan(y)
+    if x.ndim == 1:
+        _, place = np.unique(x, return_inverse=True)
+        seen = np.zeros((place.max() + 1, y.shape[1]), dtype=bool)
+        np.logical_or.at(seen, place, present)
+        levels = seen.sum(axis=0)
+    else:
+        levels = np.array([np.unique(x[present[:, i], i]).size for i in range(y.shape[1])])
+    infinite = np.isinf(y).any(axis=0)
+    return tuple(np.select([infinite, levels < needed], [NOT_FINITE, TOO_FEW_LEVELS], OK).tolist())
+
+
+def _levels(x: Array, y: Array, noise: NoiseModel) -> tuple[Levels, NoiseModel]:
+    """Levels of the runs and the noise model bound to them."""
+    if isinstance(noise, GivenNoise):
+        order = np.argsort(x, axis=0, kind="stable")
+        sd = np.asarray(noise.sd)[order]
+        return uncollapsed(x, y), replace(noise, sd=sd if sd.ndim == 2 else sd[:, None])
+    levels = collapsed(x, y) if x.ndim == 1 else uncollapsed(x, y)
+    return levels, noise.bound_to(y)
+
+
+def _own_bounds(stack: Stack, problem: Problem, x: Array) -> Stack:
+    """Sanity bounds follow each run's own concentrations; requested ones hold for all."""
+    pairs = [problem.model.bounds(x[:, i]) for i in range(x.shape[1])]
+    lower, upper = (np.stack([p[k] for p in pairs], axis=1) for k in (0, 1))
+    asked = problem.given_bounds[:, None]
+    return replace(
+        stack,
+        lower=np.where(asked, problem.lower[:, None], lower),
+        upper=np.where(asked, problem.upper[:, None], upper),
+    )
+
+
+def _starts(problem: Problem, given: dict[int, Array], runs: int) -> Array | dict[int, Array]:
+    if len(given) < int(problem.free.sum()):
+        return given
+    starts = np.repeat(problem.template[:, None], runs, axis=1)
+    for i, values in given.items():
+        starts[i] = values
+    return starts
+
+
+def _assembled(
+    problem: Problem,
+    requested: NoiseModel,
+    x: Array,
+    y: Array,
+    levels: Levels,
+    bound: NoiseModel,
+    settled: Settled,
+    usable: NDArray[np.intp],
+    status: tuple[str, ...],
+) -> CurveStack:
+    found = settled.found
+    runs, k, free = y.shape[1], problem.free.size, int(problem.free.sum())
+    nu = np.maximum(np.isfinite(y).sum(axis=0) - free, 0)
+    parameters = np.full((runs, k), np.nan)
+    parameters[:, ~problem.free] = problem.template[~problem.free]
+    parameters[usable] = found.parameters.T
+    total = np.full(runs, np.nan)
+    total[usable] = found.total
+    covariance = np.full((runs, k, k), np.nan)
+    inverse = _inverses(problem, levels, bound, found)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        known = bound.known_scale
+        scale = np.ones(usable.size) if known else np.where(nu[usable] > 0, found.total / nu[usable], np.nan)
+    covariance[usable] = inverse * scale[:, None, None]
+    converged, stable = np.zeros(runs, dtype=bool), np.zeros(runs, dtype=bool)
+    converged[usable], stable[usable] = found.converged & settled.stable, settled.stable
+    tangent = np.full(runs, np.nan)
+    tangent[usable] = found.tangent
+    second = {int(usable[i]): p for i, p in found.second.items()}
+    return CurveStack(
+        problem.model.names, parameters, covariance, total, nu, converged, status,
+        problem, requested, x, y, stable, tangent, second, {},
+    )  # fmt: skip
+
+
+def _inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) -> Array:
+    """Inverse of J'WJ (R, k, k) for every run, zero for fixed parameters."""
+    k = problem.free.size
+    inverse = np.zeros((levels.runs, k, k))
+    for i in range(0, levels.runs, BLOCK):
+        part = np.arange(i, min(i + BLOCK, levels.runs))
+        inverse[part] = _inverse_block(
+            problem, levels.take(part), _part_of(noise, part), found.parameters[:, part]
+        )
+    return inverse
+
+
+def _part_of(noise: NoiseModel, part: NDArray[np.intp]) -> NoiseModel:
+    floor = getattr(noise, "floor", None)
+    if not isinstance(floor, np.ndarray) or floor.ndim == 0:
+        return noise
+    return replace(noise, floor=floor[part])  # type: ignore[type-var]
+
+
+def _inverse_block(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> Array:
+    model, free = problem.model, problem.free
+    with np.errstate(all="ignore"):
+        mean = model.response(levels.x, list(p)) * np.ones_like(levels.mean)
+        variance = noise.at_standards(mean, np.broadcast_to(levels.x, mean.shape))
+        weight = np.where(levels.count > 0, levels.count / variance, 0.0) * np.ones_like(mean)
+        each = model.derivatives(levels.x, list(p))
+        derivatives = [d * np.ones_like(mean) for d, f in zip(each, free, strict=True) if f]
+        normal = np.empty((levels.runs, len(derivatives), len(derivatives)))
+        for i, a in enumerate(derivatives):
+            for j in range(i, len(derivatives)):
+                normal[:, i, j] = normal[:, j, i] = np.einsum("nr,nr,nr->r", weight, a, derivatives[j])
+        length = np.sqrt(np.diagonal(normal, axis1=1, axis2=2))
+        usable = np.all((length > 0) & np.isfinite(length), axis=1)
+        scaled = normal / (length[:, :, None] * length[:, None, :])
+    scaled[~usable] = np.eye(len(derivatives))
+    inner = np.full_like(scaled, np.nan)
+    inner[usable] = _inverse_of_scaled(scaled[usable])
+    with np.errstate(all="ignore"):
+        inner = inner / (length[:, :, None] * length[:, None, :])
+    full = np.zeros((levels.runs, free.size, free.size))
+    where = np.flatnonzero(free)
+    full[:, where[:, None], where[None, :]] = inner
+    return full
+
+
+def _inverse_of_scaled(scaled: Array) -> Array:
+    """Inverse of matrices with unit diagonal; a pseudo-inverse where one is singular."""
+    try:
+        return np.asarray(np.linalg.inv(scaled))
+    except np.linalg.LinAlgError:
+        return np.asarray(np.linalg.pinv(scaled, hermitian=True))
+
+
+def _one_by_one(
+    problem: Problem,
+    x: Array,
+    y: Array,
+    requested: str | NoiseModel,
+    usable: NDArray[np.intp],
+    status: tuple[str, ...],
+    fixed: Mapping[str, float] | None,
+    bounds: Bounds | None,
+    starts: Mapping[str, Array],
+) -> CurveStack:
+    """Formulas of the user, and variance functions estimated from each run, are fitted run by run."""
+    runs, k = y.shape[1], problem.free.size
+    curves: dict[int, Curve] = {}
+    for i in usable:
+        present = np.isfinite(y[:, i])
+        noise = requested
+        if isinstance(noise, GivenNoise):
+            noise = replace(noise, sd=tuple(np.asarray(noise.sd)[present]))
+        curves[int(i)] = fit(
+            (x if x.ndim == 1 else x[:, i])[present],
+            y[present, i],
+            problem.model,
+            noise=noise,
+            fixed=fixed,
+            bounds=bounds,
+            start={n: float(v[i]) for n, v in starts.items()},
+        )
+    parameters, covariance = np.full((runs, k), np.nan), np.full((runs, k, k), np.nan)
+    total, tangent = np.full(runs, np.nan), np.full(runs, np.nan)
+    converged = np.zeros(runs, dtype=bool)
+    nu = np.maximum(np.isfinite(y).sum(axis=0) - int(problem.free.sum()), 0)
+    for i, curve in curves.items():
+        parameters[i], covariance[i], total[i] = curve.values, curve.covariance, curve.residual_sum
+        converged[i] = curve.converged
+    return CurveStack(
+        problem.model.names, parameters, covariance, total, nu, converged, status,
+        problem, requested, x, y, converged, tangent, {}, curves,
+    )  # fmt: skip
