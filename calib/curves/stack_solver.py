@@ -200,34 +200,55 @@ def _iterate(stack: Stack, roles: _Roles, theta: Array, floor: Array, found: Sta
     low, high = _limits(stack, roles)
     here = _evaluate(stack, roles, theta)
     damping = np.zeros(stack.runs)
+    recorded = np.zeros(stack.runs, dtype=bool)
     for count in range(1, STEPS + 1):
         normal, slope = _normal_equations(here)
-        free_now = ~_held_at_bound(theta, slope, low, high)
-        step, predicted = _step(normal, slope, damping, free_now)
+        step, predicted = _step(normal, slope, damping, _held_at_bound(theta, slope, low, high))
         reach = _reach(theta, step, low, high)
         trial = theta + reach * step
         there = _evaluate(stack, roles, trial)
-        enough = predicted <= ENOUGH * (here.total + stack.pure) + floor
         # Close to the minimum the sums no longer tell two points apart; the step still does.
-        close = predicted <= CLOSE * (here.total + stack.pure) + floor
+        total = here.total + stack.pure
+        close = predicted <= CLOSE * total + floor
         taken = (there.total < here.total) | (close & (there.total <= here.total * (1.0 + CLOSE) + floor))
+        enough = predicted <= ENOUGH * total + floor
         last = enough & (damping == 0.0) & (reach == 1.0)
-        theta, here = _accept(taken, trial, theta, there, here)
         stuck = damping >= MOST_DAMPING
         done = last | (enough & taken) | stuck | ~np.isfinite(here.total) | (predicted <= 0.0)
+        theta, here = _accept(taken, trial, theta, there, here)
         damping = _next_damping(damping, taken)
         if count == STEPS:
             done[:] = True
+        done &= ~recorded
         if not done.any():
             continue
-        _record(found, index, done, stack, roles, theta, here, count, low, high)
-        keep = np.flatnonzero(~done)
-        if keep.size == 0:
+        _record(found, index, done, stack, roles, theta, here, count)
+        # An undamped last step leaves less in the tangent plane than it predicted.
+        found.tangent[index[done]] = np.sqrt(np.maximum(predicted[done], 0.0))
+        open_end = done & ~last
+        if open_end.any():
+            rows = np.flatnonzero(open_end)
+            found.tangent[index[rows]] = _tangent(
+                _take(here, rows), theta[:, rows], _some(low, rows), _some(high, rows)
+            )
+        recorded |= done
+        if recorded.all():
             return
+        if recorded.sum() < LEAVE_SHARE * recorded.size:
+            continue
         # Finished runs are recorded once; the others go on without them.
+        keep = np.flatnonzero(~recorded)
         index, theta, damping, floor = index[keep], theta[:, keep], damping[keep], floor[keep]
-        stack, here = stack.take(keep), _take(here, keep)
+        stack, here, recorded = stack.take(keep), _take(here, keep), recorded[keep]
         low, high = _some(low, keep), _some(high, keep)
+
+
+def _tangent(here: _Point, theta: Array, low: Array, high: Array) -> Array:
+    """Norm of the residual's part in the tangent plane, coordinates held at a bound left out."""
+    normal, slope = _normal_equations(here)
+    held = _held_at_bound(theta, slope, low, high)
+    step, _ = _step(normal, slope, np.zeros(theta.shape[1]), held)
+    return np.asarray(np.sqrt(np.maximum(np.einsum("ir,ir->r", step, np.where(held, 0.0, slope)), 0.0)))
 
 
 def _coordinates(roles: _Roles, p: Array) -> Array:
@@ -267,7 +288,7 @@ def _evaluate(stack: Stack, roles: _Roles, theta: Array) -> _Point:
         linear[i] = theta[roles.searched.index(i)] if i in roles.searched else float(stack.template[i])
         rest = rest - linear[i] * derivative[i]
     residual = weight * rest
-    basis = [np.broadcast_to(weight * derivative[i], residual.shape) for i in roles.eliminated]
+    basis = [_filling(weight * derivative[i], residual) for i in roles.eliminated]
     orthogonal, triangle = _orthogonalise(basis)
     parts = [_dot(q, residual) for q in orthogonal]
     for q, part in zip(orthogonal, parts, strict=True):
@@ -281,13 +302,19 @@ def _evaluate(stack: Stack, roles: _Roles, theta: Array) -> _Point:
             tangent = weight * derivative[i]
         else:
             tangent = (weight * derivative[i]) * (amplitude * p[i] if log else amplitude)
-        tangents.append(_project_out(np.broadcast_to(tangent, residual.shape), orthogonal))
+        tangents.append(_project_out(_filling(tangent, residual), orthogonal))
     kept = np.array(solved) if solved else np.empty((0, residual.shape[1]))
     return _Point(residual, _dot(residual, residual), kept, tangents)
 
 
+def _filling(values: Array, like: Array) -> Array:
+    """The same values in the full shape of the stack."""
+    return values if values.shape == like.shape else np.broadcast_to(values, like.shape)
+
+
 def _dot(a: Array, b: Array) -> Array:
-    return np.asarray(np.einsum("nr,nr->r", a, b))
+    product: Array = np.einsum("nr,nr->r", a, b)
+    return product
 
 
 def _orthogonalise(basis: Sequence[Array]) -> tuple[list[Array], list[list[Array]]]:
@@ -344,21 +371,23 @@ def _held_at_bound(theta: Array, slope: Array, low: Array, high: Array) -> Mask:
     return ((theta <= low) & (slope < 0)) | ((theta >= high) & (slope > 0))
 
 
-def _step(normal: Array, slope: Array, damping: Array, free_now: Mask) -> tuple[Array, Array]:
+def _step(normal: Array, slope: Array, damping: Array, held: Mask) -> tuple[Array, Array]:
     """Damped Gauss–Newton step and the decrease of the sum it predicts."""
     m = slope.shape[0]
     if m == 0:
         return slope, np.zeros(damping.size)
-    matrix, right = normal.copy(), np.where(free_now, slope, 0.0)
-    if not free_now.all():
-        both = free_now[:, None] & free_now[None, :]
-        matrix = np.where(both, matrix, 0.0)
+    matrix, right = normal.copy(), slope
+    if held.any():
+        right = np.where(held, 0.0, slope)
+        matrix = np.where(held[:, None] | held[None, :], 0.0, matrix)
     for i in range(m):
         diagonal = matrix[i, i]
         matrix[i, i] = np.where(diagonal > 0, diagonal * (1.0 + damping), 1.0)
     step = _solve_small(matrix, right)
-    curved = np.einsum("ir,ijr,jr->r", step, normal, step)
-    predicted = 2.0 * np.einsum("ir,ir->r", step, right) - curved
+    along = np.einsum("ir,ir->r", step, right)
+    if not damping.any():
+        return step, np.where(np.isfinite(along), along, 0.0)
+    predicted = 2.0 * along - np.einsum("ir,ijr,jr->r", step, normal, step)
     return step, np.where(np.isfinite(predicted), predicted, 0.0)
 
 
@@ -425,21 +454,13 @@ def _record(
     theta: Array,
     here: _Point,
     count: int,
-    low: Array,
-    high: Array,
 ) -> None:
     """Write the finished runs into the solution."""
     rows = index[done]
-    for i in range(stack.free.size):
-        if not stack.free[i]:
-            found.parameters[i, rows] = stack.template[i]
+    found.parameters[np.ix_(~stack.free, rows)] = stack.template[~stack.free][:, None]
     for row, i in zip(here.linear, roles.eliminated, strict=True):
         found.parameters[i, rows] = row[done]
     for row, i, log in zip(theta, roles.searched, roles.in_logarithm, strict=True):
         found.parameters[i, rows] = np.exp(row[done]) if log else row[done]
     found.total[rows] = np.where(np.isfinite(here.total[done]), here.total[done], np.inf)
     found.steps[rows] = count
-    normal, slope = _normal_equations(here)
-    free_now = ~_held_at_bound(theta, slope, low, high)
-    step, _ = _step(normal, slope, np.zeros(theta.shape[1]), free_now)
-    found.tangent[rows] = np.sqrt(np.maximum(np.einsum("ir,ir->r", step, slope * free_now), 0.0))[done]

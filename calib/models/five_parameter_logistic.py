@@ -44,8 +44,12 @@ class FiveParameterLogistic(ResponseModel):
     def _distance(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array]:
         """Ln x − ln midpoint, and slope times that (−inf at x = 0)."""
         x = as_array(x)
-        distance = np.log(np.where(x > 0, x, 1.0)) - np.log(p[2])
-        return as_array(distance), as_array(np.where(x > 0, p[3] * distance, -np.inf))
+        above = x > 0
+        if np.all(above):
+            distance = np.log(x) - np.log(p[2])
+            return as_array(distance), as_array(p[3] * distance)
+        distance = np.log(np.where(above, x, 1.0)) - np.log(p[2])
+        return as_array(distance), as_array(np.where(above, p[3] * distance, -np.inf))
 
     def _steps(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array, Array]:
         """(ln x − ln midpoint), 1 − F and ln F with F = 1/(1 + (x/midpoint)^slope)."""

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike
-from scipy.special import expit
 
 from calib.models.five_parameter_logistic import FiveParameterLogistic, _lattice, _logit_start, _midpoints
 from calib.models.response_model import Array, Parameter, Parameters, as_array
@@ -34,7 +33,10 @@ class FourParameterLogistic(FiveParameterLogistic):
         """Derivatives in zero, infinite, midpoint and slope."""
         zero, infinite, midpoint, slope = p
         distance, exponent = self._distance(x, p)
-        share, rest = expit(-exponent), expit(exponent)
+        # One exponential serves both; past 700 the share is zero to every digit that matters.
+        power = np.exp(np.minimum(exponent, 700.0))
+        share = 1.0 / (1.0 + power)
+        rest = power * share
         fall = (zero - infinite) * share * rest
         return share, rest, fall * (slope / midpoint), -fall * distance
 
