@@ -16,7 +16,7 @@ from calib.bench.keeping import add_evaluation, add_quantities, current_readings
 from calib.bench.quantify import QUANTIFIED_ROLES, dependent_runs
 from calib.bench.quantities import quantities_of
 from calib.bench.records import Evaluation, Measured, QuantityRecord, RunRecord
-from calib.bench.show_run import load_run, show_run
+from calib.bench.show_run import load_run, measured_run, show_run
 from calib.errors import InputError
 from calib.store.runs import REASON_CLASSES
 
@@ -80,6 +80,7 @@ def refit_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunR
     evaluation = evaluate(record.definition, record.readings)
     now = store.now()
     with store.change(action="refit run", by=by, reason=reason) as session:
+        _refuse_changed(session, record)
         _supersede(session, record, evaluation, by=by, at=now, reason=reason)
     return show_run(store, number)
 
@@ -172,6 +173,7 @@ def _decide(
     evaluation = evaluate(record.definition, readings)
     now = store.now()
     with store.change(action=f"{decision} readings", by=by, reason=reason) as session:
+        _refuse_changed(session, record)
         before = exclusions_in_force(session, number)
         for row in current_readings(session, number):
             if row.ordinal in keys:
@@ -214,17 +216,24 @@ def _correctable(store: tables.Store, number: int) -> RunRecord:
     return record
 
 
+def _refuse_changed(session: Session, record: RunRecord) -> None:
+    """Check again, inside the transaction, everything the new evaluation rests on."""
+    number = record.heading.id or 0
+    _refuse_void(session, number)
+    in_force = current_curve(session, number)
+    now = measured_run(session, run_numbered(session, number), record.definition)
+    if in_force is None or in_force.id != record.curve_id or now != record.readings:
+        raise InputError(f"run {number} was corrected by someone else meanwhile; look at it and try again")
+
+
 def _supersede(
     session: Session, record: RunRecord, evaluation: Evaluation, *, by: str, at: datetime, reason: str
 ) -> None:
     """Write the new curve over the old one, with all quantities that rest on it."""
     number = record.heading.id or 0
-    in_force = current_curve(session, number)
-    if in_force is None or in_force.id != record.curve_id:
-        raise InputError(f"run {number} was corrected by someone else meanwhile; look at it and try again")
     ids = {r.ordinal: r.id for r in current_readings(session, number)}
     curve_id = add_evaluation(
-        session, number, evaluation, ids, by=by, at=at, supersedes=in_force.id, reason=reason
+        session, number, evaluation, ids, by=by, at=at, supersedes=record.curve_id, reason=reason
     )
     add_quantities(session, number, curve_id, evaluation.quantities)
     for dependent in dependent_runs(session, number):

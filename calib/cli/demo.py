@@ -56,7 +56,8 @@ def _folder(into: Path) -> Path:
     """The folder, made if missing; one with other things in it is left alone."""
     try:
         into.mkdir(parents=True, exist_ok=True)
-        foreign = any(into.iterdir()) and not (into / STORE_NAME).exists()
+        # A hidden draft is what a demo killed at its very start leaves behind.
+        foreign = any(not f.name.startswith(".") for f in into.iterdir()) and not (into / STORE_NAME).exists()
     except OSError as cause:
         raise InputError(
             f"{into}: no usable folder ({cause.strerror}); choose another with --into"

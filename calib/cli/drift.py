@@ -30,7 +30,7 @@ def drift(
     from calib.bench.review_drift import review_instrument, reviewed_pairs
 
     with opened(ctx) as store:
-        pairs = reviewed_pairs(store) if instrument is None else ((instrument, method),)
+        pairs = _chosen(reviewed_pairs(store), method) if instrument is None else ((instrument, method),)
         records = [review_instrument(store, i, m, since=moment(since, "--since")) for i, m in pairs]
     if target is not None:
         _draw(records, target)
@@ -47,6 +47,10 @@ def drift(
         show_review(records[0], last)
     if target is not None:
         click.echo(f"picture written to {target}")
+
+
+def _chosen(pairs: tuple[tuple[str, str], ...], method: str | None) -> tuple[tuple[str, str | None], ...]:
+    return tuple((i, m) for i, m in pairs if method is None or m == method)
 
 
 def _draw(records: list, target: Path) -> None:  # type: ignore[type-arg]

@@ -135,7 +135,7 @@ def _doubtful(stack: Stack, found: Found) -> Mask:
         centre = np.sum(weight * stack.y, axis=0) / np.sum(weight, axis=0)
         variation = np.sum(weight * (stack.y - centre) ** 2, axis=0)
         left = (found.total - stack.pure) > UNEXPLAINED * variation
-    return np.asarray(~found.converged | left | _on_bound(stack, found.parameters))
+    return np.asarray(~found.converged | left | on_bound(stack, found.parameters))
 
 
 def _asymmetry_free(stack: Stack) -> bool:
@@ -143,7 +143,8 @@ def _asymmetry_free(stack: Stack) -> bool:
     return "asymmetry" in names and bool(stack.free[names.index("asymmetry")])
 
 
-def _on_bound(stack: Stack, parameters: Array) -> Mask:
+def on_bound(stack: Stack, parameters: Array) -> Mask:
+    """Runs (R,) with a free parameter on a bound."""
     low, high = np.broadcast_arrays(stack.lower, stack.upper, parameters)[:2]
     with np.errstate(invalid="ignore"):
         near = (parameters <= low * (1.0 + 1e-6)) & np.isfinite(low) & (low > 0)

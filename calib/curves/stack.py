@@ -23,7 +23,7 @@ from calib.curves.fit import (
 from calib.curves.levels import Levels, collapsed, uncollapsed
 from calib.curves.noise import GivenNoise, NoiseModel, given_noise
 from calib.curves.reweight import Settled, solve_with_noise
-from calib.curves.search import Found
+from calib.curves.search import Found, on_bound
 from calib.curves.solver import Problem, Solution, stack_of_one
 from calib.curves.stack_solver import Stack
 from calib.curves.standards import Standards, frozen
@@ -55,6 +55,9 @@ class CurveStack(Sequence[Curve]):
         Weighted sum of squared residuals.
     degrees_of_freedom : (runs,) int array
     converged : (runs,) bool array
+    at_bound : (runs,) bool array
+        A parameter sits on a bound: where nobody asked for the bound, the best curve lies at
+        infinity and the parameters mean nothing.
     status : tuple of str
         'ok', 'too-few-levels' or 'not-finite' for each run.
     """
@@ -65,6 +68,7 @@ class CurveStack(Sequence[Curve]):
     residual_sum: Array
     degrees_of_freedom: NDArray[np.intp]
     converged: Mask
+    at_bound: Mask
     status: tuple[str, ...]
     _problem: Problem
     _noise: str | NoiseModel
@@ -192,7 +196,7 @@ def fit_stack(
         problem.model.index(n): v[usable] for n, v in starts.items() if problem.free[problem.model.index(n)]
     }
     settled = solve_with_noise(stack, levels, bound, _starts(problem, given, usable.size))
-    return _assembled(problem, requested, x, kept, levels, bound, settled, usable, status)
+    return _assembled(problem, stack, requested, x, kept, levels, bound, settled, usable, status)
 
 
 def _arrays(concentration: ArrayLike, response: ArrayLike, model: ResponseModel) -> tuple[Array, Array]:
@@ -266,6 +270,7 @@ def _starts(problem: Problem, given: dict[int, Array], runs: int) -> Array | dic
 
 def _assembled(
     problem: Problem,
+    stack: Stack,
     requested: NoiseModel,
     x: Array,
     y: Array,
@@ -291,11 +296,13 @@ def _assembled(
     covariance[usable] = inverse * scale[:, None, None]
     converged, stable = np.zeros(runs, dtype=bool), np.zeros(runs, dtype=bool)
     converged[usable], stable[usable] = found.converged & settled.stable, settled.stable
+    at_bound = np.zeros(runs, dtype=bool)
+    at_bound[usable] = on_bound(stack, found.parameters)
     tangent = np.full(runs, np.nan)
     tangent[usable] = found.tangent
     second = {int(usable[i]): p for i, p in found.second.items()}
     return CurveStack(
-        problem.model.names, parameters, covariance, total, nu, converged, status,
+        problem.model.names, parameters, covariance, total, nu, converged, at_bound, status,
         problem, requested, x, y, stable, tangent, second, {},
     )  # fmt: skip
 
@@ -383,12 +390,13 @@ def _one_by_one(
         )
     parameters, covariance = np.full((runs, k), np.nan), np.full((runs, k, k), np.nan)
     total, tangent = np.full(runs, np.nan), np.full(runs, np.nan)
-    converged = np.zeros(runs, dtype=bool)
+    converged, at_bound = np.zeros(runs, dtype=bool), np.zeros(runs, dtype=bool)
     nu = np.maximum(np.isfinite(y).sum(axis=0) - int(problem.free.sum()), 0)
     for i, curve in curves.items():
         parameters[i], covariance[i], total[i] = curve.values, curve.covariance, curve.residual_sum
         converged[i] = curve.converged
+        at_bound[i] = not bool(np.all(curve.determined))
     return CurveStack(
-        problem.model.names, parameters, covariance, total, nu, converged, status,
+        problem.model.names, parameters, covariance, total, nu, converged, at_bound, status,
         problem, requested, x, y, converged, tangent, {}, curves,
     )  # fmt: skip

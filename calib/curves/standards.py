@@ -12,6 +12,9 @@ from calib.models import CustomModel, ResponseModel
 
 Array = NDArray[np.float64]
 
+# No instrument works near these; beyond them squares overflow or vanish.
+SMALLEST, LARGEST = 1e-120, 1e120
+
 
 @dataclass(frozen=True, slots=True)
 class Standards:
@@ -68,6 +71,8 @@ def checked_standards(concentration: ArrayLike, response: ArrayLike, model: Resp
         raise InputError(f"model '{model.name}' takes one concentration a reading, got shape {x.shape}")
     _refuse_not_finite(x, "concentration")
     _refuse_not_finite(y, "response")
+    _refuse_extreme(x, "concentration")
+    _refuse_extreme(y, "response")
     if model.logarithmic and np.any(x < 0):
         i = int(np.flatnonzero(x < 0)[0])
         raise InputError(f"concentration[{i}] = {x[i]:g} is negative; model '{model.name}' lives on x >= 0")
@@ -79,6 +84,18 @@ def _numbers(values: ArrayLike, what: str) -> Array:
         return np.array(values, dtype=np.float64)
     except (TypeError, ValueError) as cause:
         raise InputError(f"{what} holds something that is no number ({cause}); give numbers only") from cause
+
+
+def _refuse_extreme(values: Array, what: str) -> None:
+    """Refuse sizes whose squares leave the range of floating-point numbers."""
+    size = np.abs(values)
+    bad = np.argwhere(((size > 0) & (size < SMALLEST)) | (size > LARGEST))
+    if bad.size:
+        where = ", ".join(str(int(i)) for i in bad[0])
+        raise InputError(
+            f"{what}[{where}] = {values[tuple(bad[0])]:g} is beyond what can be computed "
+            f"({SMALLEST:g} to {LARGEST:g}); use another unit"
+        )
 
 
 def _refuse_not_finite(values: Array, what: str) -> None:

@@ -24,8 +24,9 @@ ESTIMATED = ("power-of-mean", "additive-relative")
 
 def pseudo_likelihood(noise: NoiseModel, residual: Array, mean: Array, leverage: Array) -> float:
     """PL of one variance function, up to a constant; smaller is better."""
-    g = noise.variance(mean, mean)
-    spread = residual**2 / (np.maximum(1.0 - leverage, 0.05) * g)
+    with np.errstate(all="ignore"):
+        g = noise.variance(mean, mean)
+        spread = residual**2 / (np.maximum(1.0 - leverage, 0.05) * g)
     return float(mean.size * np.log(max(float(spread.mean()), 1e-300)) + np.log(g).sum())
 
 
@@ -49,7 +50,7 @@ def estimate_variance_function(
     """
     from scipy.optimize import minimize_scalar
 
-    span = max(float(np.ptp(mean)), float(np.max(np.abs(mean))) * 1e-6, 1e-300)
+    span = max(float(np.ptp(mean)), float(np.max(np.abs(mean))) * 1e-6, 1e-100)
     candidate: Callable[[float], NoiseModel]
     if family == "power-of-mean":
         floor = response_floor(mean)

@@ -53,7 +53,7 @@ class PowerLaw(ResponseModel):
     def inverse(self, y: ArrayLike, p: Parameters) -> Array:
         """Exact inverse; nan on the far side of the offset."""
         offset, scale, exponent = p
-        with np.errstate(divide="ignore", invalid="ignore"):
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             ratio = (as_array(y) - offset) / scale
             return as_array(np.where(ratio >= 0, np.abs(ratio) ** (1.0 / exponent), np.nan))
 

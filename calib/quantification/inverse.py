@@ -76,7 +76,8 @@ def concentration_of(curve: Curve, responses: ArrayLike) -> Array:
     y = np.atleast_1d(np.asarray(responses, dtype=np.float64))
     if not np.all(np.isfinite(curve.values)) or curve.standards.concentration.ndim > 1:
         return np.full(y.shape, np.nan)
-    return axis_of(curve).inverse(y)
+    with np.errstate(all="ignore"):
+        return axis_of(curve).inverse(y)
 
 
 def invert(
@@ -123,7 +124,9 @@ def invert(
     y, m = _checked(curve, responses, replicates, confidence, interval)
     axis = axis_of(curve)
     search = _Search(curve, axis, y, m, confidence, tuple(components))
-    return search.delta() if interval == "delta" else search.inversion()
+    # Undefined values are expected on the way and end as states, not as warnings.
+    with np.errstate(all="ignore"):
+        return search.delta() if interval == "delta" else search.inversion()
 
 
 def _checked(
