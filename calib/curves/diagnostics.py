@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import fdtrc
 
 from calib.curves.solver import Problem, Solution, at_bound
 from calib.models import Asymptote
@@ -17,6 +18,9 @@ PLATEAU_RELATIVE_U = 0.25
 PLATEAU_CONDITION = 40.0
 PLATEAU_SHARE = 0.5
 SINGULAR = 1e-12
+# A residual this small against the responses is rounding, not scatter.
+NO_SCATTER = 1e-12
+FLAT = 0.05
 # Share of a direction that was cut off from which on a parameter counts as not determined.
 LOADING = 1e-6
 # The condition rule was measured for curves of up to four free parameters: an asymmetry raises the
@@ -109,6 +113,8 @@ def findings_of(
         found.append(
             Finding("no-residual-freedom", "as many readings as free parameters: no uncertainty can be given")
         )
+    found.extend(_scatter(problem, solution))
+    found.extend(_flat(problem, solution))
     found.extend(_turning_point(problem, solution.parameters))
     if problem.model.plateau:
         found.extend(_plateaus(problem, solution.parameters, info, scale))
@@ -153,6 +159,57 @@ def _sanity_bounds_hit(problem: Problem, parameters: Array) -> list[str]:
         f"{problem.model.names[i]} runs away to {parameters[i]:.2g}"
         for i in _on_bound(problem, parameters)
         if not problem.given_bounds[i]
+    ]
+
+
+def _scatter(problem: Problem, solution: Solution) -> list[Finding]:
+    """Readings without the scatter that an uncertainty could rest on."""
+    nu = problem.y.size - int(problem.free.sum())
+    size = float(np.sum((problem.root_weight * problem.y) ** 2))
+    if nu > 0 and size > 0 and solution.weighted_sum <= NO_SCATTER**2 * size:
+        return [
+            Finding(
+                "no-scatter", "the readings lie on the curve to the last digit: no uncertainty can be given"
+            )
+        ]
+    if problem.x.ndim > 1 or not _replicates_identical(problem.x, problem.y):
+        return []
+    return [
+        Finding(
+            "identical-replicates",
+            "all replicates of every level are identical (copied, or the resolution is too coarse): "
+            "intervals may be too short",
+        )
+    ]
+
+
+def _replicates_identical(x: Array, y: Array) -> bool:
+    """Whether at least three levels have replicates and none of them scatter."""
+    levels, place, count = np.unique(x, return_inverse=True, return_counts=True)
+    repeated = count > 1
+    if repeated.sum() < 3:
+        return False
+    low, high = np.full(levels.size, np.inf), np.full(levels.size, -np.inf)
+    np.minimum.at(low, place, y)
+    np.maximum.at(high, place, y)
+    return bool(np.all((high == low)[repeated]))
+
+
+def _flat(problem: Problem, solution: Solution) -> list[Finding]:
+    """Whether the curve explains no more than its mean does, by an F test at 5 %."""
+    free = int(problem.free.sum())
+    nu = problem.y.size - free
+    if free < 2 or nu <= 0:
+        return []
+    weight = problem.root_weight**2
+    mean = float(np.sum(weight * problem.y) / np.sum(weight))
+    about = float(np.sum(weight * (problem.y - mean) ** 2))
+    explained = max(about - solution.weighted_sum, 0.0) / (free - 1)
+    noise = solution.weighted_sum / nu
+    if explained > 0 and (noise == 0 or fdtrc(free - 1, nu, explained / noise) <= FLAT):
+        return []
+    return [
+        Finding("flat", "the response does not change significantly with the concentration (F test, 5 %)")
     ]
 
 

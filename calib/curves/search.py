@@ -113,7 +113,7 @@ def _inside(stack: Stack, starts: Array) -> Array:
     p = np.where(np.isfinite(starts), starts, 1.0)
     p = np.where(stack.model.positive[:, None] & (p <= 0), 1.0, p)
     low, high = stack.lower, stack.upper
-    with np.errstate(invalid="ignore"):
+    with np.errstate(invalid="ignore", over="ignore"):
         margin = np.where(np.isfinite(high - low), 1e-9 * (high - low), 0.0)
     inside = np.clip(p, low + margin, high - margin)
     return np.where(stack.free[:, None], inside, stack.template[:, None])

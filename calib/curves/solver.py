@@ -178,7 +178,9 @@ def _inside(problem: Problem, start: Array) -> Array:
     p = np.where(np.isfinite(start), start, 1.0)
     p = np.where(problem.model.positive & (p <= 0), 1e-300, p)
     c = problem.coordinates(p)
-    width = np.where(np.isfinite(high - low), high - low, 1.0)
+    with np.errstate(over="ignore"):
+        span = high - low
+    width = np.where(np.isfinite(span), span, 1.0)
     return np.clip(c, low + 1e-9 * width, high - 1e-9 * width)
 
 
@@ -191,8 +193,9 @@ def within(problem: Problem, coordinates: Array) -> bool:
 def at_bound(problem: Problem, coordinates: Array) -> NDArray[np.bool_]:
     """Which of the free parameters (solver coordinates) sit on a bound."""
     low, high = problem.limits()
-    width = np.where(np.isfinite(high - low), high - low, np.maximum(np.abs(coordinates), 1e-300))
-    near = 1e-6 * width
+    with np.errstate(over="ignore"):
+        span = high - low
+    near = 1e-6 * np.where(np.isfinite(span), span, np.maximum(np.abs(coordinates), 1e-300))
     return (coordinates - low <= near) | (high - coordinates <= near)
 
 

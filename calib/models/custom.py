@@ -33,9 +33,21 @@ class CustomModel(ResponseModel):
         self._gradient = gradient
 
     def response(self, x: ArrayLike, p: Parameters) -> Array:
-        """Evaluate the user's function."""
-        with np.errstate(all="ignore"):
-            return as_array(self._response(as_array(x), *p))
+        """Evaluate the user's function.
+
+        Raises
+        ------
+        ModelError
+            When the function fails, or returns another number of responses.
+        """
+        x = as_array(x)
+        try:
+            with np.errstate(all="ignore"):
+                values = as_array(self._response(x, *p))
+        except (ArithmeticError, TypeError, ValueError, LookupError) as cause:
+            raise ModelError(f"model '{self.name}' fails at x of shape {x.shape}: {cause!r}") from cause
+        rows = x.shape[:1] if x.ndim > 1 and values.ndim == 1 else x.shape
+        return values if values.ndim else np.broadcast_to(values, rows)
 
     def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Columns of the gradient."""

@@ -109,12 +109,15 @@ class Axis:
         )
 
     def positions(self, value: Array, y: Array) -> tuple[str, ...]:
-        """'inside', 'above' or 'below' the calibrated range, also where no value exists."""
+        """'inside', 'above' or 'below' the calibrated range.
+
+        Where no value exists, a response beyond that of an end standard decides.
+        """
         low, high = self.curve.standards.lowest, self.curve.standards.highest
-        top = float(self.curve.predict(high))
+        bottom, top = (float(v) for v in self.curve.predict(np.array([low, high])))
         with np.errstate(invalid="ignore"):
             above = np.where(np.isfinite(value), value > high, self.direction * (y - top) > 0)
-            below = np.where(np.isfinite(value), value < low, ~above)
+            below = np.where(np.isfinite(value), value < low, self.direction * (y - bottom) < 0)
         return tuple(np.select([above, below], ["above", "below"], "inside").tolist())
 
 

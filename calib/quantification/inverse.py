@@ -143,6 +143,8 @@ def _checked(
             f"the curve was not fitted ({curve.findings[0].message}); nothing can be read from it"
         )
     y = np.atleast_1d(np.asarray(responses, dtype=np.float64))
+    if y.size == 0:
+        raise InputError("no responses; give at least one")
     if y.ndim != 1 or not np.all(np.isfinite(y)):
         bad = int(np.flatnonzero(~np.isfinite(y.ravel()))[0]) if y.ndim == 1 else 0
         raise InputError(f"responses[{bad}] is not a finite number; leave it out or correct it")
@@ -263,6 +265,10 @@ class _Search:
         up, again_up = self._walk(t, y, m, q, +1)
         lower = np.where(np.isinf(down), self.axis.open_low, self.axis.concentration(down))
         upper = np.where(np.isinf(up), np.inf, self.axis.concentration(np.where(np.isinf(up), 0.0, up)))
+        # An estimate beyond the end of the axis leaves that end open.
+        estimate = self.axis.position(value[part])
+        lower = np.where(estimate < low, self.axis.open_low, lower)
+        upper = np.where(estimate > high, np.inf, upper)
         return lower, upper, np.asarray(again_down | again_up)
 
     def _walk(
@@ -270,14 +276,15 @@ class _Search:
     ) -> tuple[Array, NDArray[np.bool_]]:
         """First crossing from t outwards, ±inf when the end of the axis is reached inside."""
         grid = self.axis.steps(t, direction)
-        outside = self._excess(grid, y[:, None], m[:, None], q[:, None]) > 0
+        # Where the curve is undefined nothing agrees with the response.
+        outside = ~(self._excess(grid, y[:, None], m[:, None], q[:, None]) <= 0)
         crossed = outside[:, 1:].any(axis=1)
         first = np.where(crossed, outside[:, 1:].argmax(axis=1) + 1, 1)
         rows = np.arange(t.size)
         inner, outer = grid[rows, first - 1], grid[rows, first]
         for _ in range(60):
             middle = 0.5 * (inner + outer)
-            is_out = self._excess(middle, y, m, q) > 0
+            is_out = ~(self._excess(middle, y, m, q) <= 0)
             inner, outer = np.where(is_out, inner, middle), np.where(is_out, middle, outer)
         beyond = np.arange(grid.shape[1])[None, :] > first[:, None]
         again = np.asarray(crossed & (~outside & beyond).any(axis=1))
@@ -303,5 +310,6 @@ class _Search:
         curve_u: Array,
     ) -> Quantity:
         """Assemble the result with the position of each unknown."""
-        position = self.axis.positions(value, self.y)
+        # From the estimate itself, also where none is reported because both ends are open.
+        position = self.axis.positions(self.axis.inverse(self.y), self.y)
         return Quantity(value, u, lower, upper, k, nu, tuple(state.tolist()), position, second, curve_u)
