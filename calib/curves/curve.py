@@ -177,6 +177,7 @@ class Curve:
         confidence: float = 0.95,
         interval: str = "inversion",
         components: Sequence[Component] = (),
+        seed: int | None = None,
     ) -> Quantity:
         """Concentrations of unknowns with their intervals; see `quantification.inverse.invert`."""
         from calib.quantification.inverse import invert
@@ -188,4 +189,5 @@ class Curve:
             confidence=confidence,
             interval=interval,
             components=components,
+            seed=seed,
         )

@@ -14,14 +14,16 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from calib.curves.chance import SEED
 from calib.curves.curve import Curve
 from calib.curves.quantiles import two_sided
 from calib.errors import InputError, ModelError
 from calib.quantification.axis import Axis, axis_of
 from calib.quantification.budget import Component, effective_freedom
+from calib.quantification.monte_carlo import TRIALS, drawn_limits
 
 Array = NDArray[np.float64]
-INTERVALS = ("inversion", "delta")
+INTERVALS = ("inversion", "delta", "monte-carlo")
 
 # The longer side may exceed the shorter by this factor before ± is suppressed.
 LOPSIDED = 1.25
@@ -52,6 +54,8 @@ class Quantity:
         A further, separate stretch of concentrations agrees with the response too.
     curve_u : (m,) array
         Part of u that comes from reading and curve.
+    seed, trials : int or None
+        Behind an interval by Monte Carlo.
     """
 
     value: Array
@@ -64,6 +68,8 @@ class Quantity:
     position: tuple[str, ...]
     second_region: NDArray[np.bool_]
     curve_u: Array
+    seed: int | None = None
+    trials: int | None = None
 
     @property
     def expanded(self) -> Array:
@@ -88,6 +94,8 @@ def invert(
     confidence: float = 0.95,
     interval: str = "inversion",
     components: Sequence[Component] = (),
+    seed: int | None = None,
+    trials: int = TRIALS,
 ) -> Quantity:
     """Concentrations of unknowns with standard uncertainty and interval.
 
@@ -100,11 +108,17 @@ def invert(
         Readings behind each mean.
     confidence : float
         Two-sided.
-    interval : {'inversion', 'delta'}
+    interval : {'inversion', 'delta', 'monte-carlo'}
         'delta' is the symmetric summary value ± q·u, which covers too little near a plateau;
-        `Quantity.state` still tells what the inversion finds.
+        `Quantity.state` still tells what the inversion finds. 'monte-carlo' propagates
+        distributions (JCGM 101:2008), a cross-check by another road: its limits have equal
+        probability beyond them, value, u and k remain those of the inversion.
     components : sequence of Component
-        Further uncertainties, added inside the inversion.
+        Further uncertainties, added inside the inversion and drawn in the Monte Carlo.
+    seed : int, optional
+        Of the Monte Carlo; kept with the result, also where none is given.
+    trials : int
+        Of the Monte Carlo.
 
     Raises
     ------
@@ -126,6 +140,8 @@ def invert(
     search = _Search(curve, axis, y, m, confidence, tuple(components))
     # Undefined values are expected on the way and end as states, not as warnings.
     with np.errstate(all="ignore"):
+        if interval == "monte-carlo":
+            return search.monte_carlo(SEED if seed is None else seed, trials)
         return search.delta() if interval == "delta" else search.inversion()
 
 
@@ -206,10 +222,22 @@ class _Search:
 
     def inversion(self) -> Quantity:
         """Interval by inversion of the prediction band."""
+        return self.stated(*self.limits())
+
+    def monte_carlo(self, seed: int, trials: int) -> Quantity:
+        """Interval between ranked draws; only a second region is still told by the inversion."""
+        lower, upper = drawn_limits(
+            self.axis, self.y, self.replicates, self.confidence, self.components, trials, seed
+        )
+        return replace(self.stated(lower, upper, self.limits()[2]), seed=int(seed), trials=trials)
+
+    def stated(self, lower: Array, upper: Array, second: NDArray[np.bool_]) -> Quantity:
+        """What limits say about each unknown: its state, and what may be reported with it."""
         value, curve_u, nu = self.estimate()
         q = two_sided(nu, self.confidence)
-        lower, upper, second = self.limits(value, q)
         side, off = self.beyond(q)
+        # Nearly all draws beyond one and the same end say that the response is not on the curve.
+        off = off | (lower == np.inf) | (upper == self.axis.open_low)
         lower, upper = np.where(off, np.nan, lower), np.where(off, np.nan, upper)
         open_below = lower <= (0.0 if self.axis.logarithmic else -np.inf)
         open_above = np.isinf(upper)
@@ -249,8 +277,10 @@ class _Search:
                 off = off | (past & (np.abs(self.y - end.response) > q * se))
         return side, off
 
-    def limits(self, value: Array, q: Array) -> tuple[Array, Array, NDArray[np.bool_]]:
+    def limits(self) -> tuple[Array, Array, NDArray[np.bool_]]:
         """First crossings on either side of each estimate, in chunks of unknowns."""
+        value, _, nu = self.estimate()
+        q = two_sided(nu, self.confidence)
         parts = [self._limits(value, q, slice(i, i + CHUNK)) for i in range(0, self.y.size, CHUNK)]
         lower, upper, second = (np.concatenate(p) for p in zip(*parts, strict=True))
         return lower, upper, second.astype(bool)
