@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
     from calib.bench.laboratory import Laboratory, open_store
+    from calib.curves.bootstrap import Bootstrap, bootstrap
     from calib.curves.curve import BackCalculation, Curve
     from calib.curves.diagnostics import Finding
     from calib.curves.fit import fit
@@ -18,6 +19,7 @@ if TYPE_CHECKING:
     from calib.errors import CalibError
     from calib.models import RESPONSE_MODELS, custom_model
     from calib.quantification.budget import Component
+    from calib.quantification.influence import Influence, influence
     from calib.quantification.inverse import Quantity
     from calib.quantification.range import precision_profile, working_range
 
@@ -25,18 +27,22 @@ __version__ = "0.1.0"
 
 _HOME = {
     "BackCalculation": "calib.curves.curve",
+    "Bootstrap": "calib.curves.bootstrap",
     "CalibError": "calib.errors",
     "Component": "calib.quantification.budget",
     "Curve": "calib.curves.curve",
     "CurveStack": "calib.curves.stack",
     "Finding": "calib.curves.diagnostics",
+    "Influence": "calib.quantification.influence",
     "NoiseModel": "calib.curves.noise",
     "Quantity": "calib.quantification.inverse",
     "RESPONSE_MODELS": "calib.models",
     "assumed_noise": "calib.curves.noise",
+    "bootstrap": "calib.curves.bootstrap",
     "custom_model": "calib.models",
     "fit": "calib.curves.fit",
     "fit_stack": "calib.curves.stack",
+    "influence": "calib.quantification.influence",
     "Laboratory": "calib.bench.laboratory",
     "open_store": "calib.bench.laboratory",
     "precision_profile": "calib.quantification.range",
@@ -46,18 +52,22 @@ _HOME = {
 __all__ = [
     "RESPONSE_MODELS",
     "BackCalculation",
+    "Bootstrap",
     "CalibError",
     "Component",
     "Curve",
     "CurveStack",
     "Finding",
+    "Influence",
     "Laboratory",
     "NoiseModel",
     "Quantity",
     "assumed_noise",
+    "bootstrap",
     "custom_model",
     "fit",
     "fit_stack",
+    "influence",
     "open_store",
     "precision_profile",
     "working_range",
