@@ -26,7 +26,7 @@ from calib.curves.reweight import Settled, solve_with_noise
 from calib.curves.search import Found, on_bound
 from calib.curves.solver import Problem, Solution, stack_of_one
 from calib.curves.stack_solver import Stack
-from calib.curves.standards import Standards, frozen
+from calib.curves.standards import Standards, extreme, frozen, refuse_extreme
 from calib.errors import InputError
 from calib.models import CustomModel, ResponseModel, response_model
 
@@ -104,7 +104,8 @@ class CurveStack(Sequence[Curve]):
         )
         if self.status[i] == NOT_FINITE:
             finding = Finding(
-                NOT_FINITE, "a response of this run is infinite; leave it out (nan) or correct it"
+                NOT_FINITE,
+                "a response of this run is infinite or beyond what can be computed; leave it out (nan) or correct it",
             )
             return unfitted_curve(problem, standards, self._noise, "least-squares", finding)
         if self.status[i] != OK:
@@ -210,6 +211,7 @@ def _arrays(concentration: ArrayLike, response: ArrayLike, model: ResponseModel)
         )
     if not np.all(np.isfinite(x)):
         raise InputError("a concentration is not finite; mark an absent reading by a response of nan")
+    refuse_extreme(x, "concentration")
     if model.logarithmic and np.any(x < 0):
         raise InputError(f"a concentration is negative; model '{model.name}' lives on x >= 0")
     return (np.ascontiguousarray(x.T) if x.ndim == 2 else x), np.ascontiguousarray(y.T)
@@ -233,7 +235,7 @@ def _statuses(x: Array, y: Array, needed: int) -> tuple[str, ...]:
         levels = seen.sum(axis=0)
     else:
         levels = np.array([np.unique(x[present[:, i], i]).size for i in range(y.shape[1])])
-    infinite = np.isinf(y).any(axis=0)
+    infinite = extreme(y).any(axis=0)
     return tuple(np.select([infinite, levels < needed], [NOT_FINITE, TOO_FEW_LEVELS], OK).tolist())
 
 

@@ -71,8 +71,8 @@ def checked_standards(concentration: ArrayLike, response: ArrayLike, model: Resp
         raise InputError(f"model '{model.name}' takes one concentration a reading, got shape {x.shape}")
     _refuse_not_finite(x, "concentration")
     _refuse_not_finite(y, "response")
-    _refuse_extreme(x, "concentration")
-    _refuse_extreme(y, "response")
+    refuse_extreme(x, "concentration")
+    refuse_extreme(y, "response")
     if model.logarithmic and np.any(x < 0):
         i = int(np.flatnonzero(x < 0)[0])
         raise InputError(f"concentration[{i}] = {x[i]:g} is negative; model '{model.name}' lives on x >= 0")
@@ -86,10 +86,15 @@ def _numbers(values: ArrayLike, what: str) -> Array:
         raise InputError(f"{what} holds something that is no number ({cause}); give numbers only") from cause
 
 
-def _refuse_extreme(values: Array, what: str) -> None:
-    """Refuse sizes whose squares leave the range of floating-point numbers."""
+def extreme(values: Array) -> NDArray[np.bool_]:
+    """Which numbers, infinite ones included, have squares beyond floating point; absent ones do not."""
     size = np.abs(values)
-    bad = np.argwhere(((size > 0) & (size < SMALLEST)) | (size > LARGEST))
+    return np.asarray(((size > 0) & (size < SMALLEST)) | (size > LARGEST))
+
+
+def refuse_extreme(values: Array, what: str) -> None:
+    """Refuse sizes whose squares leave the range of floating-point numbers."""
+    bad = np.argwhere(extreme(values))
     if bad.size:
         where = ", ".join(str(int(i)) for i in bad[0])
         raise InputError(
