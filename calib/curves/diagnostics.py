@@ -117,9 +117,10 @@ def findings_of(
     found.extend(_flat(problem, solution))
     found.extend(_turning_point(problem, solution.parameters))
     if problem.model.plateau:
-        found.extend(_plateaus(problem, solution.parameters, info, scale))
+        plateaus = _plateaus(problem, solution.parameters, info, scale)
+        found.extend(plateaus or _undetermined(problem, solution.parameters, info, scale))
     else:
-        found.extend(_loose_parameters(problem, solution.parameters, info, scale))
+        found.extend(_loose_parameters(problem, solution.parameters, info, scale, PLATEAU_RELATIVE_U))
     return tuple(found)
 
 
@@ -273,10 +274,19 @@ def _end_not_reached(
     return [f"the {which} standard reaches {100 * reached:.0f} % of the span"]
 
 
-def _loose_parameters(problem: Problem, p: Array, info: Information, scale: float) -> list[Finding]:
-    """Positive parameters of models without a plateau whose u exceeds a quarter of them."""
+def _undetermined(problem: Problem, p: Array, info: Information, scale: float) -> list[Finding]:
+    """Positive parameters that u exceeds though both plateaus are seen: a step between two levels."""
+    if problem.free.sum() > CONDITION_PARAMETERS:
+        return []
+    return _loose_parameters(problem, p, info, scale, 1.0)
+
+
+def _loose_parameters(
+    problem: Problem, p: Array, info: Information, scale: float, share: float
+) -> list[Finding]:
+    """Positive parameters whose u exceeds a share of them."""
     u = scale * np.sqrt(np.diag(info.inverse))
-    loose = problem.model.positive & problem.free & (u > PLATEAU_RELATIVE_U * np.abs(p))
+    loose = problem.model.positive & problem.free & (u > share * np.abs(p))
     return [
         Finding(
             "not-identifiable",
