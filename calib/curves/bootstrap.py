@@ -44,7 +44,8 @@ class Bootstrap:
 
         Where some runs have no finite minimum it is very large: such a parameter is not determined.
         """
-        deviations = self.parameters.std(axis=0, ddof=1)
+        # About the first run, so that a value that never changes deviates by exactly 0.
+        deviations = (self.parameters - self.parameters[0]).std(axis=0, ddof=1)
         return {n: float(s) for n, s in zip(self.parameter_names, deviations, strict=True)}
 
 
