@@ -214,7 +214,7 @@ def test_every_lasting_change_shows_as_a_shift_in_concentration(season, instrume
 def test_a_run_that_was_wrong_signals_too(season):
     review = season.laboratory.drift("EE-3")
     assert "response high" in signals_on(review, "2026-04-16")  # the amplifier on its test gain
-    assert "check standards ln recovery" in signals_on(review, "2026-05-12")  # checks of twice their label
+    assert "check standards recovery" in signals_on(review, "2026-05-12")  # checks of twice their label
 
 
 def test_the_store_of_the_season_is_sound(season):

@@ -8,7 +8,15 @@ from calib.acceptance.evidence import Evidence, JudgedCheck
 from calib.acceptance.limits import Quantity, at_most, within
 from calib.acceptance.wording import amount, count, figure, listed, percent, signed_percent, with_unit
 
-UNUSABLE_FINDINGS = ("not-converged", "not-identifiable", "too-few-levels", "at-bound")
+UNUSABLE_FINDINGS = (
+    "not-converged",
+    "not-identifiable",
+    "too-few-levels",
+    "at-bound",
+    "no-residual-freedom",
+    "no-scatter",
+    "flat",
+)
 """Findings of a curve that no limit of a method can outweigh."""
 
 
@@ -22,7 +30,7 @@ class CurveUsable:
             problems.insert(0, "the fit did not converge")
         return CriterionResult(
             id="curve-usable",
-            what="the fit converged and its parameters are determined",
+            what="the fit converged, and nothing forbids the use of its curve",
             limit=None,
             observed=None,
             passed=not problems,

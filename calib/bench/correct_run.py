@@ -47,7 +47,7 @@ def exclude_readings(
     which: Sequence[str],
     *,
     reason: str,
-    reason_class: str = "assignable cause",
+    reason_class: str = "other",
     by: str,
 ) -> RunRecord:
     """Leave standard readings out of the fit and judge the run again.

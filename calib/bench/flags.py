@@ -10,10 +10,9 @@ FLAGS: dict[str, str] = {
     "no-value": "no concentration can be given",
     "off-curve": "response lies outside the curve",
     "second-region": "a second range of concentrations agrees with this response",
-    "replicate-spread": "replicates differ more than the curve's noise allows",
+    "replicate-spread": "replicates differ more than the curve's noise allows: no interval is given",
     "absent-reading": "a reading is absent (see the file)",
     "saturated": "detector at its ceiling",
-    "single-reading": "a single reading",
     "curve-rejected": "the curve was rejected: no result",
     "curve-superseded": "the curve was superseded and its successor rejected: no result",
 }

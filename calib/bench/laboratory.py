@@ -23,6 +23,8 @@ from calib.bench.log_run import evaluate_plan, log_plan
 from calib.bench.plan_run import LogOptions, plan_file
 from calib.bench.quantify import quantify_plan
 from calib.bench.records import RunRecord
+from calib.bench.replay import ReplayRequest, replay_runs
+from calib.bench.replay_records import Replay
 from calib.bench.review_drift import DriftRecord, review_instrument
 from calib.bench.show_run import RunLine, list_runs, show_run
 
@@ -77,7 +79,7 @@ class Laboratory:
         return show_run(self.store, number)
 
     def exclude(
-        self, number: int, readings: Sequence[str], *, reason: str, reason_class: str = "assignable cause"
+        self, number: int, readings: Sequence[str], *, reason: str, reason_class: str = "other"
     ) -> RunRecord:
         """Leave standard readings out of the fit, with a reason."""
         return exclude_readings(
@@ -105,6 +107,10 @@ class Laboratory:
     ) -> DriftRecord:
         """Review one instrument and method over time."""
         return review_instrument(self.store, instrument, method, since=since)
+
+    def replay(self, request: ReplayRequest) -> Replay:
+        """Evaluate past runs under another method version; nothing is written."""
+        return replay_runs(self.store, request)
 
     def check(self, *, all_curves: bool = False) -> RecordCheck:
         """Check chain, integrity and stored curves."""

@@ -10,10 +10,13 @@ from dataclasses import dataclass
 from importlib import resources
 from typing import Any
 
+import numpy as np
+
 from calib.acceptance import Limit, criteria_from, read_preset
-from calib.curves.fit import NOISE_NAMES
+from calib.curves.fit import NOISE_NAMES, problem_of
 from calib.curves.noise import NoiseModel, assumed_noise
-from calib.errors import MethodError
+from calib.curves.standards import Standards
+from calib.errors import MethodError, ModelError
 from calib.intake import parse_concentration_unit
 from calib.models import ResponseModel, response_model
 
@@ -90,6 +93,9 @@ def read_definition(text: str, version: int = 1) -> MethodDefinition:
     _check_keys(table)
     name = _text(table, "name")
     model = _model(_text(table, "model"))
+    fixed = _numbers_of(table.get("fixed", {}), "fixed", model)
+    bounds = _bounds(table.get("bounds", {}), model)
+    _refuse_unfittable(model, fixed, bounds)
     limits = _limits(table["acceptance"], f"method {name} version {version}")
     return MethodDefinition(
         name=name,
@@ -97,8 +103,8 @@ def read_definition(text: str, version: int = 1) -> MethodDefinition:
         concentration_unit=parse_concentration_unit(_text(table, "concentration_unit")),
         response_unit=_text(table, "response_unit"),
         model=model.name,
-        fixed=_numbers_of(table.get("fixed", {}), "fixed", model),
-        bounds=_bounds(table.get("bounds", {}), model),
+        fixed=fixed,
+        bounds=bounds,
         noise=_noise(table.get("noise", "uniform")),
         interval_confidence=_between(table, "interval_confidence", 0.95, 0.5, 0.9999),
         fit_blank=_switch(table, "fit_blank"),
@@ -149,8 +155,6 @@ def _text(table: Mapping[str, Any], key: str) -> str:
 
 
 def _model(name: str) -> ResponseModel:
-    from calib.errors import ModelError
-
     try:
         return response_model(name)
     except ModelError as unknown:
@@ -202,6 +206,20 @@ def _bounds(table: object, model: ResponseModel) -> dict[str, tuple[float, float
             raise MethodError(f"bounds.{name} = [{low:g}, {high:g}]: the lower bound must be below the upper")
         bounds[name] = (low, high)
     return bounds
+
+
+def _refuse_unfittable(
+    model: ResponseModel, fixed: Mapping[str, float], bounds: Mapping[str, tuple[float, float]]
+) -> None:
+    """Refuse settings under which no run could ever be fitted."""
+    both = sorted(set(fixed) & set(bounds))
+    if both:
+        raise MethodError(f"{both[0]} is fixed and has bounds; keep one of the two")
+    levels = np.geomspace(1.0, 100.0, 8)
+    try:
+        problem_of(model, Standards(levels, levels), fixed, bounds, {})
+    except ModelError as cause:
+        raise MethodError(f"fixed and bounds: {cause}") from cause
 
 
 def _noise(value: object) -> str | NoiseModel:

@@ -25,6 +25,7 @@ from calib.intake import (
     read_file,
 )
 
+LATEST = timedelta(days=1)  # how far an instrument's clock may run ahead of this computer's
 SMALLEST, LARGEST = 1e-100, 1e100  # numbers beyond only overflow in a fit
 
 
@@ -86,7 +87,7 @@ def plan_file(store: tables.Store, path: str | Path, options: LogOptions) -> Log
     """
     parsed = read_file(path, layout=options.layout)
     with store.reading() as session:
-        runs = tuple(_plan(session, parsed, run, options) for run in parsed.runs)
+        runs = tuple(_plan(session, parsed, run, options, store.now()) for run in parsed.runs)
         _refuse_one_method_for_two(parsed, runs)
         refuse_duplicates(session, parsed, runs)
     return LogPlan(parsed, runs, options.by)
@@ -104,6 +105,7 @@ def refuse_duplicates(session: Session, file: ParsedFile, runs: Sequence[Planned
     """
     for run in runs:
         _refuse_duplicate(session, file, run)
+        _refuse_same_start(session, file, run)
 
 
 def _refuse_duplicate(session: Session, file: ParsedFile, run: PlannedRun) -> None:
@@ -120,11 +122,36 @@ def _refuse_duplicate(session: Session, file: ParsedFile, run: PlannedRun) -> No
     if found is None:
         return
     number, name, identical = found
-    what = "the same file" if identical else "the same readings in another form"
+    what = "the same file is" if identical else "the same readings, in another form, are"
     raise DuplicateFile(
-        f"{file.name}: {what} is logged already as run {number} ({name}); nothing was written "
+        f"{file.name}: {what} logged already as run {number} ({name}); nothing was written "
         f"(declare run {number} void first if it has to be logged again)"
     )
+
+
+def _refuse_same_start(session: Session, file: ParsedFile, run: PlannedRun) -> None:
+    """An instrument cannot start two runs of one method at once: one is an edited copy."""
+    number = session.scalar(
+        select(tables.Run.id)
+        .join(tables.RunFacts, tables.RunFacts.run_id == tables.Run.id)
+        .join(tables.Method, tables.Method.id == tables.Run.method_id)
+        .outerjoin(tables.RunVoid, tables.RunVoid.run_id == tables.Run.id)
+        .where(
+            tables.RunFacts.instrument_id == run.instrument.id,
+            tables.RunFacts.at == run.at,
+            tables.Method.name == run.method.name,
+            tables.Run.kind == ("calibration" if run.has_standards else "unknowns"),
+            tables.is_current(tables.RunFacts),
+            tables.RunVoid.id.is_(None),
+        )
+        .limit(1)
+    )
+    if number is not None:
+        raise DuplicateFile(
+            f"{file.name}: run {number} of {run.instrument.name} and method {run.method.name} started at the same "
+            f"time, {run.at:%Y-%m-%d %H:%M:%S}, with other readings; nothing was written (compare the two; "
+            f"declare run {number} void if this file replaces it)"
+        )
 
 
 def _refuse_one_method_for_two(file: ParsedFile, runs: Sequence[PlannedRun]) -> None:
@@ -138,7 +165,9 @@ def _refuse_one_method_for_two(file: ParsedFile, runs: Sequence[PlannedRun]) -> 
             )
 
 
-def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOptions) -> PlannedRun:
+def _plan(
+    session: Session, file: ParsedFile, run: ParsedRun, options: LogOptions, now: datetime
+) -> PlannedRun:
     instrument = instrument_named(session, _agreed(file, "instrument", options.instrument, run.instrument))
     if run.serial and instrument.serial and run.serial != instrument.serial:
         raise InputError(
@@ -148,7 +177,9 @@ def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOption
     method = method_named(session, _method_name(session, file, run, options.methods))
     definition = definition_of(method)
     at = _moment(file, run, instrument, options.at)
-    lot_name = options.lot or run.lot
+    _refuse_future(file, at, now)
+    lot_name = _agreed(file, "lot", options.lot, run.lot) if options.lot or run.lot else None
+    lot = lot_named(session, lot_name) if lot_name else None
     factor = _unit_factor(file, run, definition)
     _require_response_unit(file, run, definition)
     for reading in run.readings:
@@ -161,10 +192,10 @@ def _plan(session: Session, file: ParsedFile, run: ParsedRun, options: LogOption
         at=at,
         offset_minutes=_offset_minutes(at),
         operator=run.operator or options.by,
-        lot=lot_named(session, lot_name) if lot_name else None,
+        lot=lot,
         measured=tuple(_measured(i, r, factor, instrument) for i, r in enumerate(run.readings, start=1)),
         content_fingerprint=content_fingerprint(_resolved(run, instrument.name, definition.analyte, at)),
-        notes=_notes(run, definition, factor),
+        notes=(*_notes(run, definition, factor), *_lot_notes(lot, at)),
     )
 
 
@@ -206,11 +237,31 @@ def _analyte_of(session: Session, method: str) -> str:
 def _moment(
     file: ParsedFile, run: ParsedRun, instrument: tables.Instrument, said: datetime | None
 ) -> datetime:
-    at = said or run.at or _first_reading_time(run.readings)
-    if at is None:
-        raise InputError(f"{file.name}: the file gives no time of measurement; give --at 2026-03-02T08:20")
+    written = run.at or _first_reading_time(run.readings)
     zone = timezone(timedelta(minutes=instrument.utc_offset_minutes))
-    return at if at.tzinfo is not None else at.replace(tzinfo=zone)
+    moments = [t if t.tzinfo else t.replace(tzinfo=zone) for t in (said, written) if t is not None]
+    if not moments:
+        raise InputError(f"{file.name}: the file gives no time of measurement; give --at 2026-03-02T08:20")
+    if len(moments) == 2 and moments[0] != moments[1]:
+        raise InputError(
+            f"{file.name}: the file says it was measured {moments[1]:%Y-%m-%d %H:%M %z}, but --at says "
+            f"{moments[0]:%Y-%m-%d %H:%M %z}; log it as written and correct it with calib run amend"
+        )
+    return moments[-1]
+
+
+def _refuse_future(file: ParsedFile, at: datetime, now: datetime) -> None:
+    if at > now + LATEST:
+        raise InputError(
+            f"{file.name}: measured {at:%Y-%m-%d %H:%M %z}, which lies in the future of this computer's clock "
+            f"({now:%Y-%m-%d %H:%M %z}); correct the time or the clock"
+        )
+
+
+def _lot_notes(lot: tables.StandardLot | None, at: datetime) -> tuple[str, ...]:
+    if lot is None or lot.expiry is None or at.date() <= lot.expiry:
+        return ()
+    return (f"standard lot {lot.name} expired on {lot.expiry.isoformat()}, before this run",)
 
 
 def _first_reading_time(readings: Sequence[ParsedReading]) -> datetime | None:

@@ -113,7 +113,8 @@ def _refuse_expired(run: PlannedRun, source: tables.Run, at: datetime, shown: da
     if run.at > expires:
         raise InputError(
             f"the curve of run {source.id} ({shown:%Y-%m-%d %H:%M}) was valid for "
-            f"{run.definition.valid_hours:g} h and has expired at {run.at:%Y-%m-%d %H:%M}; log new standards"
+            f"{run.definition.valid_hours:g} h, until {local(expires, run.offset_minutes):%Y-%m-%d %H:%M}, "
+            f"and these samples were measured {run.at:%Y-%m-%d %H:%M}; log new standards"
         )
 
 

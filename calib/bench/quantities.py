@@ -169,8 +169,6 @@ def _reading_flags(group: Sequence[Measured], present: int) -> tuple[str, ...]:
         flags.append("saturated")
     if present < len(group):
         flags.append("absent-reading")
-    if present == 1 and len(group) == 1:
-        flags.append("single-reading")
     return tuple(flags)
 
 

@@ -189,6 +189,7 @@ class RunRecord:
     """A run as the store holds it now.
 
     A run of unknowns has no standards of its own; its curve is the one it names.
+    ``dependents`` are runs of unknowns that were read on its curve.
     ``attempts_that_day`` counts the calibration runs of this instrument and method on
     the same local day, this one included; ``versions`` are those the curve was fitted with.
     """
@@ -200,6 +201,7 @@ class RunRecord:
     evaluation: Evaluation
     readings: tuple[Measured, ...]
     amendments: tuple[Amendment, ...]
+    dependents: tuple[int, ...]
     curves_before: int
     attempts_that_day: int
     versions: Mapping[str, str]

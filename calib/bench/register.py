@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import date, datetime, timedelta, timezone
@@ -13,6 +14,7 @@ from sqlalchemy import func, select
 from calib import store as tables
 from calib.bench.find import instrument_named, method_named
 from calib.bench.method_definition import MethodDefinition, read_definition
+from calib.bench.names import plain_name
 from calib.bench.show_run import local
 from calib.errors import InputError, MethodError, UnreadableFile
 from calib.intake import parse_concentration_unit
@@ -93,13 +95,18 @@ def add_instrument(
     InputError
         When the name is taken or empty.
     """
-    if not name.strip():
-        raise InputError("an instrument needs a name")
+    name = plain_name(name, "the name of the instrument")
+    kind = plain_name(kind, "the kind of the instrument")
+    if response_ceiling is not None and not (math.isfinite(response_ceiling) and response_ceiling > 0):
+        raise InputError(f"a response ceiling of {response_ceiling:g} is not possible; give a number above 0")
     if abs(utc_offset_minutes) > 14 * 60:
         raise InputError(f"a clock offset of {utc_offset_minutes} minutes from UTC is not possible")
     with store.change(action="add instrument", by=by) as session:
-        if session.scalar(select(tables.Instrument.id).where(tables.Instrument.name == name)):
-            raise InputError(f"instrument '{name}' is registered already; choose another name")
+        known = session.scalar(
+            select(tables.Instrument.name).where(func.lower(tables.Instrument.name) == name.lower())
+        )
+        if known is not None:
+            raise InputError(f"instrument '{known}' is registered already; choose another name")
         session.add(
             tables.Instrument(
                 name=name,
@@ -162,7 +169,8 @@ def add_event(store: tables.Store, instrument: str, *, at: datetime, kind: str, 
     """
     if kind not in EVENT_KINDS:
         raise InputError(f"unknown kind of event '{kind}'; known are {', '.join(EVENT_KINDS)}")
-    if not what.strip():
+    what = " ".join(what.split())
+    if not what:
         raise InputError("say in words what happened")
     with store.change(action="add event", by=by) as session:
         row = instrument_named(session, instrument)
@@ -204,7 +212,7 @@ def add_method(store: tables.Store, path: str | Path, *, by: str) -> MethodRecor
     UnreadableFile, MethodError
         When the file cannot be read or contradicts itself; or holds what is stored already.
     """
-    text = _read_text(Path(path))
+    text = read_method_text(Path(path))
     name = read_definition(text).name
     fingerprint = hashlib.sha256(text.encode()).hexdigest()
     with store.change(action="add method", by=by) as session:
@@ -230,7 +238,14 @@ def add_method(store: tables.Store, path: str | Path, *, by: str) -> MethodRecor
     return _method_record(row)
 
 
-def _read_text(path: Path) -> str:
+def read_method_text(path: Path) -> str:
+    """Text of the TOML file of a method.
+
+    Raises
+    ------
+    UnreadableFile
+        When it cannot be read, is no text, or far too large.
+    """
     try:
         if path.stat().st_size > LONGEST_METHOD:
             raise UnreadableFile(f"{path}: too large for a method definition; give the TOML file of a method")
@@ -294,8 +309,8 @@ def add_lot(store: tables.Store, lot: LotRecord, *, by: str) -> None:
 
 
 def _check_lot(lot: LotRecord) -> None:
-    if not lot.name.strip() or not lot.material.strip():
-        raise InputError("a standard lot needs a name and a material")
+    plain_name(lot.name, "the name of the lot")
+    plain_name(lot.material, "the material of the lot")
     if lot.certified_value is not None and lot.unit is None:
         raise InputError(f"lot '{lot.name}': a certified value needs its unit")
     if lot.expanded_uncertainty is not None and lot.coverage_factor is None:

@@ -239,7 +239,7 @@ def _review(
     shift, reasons = _shift(rows, usable, references, responses)
     tracks = [
         *(Track("response", n, responses[:, j], reasons[j]) for j, n in enumerate(NAMES)),
-        Track("check standards", "ln recovery", recovery),
+        Track("check standards", "recovery", recovery),
     ]
     review = review_drift(tracks, accepted, restart)
     runs = tuple(DriftRun(r.id, r.at, r.decision, r.lot, review.signals_of(i)) for i, r in enumerate(rows))

@@ -155,6 +155,11 @@ def _exclude(
     for exclusion in laboratory.get("exclusion", []):
         if exclusion["file"] == name and not show_run(store, number).curves_before:
             record = exclude_readings(
-                store, number, exclusion["readings"], reason=exclusion["reason"], by=exclusion["by"]
+                store,
+                number,
+                exclusion["readings"],
+                reason=exclusion["reason"],
+                reason_class="assignable cause",
+                by=exclusion["by"],
             )
             yield name, record.evaluation.verdict.decision

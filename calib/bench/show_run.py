@@ -19,6 +19,7 @@ from calib.bench.find import (
     run_numbered,
     void_of,
 )
+from calib.bench.history import amendments_of
 from calib.bench.keeping import (
     WITHDRAWN,
     current_quantities,
@@ -32,7 +33,7 @@ from calib.bench.keeping import (
     verdict_record,
 )
 from calib.bench.method_definition import MethodDefinition
-from calib.bench.records import Amendment, Evaluation, LotFacts, Measured, RunHeading, RunRecord
+from calib.bench.records import Evaluation, LotFacts, Measured, RunHeading, RunRecord
 from calib.intake import conversion_factor
 
 
@@ -161,7 +162,8 @@ def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
         curve_run=curve_row.run_id,
         evaluation=evaluation,
         readings=own,
-        amendments=_amendments(session, run),
+        amendments=amendments_of(session, run),
+        dependents=_dependents(session, run),
         curves_before=_curves_before(session, curve_row.run_id),
         attempts_that_day=_attempts(session, run, method.name),
         versions=dict(curve_row.versions),
@@ -276,6 +278,17 @@ def _attempts(session: Session, run: tables.Run, method: str) -> int:
     return int(session.scalar(query) or 0)
 
 
+def _dependents(session: Session, run: tables.Run) -> tuple[int, ...]:
+    """Runs of unknowns that were read on a curve of this run."""
+    query = (
+        select(tables.Run.id)
+        .join(tables.Curve, tables.Curve.id == tables.Run.curve_id)
+        .where(tables.Curve.run_id == run.id)
+        .order_by(tables.Run.id)
+    )
+    return tuple(session.scalars(query))
+
+
 def _lot_facts(session: Session, run_id: int) -> LotFacts | None:
     lot_id = facts_of(session, run_id).lot_id
     if lot_id is None:
@@ -296,48 +309,3 @@ def _lot_facts(session: Session, run_id: int) -> LotFacts | None:
 def _curves_before(session: Session, run_id: int) -> int:
     count = session.scalar(select(func.count()).where(tables.Curve.run_id == run_id))
     return int(count or 1) - 1
-
-
-def _amendments(session: Session, run: tables.Run) -> tuple[Amendment, ...]:
-    """Later decisions about a run, oldest first."""
-    found = [*_exclusions(session, run), *_changed_facts(session, run), *_refits(session, run)]
-    void = void_of(session, run.id)
-    if void:
-        found.append(Amendment(void.at, void.by, "declared void", void.reason))
-    return tuple(sorted(found, key=lambda a: a.at))
-
-
-def _exclusions(session: Session, run: tables.Run) -> list[Amendment]:
-    rows = session.execute(
-        select(tables.Exclusion, tables.Reading)
-        .join(tables.Reading, tables.Reading.id == tables.Exclusion.reading_id)
-        .where(tables.Reading.run_id == run.id)
-    ).all()
-    word = {"exclude": "excluded", "restore": "restored"}
-    return [
-        Amendment(
-            e.at,
-            e.by,
-            f"{word[e.decision]} {r.sample}{f' ({r.position})' if r.position else ''}, {e.reason_class}",
-            e.reason,
-        )
-        for e, r in rows
-    ]
-
-
-def _changed_facts(session: Session, run: tables.Run) -> list[Amendment]:
-    rows = session.scalars(
-        select(tables.RunFacts).where(
-            tables.RunFacts.run_id == run.id, tables.RunFacts.supersedes.is_not(None)
-        )
-    )
-    return [Amendment(f.recorded_at, f.by, "amended the facts of the run", f.reason or "") for f in rows]
-
-
-def _refits(session: Session, run: tables.Run) -> list[Amendment]:
-    rows = session.scalars(
-        select(tables.Curve).where(tables.Curve.run_id == run.id, tables.Curve.supersedes.is_not(None))
-    )
-    return [
-        Amendment(c.at, c.by, f"curve {c.id} superseded curve {c.supersedes}", c.reason or "") for c in rows
-    ]

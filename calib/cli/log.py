@@ -93,12 +93,9 @@ def _show_dry_run(evaluated: Any, as_json: bool) -> int:
 
         echo_json(preview_json(evaluated))
         return 0
-    from calib.cli.run_screen import show_plan
-    from calib.cli.screen import say
+    from calib.cli.run_screen import show_plan, show_preview
 
     show_plan(evaluated.plan)
-    for evaluation in evaluated.evaluations:
-        say(f"would be {evaluation.verdict.decision}; nothing was written (--dry-run)")
-        for reason in evaluation.verdict.reasons:
-            say(f"  ✗ {reason}")
+    for run, evaluation in zip(evaluated.plan.runs, evaluated.evaluations, strict=True):
+        show_preview(run.definition, evaluation)
     return 0

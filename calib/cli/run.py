@@ -89,7 +89,13 @@ def show(ctx: click.Context, number: int, rules: bool, as_json: bool) -> None:
 @click.argument("number", type=int)
 @click.argument("readings", nargs=-1, required=True)
 @reason_option
-@click.option("--cause", default="assignable cause", help="assignable cause (default), outlying or other.")
+@click.option(
+    "--cause",
+    default="other",
+    show_default=True,
+    metavar="KIND",
+    help="Kind of reason: assignable cause (known apart from the fit), outlying or other.",
+)
 @by_option
 @json_option
 @click.pass_context

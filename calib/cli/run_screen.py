@@ -8,11 +8,13 @@ from typing import TYPE_CHECKING
 
 from calib.bench.flags import in_words
 from calib.cli.screen import print_table, say
-from calib.report.wording import number, percent, result_text, rounded
+from calib.report.wording import LARGEST_PLAIN, SMALLEST_PLAIN, number, percent, result_text, rounded
 
 if TYPE_CHECKING:
+    from calib.acceptance import CriterionResult
+    from calib.bench.method_definition import MethodDefinition
     from calib.bench.plan_run import LogPlan
-    from calib.bench.records import QuantityRecord, RunRecord, StandardRecord, VerdictRecord
+    from calib.bench.records import Evaluation, QuantityRecord, RunRecord, StandardRecord, VerdictRecord
 
 STYLES = {"accepted": "bold green", "accepted with exclusions": "bold yellow", "rejected": "bold red"}
 
@@ -34,11 +36,11 @@ def show_plan(plan: LogPlan) -> None:
 
 def show_run(record: RunRecord) -> None:
     """One run: verdict, curve, standards, checks, samples."""
-    heading = record.heading
+    heading, definition = record.heading, record.definition
     if heading.kind == "calibration":
         show_verdict(record)
-        show_curve(record)
-        show_standards(record.evaluation.standards, heading.concentration_unit)
+        show_curve(record.evaluation)
+        show_standards(record.evaluation.standards, definition.concentration_unit)
     else:
         say(
             f"run {heading.id}: unknowns on {heading.instrument}, read on the curve of run {record.curve_run}",
@@ -46,10 +48,23 @@ def show_run(record: RunRecord) -> None:
         )
     if heading.void_reason is not None:
         say(f"VOID: {heading.void_reason}", "bold red")
-    show_checks(record)
-    show_samples(record)
+    show_checks(record.evaluation, definition)
+    show_samples(record.evaluation)
+    if record.dependents:
+        say(f"  samples of run {', '.join(map(str, record.dependents))} are read on this curve")
     for amendment in record.amendments:
         say(f"  {amendment.at:%Y-%m-%d %H:%M} {amendment.by}: {amendment.what}: {amendment.reason}")
+
+
+def show_preview(definition: MethodDefinition, evaluation: Evaluation) -> None:
+    """What logging would come to; nothing is in the store."""
+    verdict = evaluation.verdict
+    say(f"would be {verdict.decision}; nothing was written (--dry-run)", STYLES[verdict.decision])
+    show_reasons(verdict)
+    show_curve(evaluation)
+    show_standards(evaluation.standards, definition.concentration_unit)
+    show_checks(evaluation, definition)
+    show_samples(evaluation)
 
 
 def show_verdict(record: RunRecord) -> None:
@@ -60,13 +75,18 @@ def show_verdict(record: RunRecord) -> None:
         f"v{heading.method_version} · {heading.at:%Y-%m-%d %H:%M} · {heading.operator}",
         STYLES[verdict.decision],
     )
-    for reason in verdict.reasons:
-        say(f"  ✗ {reason}")
-    if verdict.lowest is not None and verdict.highest is not None:
+    show_reasons(verdict)
+    if verdict.accepted and verdict.lowest is not None and verdict.highest is not None:
         say(
             f"  calibrated range {number(verdict.lowest)} to {number(verdict.highest)} "
             f"{record.definition.concentration_unit}"
         )
+
+
+def show_reasons(verdict: VerdictRecord) -> None:
+    """The failing rules in words and figures."""
+    for reason in verdict.reasons:
+        say(f"  ✗ {reason}")
 
 
 def show_rules(verdict: VerdictRecord) -> None:
@@ -78,7 +98,7 @@ def show_rules(verdict: VerdictRecord) -> None:
                 c.what,
                 "" if c.limit is None else number(c.limit),
                 "–" if c.observed is None else number(c.observed),
-                "yes" if c.passed else "NO",
+                _kept(c),
                 c.source,
             )
             for c in verdict.criteria
@@ -86,9 +106,15 @@ def show_rules(verdict: VerdictRecord) -> None:
     )
 
 
-def show_curve(record: RunRecord) -> None:
+def _kept(criterion: CriterionResult) -> str:
+    if criterion.limit is not None and criterion.observed is None and criterion.passed:
+        return "nothing to judge"
+    return "yes" if criterion.passed else "NO"
+
+
+def show_curve(evaluation: Evaluation) -> None:
     """Parameters with their standard uncertainty, and findings."""
-    curve = record.evaluation.curve
+    curve = evaluation.curve
     errors = curve.standard_errors
     parts = [
         f"{name} {number(value)} (fixed)" if name in curve.fixed else _with_u(name, value, errors[name])
@@ -104,6 +130,8 @@ def show_curve(record: RunRecord) -> None:
 
 
 def _with_u(name: str, value: float, u: float) -> str:
+    if not u > 0 or not SMALLEST_PLAIN <= max(abs(value), u) < LARGEST_PLAIN:
+        return f"{name} {number(value)} (u {number(u, 2)})"
     shown, uncertainty = rounded(value, u)
     return f"{name} {shown} (u {uncertainty})"
 
@@ -130,27 +158,27 @@ def show_standards(standards: Iterable[StandardRecord], unit: str) -> None:
 def _relative_error(standard: StandardRecord) -> str:
     if standard.relative_error is None:
         return standard.absent_cause or "–"
-    text = f"{100 * standard.relative_error:+.1f} %"
+    text = f"{100 * standard.relative_error:+.1f} %".replace("-0.0", "+0.0")
     return f"({text})" if standard.excluded else text
 
 
-def show_checks(record: RunRecord) -> None:
+def show_checks(evaluation: Evaluation, definition: MethodDefinition) -> None:
     """Check standards and controls with their recovery."""
-    unit = record.definition.concentration_unit
+    unit = definition.concentration_unit
     rows = []
-    for q in record.evaluation.quantities:
+    for q in evaluation.quantities:
         if q.role == "unknown":
             continue
         found = q.concentration if q.concentration is not None else q.estimate
         recovery = "–" if found is None or not q.nominal else percent(found / q.nominal)
-        rows.append((q.role, q.sample, number(q.nominal or 0.0), _cell(q, record), recovery))
+        rows.append((q.role, q.sample, number(q.nominal or 0.0), _cell(q, evaluation), recovery))
     if rows:
         print_table(("Check", "Sample", f">Nominal [{unit}]", ">Found", ">Recovery"), rows)
 
 
-def show_samples(record: RunRecord) -> None:
+def show_samples(evaluation: Evaluation) -> None:
     """Unknowns, flagged ones first."""
-    samples = [q for q in record.evaluation.quantities if q.role == "unknown"]
+    samples = [q for q in evaluation.quantities if q.role == "unknown"]
     if not samples:
         say("  no unknowns in this run")
         return
@@ -163,7 +191,7 @@ def show_samples(record: RunRecord) -> None:
                 q.sample,
                 str(q.replicates),
                 f"× {number(q.dilution)}" if q.dilution != 1 else "",
-                _cell(q, record),
+                _cell(q, evaluation),
                 "; ".join(in_words(f) for f in q.flags),
             )
             for q in ordered
@@ -171,6 +199,6 @@ def show_samples(record: RunRecord) -> None:
     )
 
 
-def _cell(q: QuantityRecord, record: RunRecord) -> str:
-    verdict = record.evaluation.verdict
+def _cell(q: QuantityRecord, evaluation: Evaluation) -> str:
+    verdict = evaluation.verdict
     return result_text(q, verdict.lowest, verdict.highest)

@@ -6,6 +6,8 @@ from collections.abc import Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
+from calib.report.wording import visible
+
 if TYPE_CHECKING:
     from rich.console import Console
 
@@ -32,13 +34,13 @@ def print_table(headings: Sequence[str], rows: Iterable[Sequence[str]], title: s
         right = heading.startswith(">")
         table.add_column(heading.lstrip(">"), justify="right" if right else "left", overflow="fold")
     for row in rows:
-        table.add_row(*(Text(cell) for cell in row))
+        table.add_row(*(Text(visible(cell)) for cell in row))
     console().print(table)
 
 
 def say(text: str = "", style: str | None = None) -> None:
     """A line of text; style is a help for the eye, never the message."""
-    console().print(text, style=style)
+    console().print(visible(text), style=style)
 
 
 @contextmanager

@@ -168,7 +168,10 @@ def problem_of(
     lower, upper = _bounds(model, standards, bounds)
     outside = ~free & ((template < lower) | (template > upper)) & model.positive
     if outside.any():
-        raise ModelError(f"fixed {model.names[int(np.argmax(outside))]} lies outside what the model allows")
+        i = int(np.argmax(outside))
+        raise ModelError(
+            f"fixed {model.names[i]} = {template[i]:g} lies outside [{lower[i]:g}, {upper[i]:g}], what the model allows"
+        )
     return Problem(
         model=model,
         x=standards.concentration,

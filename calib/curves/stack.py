@@ -186,7 +186,7 @@ def fit_stack(
     problem = problem_of(chosen, template, fixed or {}, bounds or {}, scalar)
     status = _statuses(x, y, int(problem.free.sum()))
     usable = np.flatnonzero([s == OK for s in status])
-    if isinstance(requested, str) or isinstance(chosen, CustomModel):
+    if isinstance(requested, str) or isinstance(chosen, CustomModel) or not usable.size:
         return _one_by_one(problem, x, y, requested, usable, status, fixed, bounds, starts)
     kept = np.where(np.isinf(y), np.nan, y)
     levels, bound = _levels(x, kept[:, usable], requested)

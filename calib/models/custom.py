@@ -46,8 +46,7 @@ class CustomModel(ResponseModel):
                 values = as_array(self._response(x, *p))
         except (ArithmeticError, TypeError, ValueError, LookupError) as cause:
             raise ModelError(f"model '{self.name}' fails at x of shape {x.shape}: {cause!r}") from cause
-        rows = x.shape[:1] if x.ndim > 1 and values.ndim == 1 else x.shape
-        return values if values.ndim else np.broadcast_to(values, rows)
+        return values if values.ndim else as_array(np.broadcast_to(values, x.shape))
 
     def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Columns of the gradient."""
@@ -70,10 +69,11 @@ class CustomModel(ResponseModel):
         stepped = self._complex_step(x, p, j)
         if stepped is None:
             return central
+        stepped = np.broadcast_to(stepped, central.shape)
         # A function that drops or conjugates the imaginary part gives itself away here.
         size = np.max(np.abs(central), initial=0.0)
         agrees = np.all(np.abs(stepped - central) <= 1e-3 * size + 1e-12 * np.abs(stepped))
-        return stepped if agrees else central
+        return as_array(stepped) if agrees else central
 
     def _complex_step(self, x: Array, p: Array, j: int) -> Array | None:
         step = 1e-30 * max(abs(p[j]), 1e-30)
@@ -118,11 +118,15 @@ class CustomModel(ResponseModel):
         return np.empty((0, len(self.parameters)))
 
     def branch(self, p: Parameters, lowest: float, highest: float) -> tuple[float, float]:
-        """Monotone stretch around the standards, at most one span beyond either end."""
+        """Monotone stretch around the standards, at most one span beyond either end.
+
+        Concentrations below zero are not looked for where no standard has one.
+        """
         span = highest - lowest
-        x = np.linspace(lowest - span, highest + span, 1201)
+        first_x = lowest - span if lowest < 0 else max(lowest - span, 0.0)
+        x = np.linspace(first_x, highest + span, 1201)
         steps = np.diff(self.response(x, p))
-        middle = steps.size // 2
+        middle = int(np.searchsorted(x, 0.5 * (lowest + highest)))
         sign = np.sign(steps[middle])
         broken = np.flatnonzero((np.sign(steps) != sign) | ~np.isfinite(steps))
         below, above = broken[broken <= middle], broken[broken > middle]

@@ -151,7 +151,7 @@ def axis_of(curve: Curve) -> Axis:
         direction,
         _turning(curve, low) if low == branch_low else None,
         _turning(curve, high) if high == branch_high else None,
-        -np.inf,
+        0.0 if isinstance(model, CustomModel) and low >= 0 else -np.inf,
     )
 
 

@@ -23,6 +23,7 @@ if TYPE_CHECKING:
         StandardRecord,
     )
     from calib.bench.register import MethodRecord
+    from calib.bench.replay_records import Outcome, Replay, ReplayedRun
     from calib.bench.review_drift import DriftRecord
 
 LOG = "calib-log-1"
@@ -30,6 +31,7 @@ RUN = "calib-run-1"
 RUNS = "calib-runs-1"
 DRIFT = "calib-drift-1"
 PREVIEW = "calib-preview-1"
+REPLAY = "calib-replay-1"
 
 
 def log_json(file: str, records: Iterable[RunRecord]) -> dict[str, Any]:
@@ -49,6 +51,7 @@ def run_json(record: RunRecord) -> dict[str, Any]:
         "checks": [_check(q) for q in evaluation.quantities if q.role in ("check", "first-check")],
         "quantities": [_quantity(q) for q in evaluation.quantities if q.role in ("unknown", "control")],
         "amendments": [plain(a) for a in record.amendments],
+        "dependent_runs": list(record.dependents),
         "earlier_curves": record.curves_before,
         "attempts_that_day": record.attempts_that_day,
         "versions": dict(record.versions),
@@ -133,6 +136,53 @@ def drift_json(record: DriftRecord) -> dict[str, Any]:
         "series": series,
         "baseline_runs": record.baseline_runs,
         "provisional": record.review.provisional,
+    }
+
+
+def replay_json(record: Replay) -> dict[str, Any]:
+    """What `calib replay --json` prints: the runs that would change, each before and after."""
+    return {
+        "schema": REPLAY,
+        "methods": [plain(m) for m in record.methods],
+        "runs": record.runs,
+        "void_runs_left_out": record.void,
+        "samples": record.samples,
+        "verdict_changes": [
+            {"before": before, "after": after, "runs": n}
+            for (before, after), n in record.verdict_changes.items()
+        ],
+        "sample_changes": record.sample_changes,
+        "changed": [_replayed(run) for run in record.changed],
+    }
+
+
+def _replayed(run: ReplayedRun) -> dict[str, Any]:
+    return {
+        "run": run.id,
+        "kind": run.kind,
+        "instrument": run.instrument,
+        "method": run.method,
+        "method_version": run.version,
+        "at": run.at.isoformat(),
+        "changes": list(run.changes),
+        "first_reason": run.first_reason,
+        "before": _outcome(run.before, run.unit),
+        "after": _outcome(run.after, run.unit),
+        "sample_count": run.sample_count,
+        "largest_change": run.largest_change,
+        "samples": [
+            plain(s) | {"change": s.change, "relative_change": s.relative_change, "unit": run.unit}
+            for s in run.samples
+        ],
+    }
+
+
+def _outcome(outcome: Outcome, unit: str) -> dict[str, Any]:
+    return {
+        "decision": outcome.decision,
+        "reasons": list(outcome.reasons),
+        "calibrated_range": plain(outcome.calibrated) | {"unit": unit},
+        "working_range": plain(outcome.working) | {"unit": unit},
     }
 
 

@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 from calib.report import curve_wording, run_rows
 from calib.report.curve_figure import curve_figure
 from calib.report.files import picture
-from calib.report.wording import LEVEL_DIGITS, number, with_unit
+from calib.report.wording import LEVEL_DIGITS, number, visible, with_unit
 
 if TYPE_CHECKING:
     from jinja2 import Template
@@ -58,10 +58,16 @@ def _template() -> Template:
         loader=PackageLoader("calib.report", "templates"),
         autoescape=True,
         undefined=StrictUndefined,
+        finalize=_made_visible,
         trim_blocks=True,
         lstrip_blocks=True,
     )
     return environment.get_template("run.html.j2")
+
+
+def _made_visible(value: Any) -> Any:
+    """Write out characters that would reorder or hide text; markup of our own passes."""
+    return visible(value) if type(value) is str else value
 
 
 def _view(record: RunRecord) -> dict[str, Any]:

@@ -15,6 +15,8 @@ if TYPE_CHECKING:
 
 MISSING = "–"
 NO_RESULT = "no result"
+# Replicates that contradict each other make the interval untrue: the value is printed alone.
+SPREAD = "replicate-spread"
 UNCERTAINTY_DIGITS = 2
 LIMIT_DIGITS = 3
 LEVEL_DIGITS = 6
@@ -73,6 +75,13 @@ def percent(fraction: float | None, digits: int = 1) -> str:
 def with_unit(text: str, unit: str) -> str:
     """Append a unit; a bare ratio (unit '1') has none."""
     return text if unit == "1" else f"{text} {unit}"
+
+
+def visible(text: str) -> str:
+    """Text with control and direction characters written out, so that nothing hides on a screen."""
+    if text.isprintable():
+        return text
+    return "".join(c if c.isprintable() else f"<U+{ord(c):04X}>" for c in text)
 
 
 def in_brackets(name: str, unit: str) -> str:
@@ -137,12 +146,16 @@ def result_text(q: QuantityRecord, lowest: float | None, highest: float | None) 
         interval is lopsided, '≥ 3.14 ug/L' where it is open, '> 6.4 ug/L: dilute' and '< 0.25 ug/L'
         outside the calibrated range, else 'no result'.
     """
+    if q.state == "off-curve":
+        return NO_RESULT
     if q.position == "above":
         return _above(q, highest, "{}: dilute")
     if q.position == "below":
         return _below(q, lowest, "{}")
     if q.concentration is None:
         return NO_RESULT
+    if SPREAD in q.flags:
+        return with_unit(f"{value_text(q)}, no ±", q.unit)
     if q.state == "ok" and q.expanded is not None:
         return with_unit(plus_minus(q.concentration, q.expanded), q.unit)
     if q.lower is not None and q.upper is not None and q.state == "asymmetric":
@@ -164,6 +177,8 @@ def quantity_text(q: QuantityRecord, lowest: float | None, highest: float | None
         For example '1.53 ug/L', '≥ 3.14 ug/L (97.5 % one-sided)', '> 6.4 ug/L (highest standard):
         dilute', '< 0.25 ug/L (lowest standard)', 'no result'.
     """
+    if q.state == "off-curve":
+        return NO_RESULT
     if q.position == "above":
         return _above(q, highest, "{} (highest standard): dilute")
     if q.position == "below":
@@ -190,7 +205,7 @@ def interval_text(q: QuantityRecord) -> str:
     --------
     An open end is said in words: 'from 3.14, no upper limit'.
     """
-    if q.concentration is None or q.position != "inside":
+    if q.concentration is None or q.position != "inside" or SPREAD in q.flags:
         return MISSING
     if q.state in ("ok", "asymmetric") and q.lower is not None and q.upper is not None:
         return _bracketed(q)
@@ -203,7 +218,7 @@ def interval_text(q: QuantityRecord) -> str:
 
 def expanded_text(q: QuantityRecord) -> str:
     """Write the expanded uncertainty; a dash where the interval is no value ± U."""
-    if q.concentration is None or q.state != "ok" or q.expanded is None:
+    if q.concentration is None or q.state != "ok" or q.expanded is None or SPREAD in q.flags:
         return MISSING
     return rounded(q.concentration, q.expanded)[1]
 

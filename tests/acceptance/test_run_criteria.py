@@ -87,11 +87,22 @@ def test_saturation_is_judged_without_being_asked_for():
     assert verdict.decision == "rejected"
 
 
-@pytest.mark.parametrize("code", ["not-converged", "not-identifiable", "too-few-levels", "at-bound"])
+@pytest.mark.parametrize(
+    "code",
+    [
+        "not-converged",
+        "not-identifiable",
+        "too-few-levels",
+        "at-bound",
+        "no-residual-freedom",
+        "no-scatter",
+        "flat",
+    ],
+)
 def test_an_unusable_curve_is_rejected_whatever_the_limits(code):
     verdict = judge(evidence(GOOD, findings=((code, "said in words"),)), ())
     assert verdict.decision == "rejected"
-    assert verdict.reasons == ("the fit converged and its parameters are determined: said in words",)
+    assert verdict.reasons == ("the fit converged, and nothing forbids the use of its curve: said in words",)
 
 
 def test_a_fit_that_did_not_converge_is_rejected_even_without_a_finding():

@@ -39,7 +39,7 @@ def test_an_exclusion_with_a_reason_mends_a_spoiled_run(bench):
     assert (out.key, out.reason, out.fitted) == (3, "drop fell in", False)
     assert record.curves_before == 1
     assert [a.what for a in record.amendments] == [
-        "excluded S2 (3), assignable cause",
+        "excluded S2 (3), other",
         f"curve {record.curve_id} superseded curve 1",
     ]
 

@@ -65,9 +65,9 @@ LOT = LotRecord("L", "water", 1.0, "mg/L", 0.1, 2.0, None, None, None, None)
     ("name", "changed", "words"),
     [
         ("LX-1", {}, "instrument 'LX-1' is registered already"),
-        (" ", {}, "an instrument needs a name"),
+        (" ", {}, "the name of the instrument is empty"),
         ("N", {"utc_offset_minutes": 900}, "a clock offset of 900 minutes from UTC is not possible"),
-        ("N", {"response_ceiling": float("nan")}, "response_ceiling is nan"),
+        ("N", {"response_ceiling": float("nan")}, "a response ceiling of nan is not possible"),
     ],
 )
 def test_an_instrument_that_cannot_be_is_refused(bench, name, changed, words):
@@ -79,7 +79,7 @@ def test_an_instrument_that_cannot_be_is_refused(bench, name, changed, words):
     ("changed", "words"),
     [
         ({"name": "A-1"}, "standard lot 'A-1' is registered already"),
-        ({"name": ""}, "needs a name and a material"),
+        ({"name": ""}, "the name of the lot is empty"),
         ({"unit": None}, "a certified value needs its unit"),
         ({"unit": "cups"}, "'cups' is no known unit"),
         ({"coverage_factor": None}, "needs its coverage factor k"),

@@ -52,7 +52,7 @@ def test_a_day_is_logged_judged_and_quantified(bench):
     assert record.evaluation.verdict.decision == "accepted"
     assert quantity(record, "U1").concentration == pytest.approx(3.01, abs=0.01)
     assert quantity(record, "U1").replicates == 2
-    assert quantity(record, "U2").flags == ("single-reading",)
+    assert quantity(record, "U2").flags == ()
 
 
 def test_one_file_is_one_entry_of_the_record_chain(bench):
@@ -101,9 +101,9 @@ def test_the_operator_is_who_acts_where_the_file_is_silent(bench):
 
 
 def test_the_time_of_the_first_reading_serves_where_there_is_no_other(bench):
-    text = long_form({"alpha": a_day()}, at="2026-04-03 07:30")
+    text = long_form({"alpha": a_day()}, at="2026-04-01 07:30")
     (record,) = bench.laboratory.log(bench.file("a.csv", text), instrument="LX-1", methods=["line-a"])
-    assert record.heading.at.isoformat() == "2026-04-03T07:30:00+02:00"
+    assert record.heading.at.isoformat() == "2026-04-01T07:30:00+02:00"
 
 
 # Refusals.
@@ -197,12 +197,14 @@ def test_the_same_readings_in_another_layout_are_refused(bench):
     bench.log(a_day())
     text = long_form({"alpha": a_day()})
     words = refused(bench, text, DuplicateFile, name="other.csv", instrument="LX-1", methods=["line-a"])
-    assert "the same readings in another form is logged already as run 1" in words
+    assert "the same readings, in another form, are logged already as run 1" in words
 
 
-def test_other_readings_at_the_same_time_are_no_duplicate(bench):
+def test_an_edited_copy_with_the_same_start_is_refused(bench):
     bench.log(a_day())
-    assert bench.log([*a_day(), unknown("U3", 2.0)], "more.csv").heading.id == 2
+    edited = header_block([*a_day(), unknown("U3", 2.0)])
+    words = refused(bench, edited, DuplicateFile, name="more.csv")
+    assert "run 1 of LX-1 and method line-a started at the same time, 2026-04-01 08:00:00" in words
 
 
 def test_a_duplicate_found_only_while_writing_is_refused(bench):

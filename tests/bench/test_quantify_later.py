@@ -57,7 +57,8 @@ def test_an_expired_curve_is_refused_to_the_minute(bench):
     refused(
         bench,
         TWO,
-        r"curve of run 1 \(2026-04-01 08:00\) was valid for 24 h and has expired at 2026-04-02 08:01",
+        r"curve of run 1 \(2026-04-01 08:00\) was valid for 24 h, until 2026-04-02 08:00, "
+        "and these samples were measured 2026-04-02 08:01",
         started="2026-04-02T08:01:00+02:00",
     )
 

@@ -62,7 +62,7 @@ def test_a_workbook_that_is_none_is_refused(desk):
     [
         (("--instrument", "LX-9"), "the file says instrument LX-1, but --instrument says LX-9"),
         (("--method", "line-z"), "the file says method line-a, but --method says line-z"),
-        (("--lot", "Z-9"), "unknown standard lot 'Z-9'; known are A-1 (add one with calib lot add)"),
+        (("--lot", "Z-9"), "the file says lot A-1, but --lot says Z-9; one is wrong"),
         (("--layout", "pdf"), "'pdf' is no reading layout: use one of workbook"),
         (("--layout", "workbook"), "day.csv"),
         (("--at", "yesterday"), "--at 'yesterday' is no time; write 2026-03-02T08:20"),

@@ -37,7 +37,7 @@ REFUSED: list[tuple[str, type[CalibError], str, dict[str, Any]]] = [
     ("bounds upside down", ModelError, r"lower < upper, got \(3, 1\)", {"bounds": {"slope": (3, 1)}}),
     ("bound below zero", ModelError, "must allow values above 0", {"bounds": {"midpoint": (-3, -1)}}),
     ("fixed at nan", ModelError, "finite value", {"fixed": {"zero": np.nan}}),
-    ("fixed slope below zero", ModelError, "fixed slope lies outside", {"fixed": {"slope": -1.0}}),
+    ("fixed slope below zero", ModelError, "fixed slope = -1 lies outside", {"fixed": {"slope": -1.0}}),
     ("nothing free", ModelError, "all parameters .* are fixed", {"model": "proportional", "fixed": {"slope": 1.0}}),
     ("unknown solver", ModelError, "unknown solver 'magic'; known are least-squares, simplex", {"solver": "magic"}),
     ("unknown noise", MethodError, "unknown noise model 'loud'; known are uniform, relative", {"noise": "loud"}),

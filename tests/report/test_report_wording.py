@@ -119,7 +119,25 @@ def test_result_by_state(q: QuantityRecord, short: str, long: str, interval: str
     assert wording.interval_text(q) == interval
 
 
-@pytest.mark.parametrize("state", ["ok", "asymmetric", "open-above", "no-estimate", "off-curve"])
+def test_a_response_the_curve_cannot_explain_is_no_statement_about_the_sample() -> None:
+    for position in ("above", "below"):
+        q = replace(INSIDE, position=position, state="off-curve", **OUTSIDE)
+        assert wording.result_text(q, 0.25, 6.4) == "no result"
+        assert wording.quantity_text(q, 0.25, 6.4) == "no result"
+
+
+def test_replicates_that_contradict_each_other_get_no_interval() -> None:
+    q = replace(INSIDE, flags=("replicate-spread",))
+    assert "±" not in wording.result_text(q, 0.25, 6.4).replace("no ±", "")
+    assert wording.interval_text(q) == wording.expanded_text(q) == "–"
+
+
+def test_characters_that_hide_or_reorder_are_written_out() -> None:
+    assert wording.visible("L-1\u202e\x1b[31m") == "L-1<U+202E><U+001B>[31m"
+    assert wording.visible("Prüf-1 µg") == "Prüf-1 µg"
+
+
+@pytest.mark.parametrize("state", ["ok", "asymmetric", "open-above", "no-estimate"])
 def test_outside_the_range_only_the_limit_is_printed(state: str) -> None:
     above = replace(INSIDE, position="above", state=state, **OUTSIDE)
     below = replace(above, position="below")
