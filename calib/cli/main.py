@@ -19,6 +19,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "quantify": ("log:quantify", "Read later unknowns on the curve in force."),
     "run": ("run:run", "List, show and correct runs."),
     "drift": ("drift:drift", "Review an instrument over time."),
+    "replay": ("replay:replay", "Evaluate past runs under another method version; nothing is written."),
     "report": ("report:report", "Write the report of a run to a file."),
     "plot": ("report:plot", "Draw the curve of a run to a file."),
     "store": ("store:store", "Check, back up and upgrade the store."),
