@@ -382,3 +382,11 @@ def test_rows_are_counted_like_a_sequence() -> None:
     assert len(list(stack)) == 6
     with pytest.raises(IndexError, match="run 6 of a stack of 6"):
         stack[6]
+
+
+@pytest.mark.parametrize("noise", ["uniform", "power-of-mean"])
+def test_a_stack_in_which_no_run_can_be_fitted_says_so_for_each(noise: str) -> None:
+    nothing = np.full((2, 4), np.nan)
+    stack = calib.fit_stack([1.0, 2.0, 4.0, 8.0], nothing, model="saturation", noise=noise)
+    assert stack.status == ("too-few-levels",) * 2
+    assert [f.code for curve in stack for f in curve.findings] == ["too-few-levels"] * 2
