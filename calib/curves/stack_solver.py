@@ -12,27 +12,24 @@ after one last full step, and leaves the stack.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from calib.curves.single_solver import End, Single, solve_single
+from calib.curves.stack_roles import Roles, Rules, roles_of
 from calib.models import ResponseModel
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
 CHUNK = 4096
-STEPS = 250
-# A predicted decrease of this share of the weighted sum, pure error included, moves a
-# parameter by about a hundred-millionth of its standard error; one full step follows.
-ENOUGH = 1e-17
-# Floor for noise-free data, as a share of the weighted squares of the responses.
-FLOOR = 1e-26
-# Below this share a decrease of the sum is lost in its rounding.
-CLOSE = 1e-13
-FIRST_DAMPING, MOST_DAMPING, NO_DAMPING = 1e-3, 1e12, 1e-7
+RULES = Rules()
+# Up to so many runs are solved one after the other on plain vectors.
+FEW = 6
 # Leave the stack when so large a part of it is finished: copying costs less than carrying on.
 LEAVE_SHARE = 0.125
 
@@ -105,18 +102,6 @@ class StackSolution:
 
 
 @dataclass(frozen=True, slots=True)
-class _Roles:
-    """What happens to each parameter: eliminated, searched, or held."""
-
-    eliminated: tuple[int, ...]
-    searched: tuple[int, ...]
-    in_logarithm: tuple[bool, ...]
-    held_linear: tuple[int, ...]
-    amplitude: tuple[tuple[int, float], ...]
-    unit: Array
-
-
-@dataclass(frozen=True, slots=True)
 class _Point:
     """A stack evaluated at searched coordinates."""
 
@@ -143,6 +128,8 @@ def solve_stack(stack: Stack, starts: Array) -> StackSolution:
         Runs that cannot be evaluated at their start keep it, with an infinite total.
     """
     roles = _roles(stack)
+    if stack.runs <= FEW:
+        return _solve_few(stack, roles, starts)
     parts = [
         _solve_chunk(stack.take(slice(i, i + CHUNK)), roles, starts[:, i : i + CHUNK])
         for i in range(0, stack.runs, CHUNK)
@@ -161,26 +148,56 @@ def _some(values: Array, which: NDArray[np.intp] | slice) -> Array:
     return values if values.shape[-1] == 1 else values[:, which]
 
 
-def _roles(stack: Stack) -> _Roles:
-    """Eliminate the free linear parameters without bounds; search the other free ones."""
-    model, free = stack.model, stack.free
+def _roles(stack: Stack) -> Roles:
     unbounded = np.all(np.isneginf(stack.lower), axis=1) & np.all(np.isposinf(stack.upper), axis=1)
-    eliminated = model.linear & free & unbounded
-    searched = free & ~eliminated
-    unit = np.zeros(free.size)
-    for name, weight in model.amplitude.items():
-        unit[model.index(name)] = max(weight, 0.0)
-    return _Roles(
-        tuple(int(i) for i in np.flatnonzero(eliminated)),
-        tuple(int(i) for i in np.flatnonzero(searched)),
-        tuple(bool(model.positive[i]) for i in np.flatnonzero(searched)),
-        tuple(int(i) for i in np.flatnonzero(model.linear & ~eliminated)),
-        tuple((model.index(name), weight) for name, weight in model.amplitude.items()),
-        unit,
+    return roles_of(stack.model, tuple(stack.free.tolist()), tuple(unbounded.tolist()))
+
+
+def _solve_few(stack: Stack, roles: Roles, starts: Array) -> StackSolution:
+    """The same steps, one run after the other."""
+    runs = stack.runs
+    found = StackSolution(
+        np.array(starts, dtype=np.float64),
+        np.full(runs, np.inf),
+        np.full(runs, np.inf),
+        np.zeros(runs, dtype=np.intp),
+    )
+    with np.errstate(all="ignore"):
+        theta = _coordinates(roles, starts)
+        low, high = _limits(stack, roles)
+        for i in range(runs):
+            end = solve_single(_single(stack, i, low, high), roles, RULES, theta[:, i].tolist())
+            _write_single(found, i, end, stack, roles)
+    return found
+
+
+def _single(stack: Stack, i: int, low: Array, high: Array) -> Single:
+    def column(values: Array) -> Array:
+        return values[:, 0] if values.shape[1] == 1 else np.ascontiguousarray(values[:, i])
+
+    return Single(
+        stack.model,
+        column(stack.x),
+        column(stack.y),
+        column(stack.root_weight),
+        float(stack.pure[i]),
+        stack.template.tolist(),
+        column(low).tolist(),
+        column(high).tolist(),
     )
 
 
-def _solve_chunk(stack: Stack, roles: _Roles, starts: Array) -> StackSolution:
+def _write_single(found: StackSolution, i: int, end: End, stack: Stack, roles: Roles) -> None:
+    p = stack.template.tolist()
+    for value, j in zip(end.point.linear, roles.eliminated, strict=True):
+        p[j] = value
+    for value, j, log in zip(end.theta, roles.searched, roles.in_logarithm, strict=True):
+        p[j] = math.exp(value) if log else value
+    found.parameters[:, i] = p
+    found.total[i], found.tangent[i], found.steps[i] = end.point.total, end.tangent, end.steps
+
+
+def _solve_chunk(stack: Stack, roles: Roles, starts: Array) -> StackSolution:
     """Iterate until every run of the chunk is finished."""
     runs = stack.runs
     found = StackSolution(
@@ -190,18 +207,18 @@ def _solve_chunk(stack: Stack, roles: _Roles, starts: Array) -> StackSolution:
         np.zeros(runs, dtype=np.intp),
     )
     with np.errstate(all="ignore"):
-        floor = FLOOR * np.sum((stack.root_weight * stack.y) ** 2, axis=0)
+        floor = RULES.floor * np.sum((stack.root_weight * stack.y) ** 2, axis=0)
         _iterate(stack, roles, _coordinates(roles, starts), floor, found)
     return found
 
 
-def _iterate(stack: Stack, roles: _Roles, theta: Array, floor: Array, found: StackSolution) -> None:
+def _iterate(stack: Stack, roles: Roles, theta: Array, floor: Array, found: StackSolution) -> None:
     index = np.arange(stack.runs)
     low, high = _limits(stack, roles)
     here = _evaluate(stack, roles, theta)
     damping = np.zeros(stack.runs)
     recorded = np.zeros(stack.runs, dtype=bool)
-    for count in range(1, STEPS + 1):
+    for count in range(1, RULES.steps + 1):
         normal, slope = _normal_equations(here)
         step, predicted = _step(normal, slope, damping, _held_at_bound(theta, slope, low, high))
         reach = _reach(theta, step, low, high)
@@ -209,15 +226,17 @@ def _iterate(stack: Stack, roles: _Roles, theta: Array, floor: Array, found: Sta
         there = _evaluate(stack, roles, trial)
         # Close to the minimum the sums no longer tell two points apart; the step still does.
         total = here.total + stack.pure
-        close = predicted <= CLOSE * total + floor
-        taken = (there.total < here.total) | (close & (there.total <= here.total * (1.0 + CLOSE) + floor))
-        enough = predicted <= ENOUGH * total + floor
+        close = predicted <= RULES.close * total + floor
+        taken = (there.total < here.total) | (
+            close & (there.total <= here.total * (1.0 + RULES.close) + floor)
+        )
+        enough = predicted <= RULES.enough * total + floor
         last = enough & (damping == 0.0) & (reach == 1.0)
-        stuck = damping >= MOST_DAMPING
+        stuck = damping >= RULES.most_damping
         done = last | (enough & taken) | stuck | ~np.isfinite(here.total) | (predicted <= 0.0)
         theta, here = _accept(taken, trial, theta, there, here)
         damping = _next_damping(damping, taken)
-        if count == STEPS:
+        if count == RULES.steps:
             done[:] = True
         done &= ~recorded
         if not done.any():
@@ -251,13 +270,13 @@ def _tangent(here: _Point, theta: Array, low: Array, high: Array) -> Array:
     return np.asarray(np.sqrt(np.maximum(np.einsum("ir,ir->r", step, np.where(held, 0.0, slope)), 0.0)))
 
 
-def _coordinates(roles: _Roles, p: Array) -> Array:
+def _coordinates(roles: Roles, p: Array) -> Array:
     """Searched coordinates (m, R) of full parameters (k, R)."""
     rows = [np.log(p[i]) if log else p[i] for i, log in zip(roles.searched, roles.in_logarithm, strict=True)]
     return np.array(rows) if rows else np.empty((0, p.shape[1]))
 
 
-def _limits(stack: Stack, roles: _Roles) -> tuple[Array, Array]:
+def _limits(stack: Stack, roles: Roles) -> tuple[Array, Array]:
     low, high = stack.lower[list(roles.searched)], stack.upper[list(roles.searched)]
     log = np.array(roles.in_logarithm, dtype=bool)[:, None]
     return np.where(log, np.log(np.maximum(low, 0.0)), low), np.where(
@@ -265,7 +284,7 @@ def _limits(stack: Stack, roles: _Roles) -> tuple[Array, Array]:
     )
 
 
-def _natural(roles: _Roles, stack: Stack, theta: Array) -> list[Array | float]:
+def _natural(roles: Roles, stack: Stack, theta: Array) -> list[Array | float]:
     """Parameters for the model: searched values, fixed values, unit amplitude."""
     p: list[Array | float] = [
         float(u) if linear else float(t)
@@ -277,7 +296,7 @@ def _natural(roles: _Roles, stack: Stack, theta: Array) -> list[Array | float]:
     return p
 
 
-def _evaluate(stack: Stack, roles: _Roles, theta: Array) -> _Point:
+def _evaluate(stack: Stack, roles: Roles, theta: Array) -> _Point:
     """Residual, linear parameters and the tangents of the searched ones, all projected."""
     p = _natural(roles, stack, theta)
     derivative = stack.model.derivatives(stack.x, p)
@@ -432,8 +451,8 @@ def _accept(taken: Mask, trial: Array, theta: Array, there: _Point, here: _Point
 
 def _next_damping(damping: Array, taken: Mask) -> Array:
     """Ten times less after a good step, none once it is small; ten times more after a bad one."""
-    less = np.where(damping > NO_DAMPING, damping * 0.1, 0.0)
-    return np.where(taken, less, np.maximum(damping * 10.0, FIRST_DAMPING))
+    less = np.where(damping > RULES.no_damping, damping * 0.1, 0.0)
+    return np.where(taken, less, np.maximum(damping * 10.0, RULES.first_damping))
 
 
 def _take(here: _Point, keep: NDArray[np.intp]) -> _Point:
@@ -450,7 +469,7 @@ def _record(
     index: NDArray[np.intp],
     done: Mask,
     stack: Stack,
-    roles: _Roles,
+    roles: Roles,
     theta: Array,
     here: _Point,
     count: int,

@@ -10,6 +10,7 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any, ClassVar
 
 import numpy as np
@@ -126,17 +127,17 @@ class ResponseModel(ABC):
             np.array([q.upper for q in self.parameters], dtype=np.float64),
         )
 
-    @property
+    @cached_property
     def names(self) -> tuple[str, ...]:
         """Parameter names in order."""
         return tuple(q.name for q in self.parameters)
 
-    @property
+    @cached_property
     def linear(self) -> NDArray[np.bool_]:
         """Which parameters the response is linear in (k,)."""
         return np.array([q.linear for q in self.parameters])
 
-    @property
+    @cached_property
     def positive(self) -> NDArray[np.bool_]:
         """Which parameters are solved in their logarithm (k,)."""
         return np.array([q.positive for q in self.parameters])
