@@ -13,8 +13,8 @@ from typing import Any
 import numpy as np
 
 from calib.acceptance import Limit, criteria_from, read_preset
-from calib.curves.fit import NOISE_NAMES, problem_of
 from calib.curves.noise import NoiseModel, assumed_noise
+from calib.curves.requests import NOISE_NAMES, problem_of
 from calib.curves.standards import Standards
 from calib.errors import MethodError, ModelError
 from calib.intake import parse_concentration_unit

@@ -3,50 +3,25 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from scipy.special import chdtrc
 
+from calib.curves.assemble import ONE_RUN, Fitted, curve_from, unfitted_curve
 from calib.curves.curve import Curve
-from calib.curves.diagnostics import Finding, Information, findings_of, information
+from calib.curves.diagnostics import information
 from calib.curves.levels import collapsed, uncollapsed
-from calib.curves.noise import (
-    GivenNoise,
-    NoiseModel,
-    PowerOfMeanNoise,
-    UniformNoise,
-    given_noise,
-)
+from calib.curves.noise import GivenNoise, NoiseModel, PowerOfMeanNoise, given_noise
+from calib.curves.requests import Bounds, problem_of, requested_noise
 from calib.curves.reweight import PASSES, SETTLED, solve_with_noise
 from calib.curves.solver import SOLVERS, Problem, Solution, solve, stack_of_one
-from calib.curves.standards import Standards, checked_standards, frozen
-from calib.curves.variance_function import ESTIMATED, estimate_variance_function
-from calib.errors import MethodError, ModelError
+from calib.curves.standards import checked_standards
+from calib.curves.variance_function import estimate_variance_function
+from calib.errors import ModelError
 from calib.models import ResponseModel, response_model
 
 Array = NDArray[np.float64]
-Bounds = Mapping[str, tuple[float, float]]
-
-NOISE_NAMES = ("uniform", "relative", *ESTIMATED)
-# One honest run in a thousand contradicts its own standard uncertainties.
-CONTRADICTED = 1e-3
-ONE_RUN = "estimated from this run"
-
-
-@dataclass(frozen=True, slots=True)
-class Fitted:
-    """A solution together with the noise model it belongs to.
-
-    ``second`` holds the parameters of a second solution with nearly the same sum.
-    """
-
-    solution: Solution
-    noise: NoiseModel
-    problem: Problem
-    stable: bool
-    second: Array | None = None
 
 
 def fit(
@@ -116,95 +91,6 @@ def fit(
     else:
         fitted = _fit_with_noise(problem, requested.bound_to(problem.y), start or {}, solver)
     return curve_from(fitted, standards, solver)
-
-
-def requested_noise(noise: str | NoiseModel, given: GivenNoise | None) -> str | NoiseModel:
-    """Noise model asked for; a name stays a name where it is to be estimated."""
-    if given is not None:
-        if noise != "uniform":
-            raise MethodError("u and relative_sd replace the noise model; leave noise at 'uniform'")
-        return given
-    if isinstance(noise, NoiseModel):
-        return noise
-    if noise == "uniform":
-        return UniformNoise()
-    if noise == "relative":
-        return PowerOfMeanNoise(2.0)
-    if noise in ESTIMATED:
-        return noise
-    if noise == "history":
-        raise MethodError(
-            "noise = 'history' (pooled over past runs) is not available in this version; "
-            f"use one of {', '.join(NOISE_NAMES)} or an assumed noise model"
-        )
-    raise MethodError(f"unknown noise model {noise!r}; known are {', '.join(NOISE_NAMES)}")
-
-
-def problem_of(
-    model: ResponseModel,
-    standards: Standards,
-    fixed: Mapping[str, float],
-    bounds: Bounds,
-    start: Mapping[str, float],
-) -> Problem:
-    """Model, fixed values and bounds of a fit, checked against the model's parameters."""
-    for what, names in (("fixed", fixed), ("bounds", bounds), ("start", start)):
-        unknown = set(names) - set(model.names)
-        if unknown:
-            raise ModelError(
-                f"{what} names {sorted(unknown)[0]!r}, which model '{model.name}' does not have; "
-                f"its parameters are {', '.join(model.names)}"
-            )
-    _refuse_start(model, start)
-    held = {n: v for n, v in model.fixed_by_default.items() if n not in bounds and n not in start} | dict(
-        fixed
-    )
-    free = np.array([n not in held for n in model.names])
-    if not free.any():
-        raise ModelError(f"all parameters of model '{model.name}' are fixed; leave at least one free")
-    template = np.array([float(held.get(n, np.nan)) for n in model.names])
-    if not np.all(np.isfinite(template[~free])):
-        raise ModelError("a fixed parameter must have a finite value")
-    lower, upper = _bounds(model, standards, bounds)
-    outside = ~free & ((template < lower) | (template > upper)) & model.positive
-    if outside.any():
-        i = int(np.argmax(outside))
-        raise ModelError(
-            f"fixed {model.names[i]} = {template[i]:g} lies outside [{lower[i]:g}, {upper[i]:g}], what the model allows"
-        )
-    return Problem(
-        model=model,
-        x=standards.concentration,
-        y=standards.response,
-        root_weight=np.ones(standards.response.size),
-        template=template,
-        free=free,
-        lower=lower,
-        upper=upper,
-        given_bounds=np.array([n in bounds for n in model.names]),
-    )
-
-
-def _refuse_start(model: ResponseModel, start: Mapping[str, float]) -> None:
-    for name, value in start.items():
-        if not np.isfinite(value):
-            raise ModelError(f"start of {name} = {value} must be finite; give a rough value or leave it out")
-        if model.parameters[model.index(name)].positive and value <= 0:
-            raise ModelError(f"start of {name} = {value:g} must be above 0 in model '{model.name}'")
-
-
-def _bounds(model: ResponseModel, standards: Standards, bounds: Bounds) -> tuple[Array, Array]:
-    lower, upper = model.bounds(standards.concentration)
-    for name, (low, high) in bounds.items():
-        if not low < high:
-            raise ModelError(
-                f"bounds of {name} must be (lower, upper) with lower < upper, got ({low}, {high})"
-            )
-        i = model.index(name)
-        if model.parameters[i].positive and high <= 0:
-            raise ModelError(f"bounds of {name} must allow values above 0, got ({low}, {high})")
-        lower[i], upper[i] = (max(low, 0.0) if model.parameters[i].positive else low), high
-    return lower, upper
 
 
 def _given(problem: Problem, start: Mapping[str, float]) -> dict[int, Array]:
@@ -327,140 +213,3 @@ def _follow(problem: Problem, noise: NoiseModel, starts: list[Array], solver: st
 def weighted_problem(problem: Problem, noise: NoiseModel, mean: Array) -> Problem:
     """The same problem with weights at fitted means."""
     return replace(problem, root_weight=1.0 / np.sqrt(noise.at_standards(mean, problem.x)))
-
-
-def curve_from(fitted: Fitted, standards: Standards, solver: str) -> Curve:
-    """The frozen curve of one run."""
-    problem, solution = fitted.problem, fitted.solution
-    nu = standards.response.size - int(problem.free.sum())
-    mean = problem.model.response(problem.x, solution.parameters)
-    noise = fitted.noise.after_fit(mean)
-    known = noise.known_scale
-    scale = 1.0 if known else (float(np.sqrt(solution.weighted_sum / nu)) if nu > 0 else np.nan)
-    info = information(problem, solution.parameters)
-    findings = findings_of(problem, solution, info, 0.0 if np.isnan(scale) else scale, fitted.stable)
-    return Curve(
-        response_model=problem.model,
-        values=frozen(solution.parameters),
-        free=problem.free,
-        lower=frozen(problem.lower),
-        upper=frozen(problem.upper),
-        covariance=frozen(_covariance(info, problem.free, scale)),
-        noise=noise,
-        standards=standards,
-        residual_sum=solution.weighted_sum,
-        degrees_of_freedom=nu,
-        scale=scale,
-        coverage_freedom=np.inf if known else float(nu),
-        r_squared=_r_squared(problem, solution),
-        determined=info.determined,
-        aicc=_aicc(solution.weighted_sum, standards.response.size, int(problem.free.sum())),
-        converged=solution.converged and fitted.stable,
-        findings=(
-            *findings,
-            *_noise_findings(noise),
-            *_contradicted(noise, solution.weighted_sum, nu),
-            *_second_solution(fitted),
-        ),
-        solver=solver,
-    )
-
-
-def _covariance(info: Information, free: NDArray[np.bool_], scale: float) -> Array:
-    covariance = info.inverse * scale**2
-    covariance[~free, :] = 0.0
-    covariance[:, ~free] = 0.0
-    return covariance
-
-
-def _noise_findings(noise: NoiseModel) -> tuple[Finding, ...]:
-    if getattr(noise, "origin", "") != ONE_RUN:
-        return ()
-    return (
-        Finding(
-            "variance-from-one-run",
-            "variance function from 1 run: nominal 95 % intervals cover about 89–95 %",
-        ),
-    )
-
-
-def _second_solution(fitted: Fitted) -> tuple[Finding, ...]:
-    if fitted.second is None:
-        return ()
-    pairs = zip(fitted.problem.model.names, fitted.second, strict=True)
-    return (
-        Finding(
-            "two-solutions",
-            "a second curve fits nearly as well and reads the standards back differently "
-            f"({', '.join(f'{n} {v:.4g}' for n, v in pairs)}); add levels or fix a parameter",
-        ),
-    )
-
-
-def _contradicted(noise: NoiseModel, chi_square: float, nu: int) -> tuple[Finding, ...]:
-    """Known standard uncertainties that the scatter of the readings contradicts."""
-    if not noise.known_scale or nu <= 0:
-        return ()
-    probability = float(chdtrc(nu, chi_square))
-    if probability >= CONTRADICTED:
-        return ()
-    return (
-        Finding(
-            "u-contradicted",
-            f"the residuals are larger than the given standard uncertainties allow (chi-square {chi_square:.4g} "
-            f"with {nu} degrees of freedom, p = {probability:.1e}); check u or the model",
-        ),
-    )
-
-
-def _r_squared(problem: Problem, solution: Solution) -> float:
-    weight = problem.root_weight**2
-    mean = float(np.sum(weight * problem.y) / np.sum(weight))
-    total = float(np.sum(weight * (problem.y - mean) ** 2))
-    return 1.0 - solution.weighted_sum / total if total > 0 else np.nan
-
-
-def _aicc(weighted_sum: float, n: int, free: int) -> float:
-    """AICc with k = free parameters + 1; comparable only under the same noise model."""
-    k = free + 1
-    if n - k - 1 <= 0 or weighted_sum <= 0:
-        return np.nan
-    return float(n * np.log(weighted_sum / n) + 2 * k + 2 * k * (k + 1) / (n - k - 1))
-
-
-def unfitted_curve(
-    problem: Problem,
-    standards: Standards,
-    requested: str | NoiseModel,
-    solver: str,
-    finding: Finding | None = None,
-) -> Curve:
-    """A curve that could not be fitted, with the reason as its finding."""
-    k, count = len(problem.model.names), int(problem.free.sum())
-    message = (
-        f"{standards.levels} distinct level(s) for {count} free parameters of model "
-        f"'{problem.model.name}'; measure at least {count} levels"
-    )
-    unbound = standards.response.size == 0
-    return Curve(
-        response_model=problem.model,
-        values=frozen(np.where(problem.free, np.nan, problem.template)),
-        free=problem.free,
-        lower=frozen(problem.lower),
-        upper=frozen(problem.upper),
-        covariance=frozen(np.full((k, k), np.nan)),
-        noise=UniformNoise()
-        if unbound or isinstance(requested, str)
-        else requested.bound_to(standards.response),
-        standards=standards,
-        residual_sum=np.nan,
-        degrees_of_freedom=max(standards.response.size - count, 0),
-        scale=np.nan,
-        coverage_freedom=0.0,
-        r_squared=np.nan,
-        aicc=np.nan,
-        determined=~problem.free,
-        converged=False,
-        findings=(finding or Finding("too-few-levels", message),),
-        solver=solver,
-    )

@@ -8,23 +8,17 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from calib.curves.assemble import Fitted, curve_from, unfitted_curve
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding
-from calib.curves.fit import (
-    Bounds,
-    Fitted,
-    curve_from,
-    fit,
-    problem_of,
-    requested_noise,
-    unfitted_curve,
-    weighted_problem,
-)
+from calib.curves.fit import fit, weighted_problem
 from calib.curves.levels import Levels, collapsed, uncollapsed
 from calib.curves.noise import GivenNoise, NoiseModel, given_noise
+from calib.curves.requests import Bounds, problem_of, requested_noise
 from calib.curves.reweight import Settled, solve_with_noise
-from calib.curves.search import Found, on_bound
+from calib.curves.search import on_bound
 from calib.curves.solver import Problem, Solution, stack_of_one
+from calib.curves.stack_covariance import inverses
 from calib.curves.stack_solver import Stack
 from calib.curves.standards import Standards, extreme, frozen, refuse_extreme
 from calib.errors import InputError
@@ -36,8 +30,6 @@ Mask = NDArray[np.bool_]
 OK = "ok"
 TOO_FEW_LEVELS = "too-few-levels"
 NOT_FINITE = "not-finite"
-# Covariances are inverted in blocks, so that memory stays flat.
-BLOCK = 4096
 
 
 @dataclass(frozen=True, slots=True)
@@ -291,7 +283,7 @@ def _assembled(
     total = np.full(runs, np.nan)
     total[usable] = found.total
     covariance = np.full((runs, k, k), np.nan)
-    inverse = _inverses(problem, levels, bound, found)
+    inverse = inverses(problem, levels, bound, found)
     with np.errstate(divide="ignore", invalid="ignore"):
         known = bound.known_scale
         scale = np.ones(usable.size) if known else np.where(nu[usable] > 0, found.total / nu[usable], np.nan)
@@ -307,59 +299,6 @@ def _assembled(
         problem.model.names, parameters, covariance, total, nu, converged, at_bound, status,
         problem, requested, x, y, stable, tangent, second, {},
     )  # fmt: skip
-
-
-def _inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) -> Array:
-    """Inverse of J'WJ (R, k, k) for every run, zero for fixed parameters."""
-    k = problem.free.size
-    inverse = np.zeros((levels.runs, k, k))
-    for i in range(0, levels.runs, BLOCK):
-        part = np.arange(i, min(i + BLOCK, levels.runs))
-        inverse[part] = _inverse_block(
-            problem, levels.take(part), _part_of(noise, part), found.parameters[:, part]
-        )
-    return inverse
-
-
-def _part_of(noise: NoiseModel, part: NDArray[np.intp]) -> NoiseModel:
-    floor = getattr(noise, "floor", None)
-    if not isinstance(floor, np.ndarray) or floor.ndim == 0:
-        return noise
-    return replace(noise, floor=floor[part])  # type: ignore[type-var]
-
-
-def _inverse_block(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> Array:
-    model, free = problem.model, problem.free
-    with np.errstate(all="ignore"):
-        mean = model.response(levels.x, list(p)) * np.ones_like(levels.mean)
-        variance = noise.at_standards(mean, np.broadcast_to(levels.x, mean.shape))
-        weight = np.where(levels.count > 0, levels.count / variance, 0.0) * np.ones_like(mean)
-        each = model.derivatives(levels.x, list(p))
-        derivatives = [d * np.ones_like(mean) for d, f in zip(each, free, strict=True) if f]
-        normal = np.empty((levels.runs, len(derivatives), len(derivatives)))
-        for i, a in enumerate(derivatives):
-            for j in range(i, len(derivatives)):
-                normal[:, i, j] = normal[:, j, i] = np.einsum("nr,nr,nr->r", weight, a, derivatives[j])
-        length = np.sqrt(np.diagonal(normal, axis1=1, axis2=2))
-        usable = np.all((length > 0) & np.isfinite(length), axis=1)
-        scaled = normal / (length[:, :, None] * length[:, None, :])
-    scaled[~usable] = np.eye(len(derivatives))
-    inner = np.full_like(scaled, np.nan)
-    inner[usable] = _inverse_of_scaled(scaled[usable])
-    with np.errstate(all="ignore"):
-        inner = inner / (length[:, :, None] * length[:, None, :])
-    full = np.zeros((levels.runs, free.size, free.size))
-    where = np.flatnonzero(free)
-    full[:, where[:, None], where[None, :]] = inner
-    return full
-
-
-def _inverse_of_scaled(scaled: Array) -> Array:
-    """Inverse of matrices with unit diagonal; a pseudo-inverse where one is singular."""
-    try:
-        return np.asarray(np.linalg.inv(scaled))
-    except np.linalg.LinAlgError:
-        return np.asarray(np.linalg.pinv(scaled, hermitian=True))
 
 
 def _one_by_one(

@@ -20,6 +20,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calib.curves.single_solver import End, Single, solve_single
+from calib.curves.stack_algebra import (
+    back_substitute,
+    damped_step,
+    dot,
+    filling,
+    held_at_bound,
+    orthogonalise,
+    project_out,
+    reach,
+)
 from calib.curves.stack_roles import Roles, Rules, roles_of
 from calib.models import ResponseModel
 
@@ -220,9 +230,9 @@ def _iterate(stack: Stack, roles: Roles, theta: Array, floor: Array, found: Stac
     recorded = np.zeros(stack.runs, dtype=bool)
     for count in range(1, RULES.steps + 1):
         normal, slope = _normal_equations(here)
-        step, predicted = _step(normal, slope, damping, _held_at_bound(theta, slope, low, high))
-        reach = _reach(theta, step, low, high)
-        trial = theta + reach * step
+        step, predicted = damped_step(normal, slope, damping, held_at_bound(theta, slope, low, high))
+        share = reach(theta, step, low, high)
+        trial = theta + share * step
         there = _evaluate(stack, roles, trial)
         # Close to the minimum the sums no longer tell two points apart; the step still does.
         total = here.total + stack.pure
@@ -231,7 +241,7 @@ def _iterate(stack: Stack, roles: Roles, theta: Array, floor: Array, found: Stac
             close & (there.total <= here.total * (1.0 + RULES.close) + floor)
         )
         enough = predicted <= RULES.enough * total + floor
-        last = enough & (damping == 0.0) & (reach == 1.0)
+        last = enough & (damping == 0.0) & (share == 1.0)
         stuck = damping >= RULES.most_damping
         done = last | (enough & taken) | stuck | ~np.isfinite(here.total) | (predicted <= 0.0)
         theta, here = _accept(taken, trial, theta, there, here)
@@ -265,8 +275,8 @@ def _iterate(stack: Stack, roles: Roles, theta: Array, floor: Array, found: Stac
 def _tangent(here: _Point, theta: Array, low: Array, high: Array) -> Array:
     """Norm of the residual's part in the tangent plane, coordinates held at a bound left out."""
     normal, slope = _normal_equations(here)
-    held = _held_at_bound(theta, slope, low, high)
-    step, _ = _step(normal, slope, np.zeros(theta.shape[1]), held)
+    held = held_at_bound(theta, slope, low, high)
+    step, _ = damped_step(normal, slope, np.zeros(theta.shape[1]), held)
     return np.asarray(np.sqrt(np.maximum(np.einsum("ir,ir->r", step, np.where(held, 0.0, slope)), 0.0)))
 
 
@@ -307,12 +317,12 @@ def _evaluate(stack: Stack, roles: Roles, theta: Array) -> _Point:
         linear[i] = theta[roles.searched.index(i)] if i in roles.searched else float(stack.template[i])
         rest = rest - linear[i] * derivative[i]
     residual = weight * rest
-    basis = [_filling(weight * derivative[i], residual) for i in roles.eliminated]
-    orthogonal, triangle = _orthogonalise(basis)
-    parts = [_dot(q, residual) for q in orthogonal]
+    basis = [filling(weight * derivative[i], residual) for i in roles.eliminated]
+    orthogonal, triangle = orthogonalise(basis)
+    parts = [dot(q, residual) for q in orthogonal]
     for q, part in zip(orthogonal, parts, strict=True):
         residual = residual - part * q
-    solved = _back_substitute(triangle, parts)
+    solved = back_substitute(triangle, parts)
     linear.update(zip(roles.eliminated, solved, strict=True))
     amplitude = sum((w * linear[i] for i, w in roles.amplitude), start=np.zeros(()))
     tangents = []
@@ -321,56 +331,9 @@ def _evaluate(stack: Stack, roles: Roles, theta: Array) -> _Point:
             tangent = weight * derivative[i]
         else:
             tangent = (weight * derivative[i]) * (amplitude * p[i] if log else amplitude)
-        tangents.append(_project_out(_filling(tangent, residual), orthogonal))
+        tangents.append(project_out(filling(tangent, residual), orthogonal))
     kept = np.array(solved) if solved else np.empty((0, residual.shape[1]))
-    return _Point(residual, _dot(residual, residual), kept, tangents)
-
-
-def _filling(values: Array, like: Array) -> Array:
-    """The same values in the full shape of the stack."""
-    return values if values.shape == like.shape else np.broadcast_to(values, like.shape)
-
-
-def _dot(a: Array, b: Array) -> Array:
-    product: Array = np.einsum("nr,nr->r", a, b)
-    return product
-
-
-def _orthogonalise(basis: Sequence[Array]) -> tuple[list[Array], list[list[Array]]]:
-    """Modified Gram–Schmidt, twice where three columns can lean on each other."""
-    orthogonal: list[Array] = []
-    triangle: list[list[Array]] = []
-    rounds = 2 if len(basis) > 2 else 1
-    for v in basis:
-        column = [np.zeros(v.shape[1]) for _ in orthogonal]
-        for _ in range(rounds):
-            for j, q in enumerate(orthogonal):
-                part = _dot(q, v)
-                column[j] = column[j] + part
-                v = v - part * q
-        length = np.sqrt(_dot(v, v))
-        orthogonal.append(v / np.where(length > 0, length, 1.0))
-        triangle.append([*column, length])
-    return orthogonal, triangle
-
-
-def _back_substitute(triangle: list[list[Array]], parts: Sequence[Array]) -> list[Array]:
-    """Linear parameters from the triangular factor (columns) and the projections."""
-    count = len(parts)
-    solved: list[Array] = [np.zeros(())] * count
-    for i in reversed(range(count)):
-        value = parts[i]
-        for j in range(i + 1, count):
-            value = value - triangle[j][i] * solved[j]
-        length = triangle[i][i]
-        solved[i] = np.where(length > 0, value / np.where(length > 0, length, 1.0), 0.0)
-    return solved
-
-
-def _project_out(v: Array, orthogonal: Sequence[Array]) -> Array:
-    for q in orthogonal:
-        v = v - _dot(q, v) * q
-    return v
+    return _Point(residual, dot(residual, residual), kept, tangents)
 
 
 def _normal_equations(here: _Point) -> tuple[Array, Array]:
@@ -379,63 +342,10 @@ def _normal_equations(here: _Point) -> tuple[Array, Array]:
     normal = np.empty((m, m, here.total.size))
     slope = np.empty((m, here.total.size))
     for i, a in enumerate(here.tangents):
-        slope[i] = _dot(a, here.residual)
+        slope[i] = dot(a, here.residual)
         for j in range(i, m):
-            normal[i, j] = normal[j, i] = _dot(a, here.tangents[j])
+            normal[i, j] = normal[j, i] = dot(a, here.tangents[j])
     return normal, slope
-
-
-def _held_at_bound(theta: Array, slope: Array, low: Array, high: Array) -> Mask:
-    """Coordinates on a bound that the steepest descent would push across."""
-    return ((theta <= low) & (slope < 0)) | ((theta >= high) & (slope > 0))
-
-
-def _step(normal: Array, slope: Array, damping: Array, held: Mask) -> tuple[Array, Array]:
-    """Damped Gauss–Newton step and the decrease of the sum it predicts."""
-    m = slope.shape[0]
-    if m == 0:
-        return slope, np.zeros(damping.size)
-    matrix, right = normal.copy(), slope
-    if held.any():
-        right = np.where(held, 0.0, slope)
-        matrix = np.where(held[:, None] | held[None, :], 0.0, matrix)
-    for i in range(m):
-        diagonal = matrix[i, i]
-        matrix[i, i] = np.where(diagonal > 0, diagonal * (1.0 + damping), 1.0)
-    step = _solve_small(matrix, right)
-    along = np.einsum("ir,ir->r", step, right)
-    if not damping.any():
-        return step, np.where(np.isfinite(along), along, 0.0)
-    predicted = 2.0 * along - np.einsum("ir,ijr,jr->r", step, normal, step)
-    return step, np.where(np.isfinite(predicted), predicted, 0.0)
-
-
-def _solve_small(matrix: Array, right: Array) -> Array:
-    """Solve m × m systems along the last axis by elimination without pivoting.
-
-    The matrices are positive (semi)definite after damping, where no pivoting is needed.
-    """
-    m = right.shape[0]
-    a, b = matrix.copy(), right.copy()
-    for i in range(m):
-        for j in range(i + 1, m):
-            factor = a[j, i] / a[i, i]
-            a[j, i:] -= factor * a[i, i:]
-            b[j] -= factor * b[i]
-    for i in reversed(range(m)):
-        for j in range(i + 1, m):
-            b[i] -= a[i, j] * b[j]
-        b[i] = b[i] / a[i, i]
-    return np.where(np.isfinite(b), b, 0.0)
-
-
-def _reach(theta: Array, step: Array, low: Array, high: Array) -> Array:
-    """Share of the whole step that stays inside the bounds (R,)."""
-    if step.shape[0] == 0:
-        return np.ones(step.shape[1])
-    room = np.where(step > 0, high - theta, low - theta)
-    share = np.where(step != 0, room / np.where(step != 0, step, 1.0), np.inf)
-    return np.asarray(np.minimum(1.0, np.maximum(share.min(axis=0), 0.0)))
 
 
 def _accept(taken: Mask, trial: Array, theta: Array, there: _Point, here: _Point) -> tuple[Array, _Point]:
