@@ -148,6 +148,7 @@ def show_run(store: tables.Store, number: int) -> RunRecord:
 def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
     """Read a run with its curve, verdict, quantities and later decisions."""
     run = run_numbered(session, number)
+    facts = facts_of(session, number)
     method = session.get_one(tables.Method, run.method_id)
     definition = definition_of(method)
     curve_row = curve_in_use(session, run)
@@ -165,9 +166,11 @@ def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
         amendments=amendments_of(session, run),
         dependents=_dependents(session, run),
         curves_before=_curves_before(session, curve_row.run_id),
-        attempts_that_day=_attempts(session, run, method.name),
+        attempts_that_day=attempts_on_day(
+            session, facts.instrument_id, method.name, local(facts.at, facts.offset_minutes)
+        ),
         versions=dict(curve_row.versions),
-        lot=_lot_facts(session, run.id),
+        lot=lot_facts(session.get_one(tables.StandardLot, facts.lot_id)) if facts.lot_id else None,
         chain_sequence=head[0],
         chain_head=head[1],
     )
@@ -257,10 +260,9 @@ def heading_of(session: Session, run: tables.Run, method: tables.Method) -> RunH
     )
 
 
-def _attempts(session: Session, run: tables.Run, method: str) -> int:
-    """Calibration runs of one instrument and method on the local day of a run."""
-    facts = facts_of(session, run.id)
-    start = local(facts.at, facts.offset_minutes).replace(hour=0, minute=0, second=0, microsecond=0)
+def attempts_on_day(session: Session, instrument_id: int, method: str, at: datetime) -> int:
+    """Calibration runs of one instrument and method on the local day of ``at``."""
+    start = at.replace(hour=0, minute=0, second=0, microsecond=0)
     query = (
         select(func.count())
         .select_from(tables.Run)
@@ -269,7 +271,7 @@ def _attempts(session: Session, run: tables.Run, method: str) -> int:
         .where(
             tables.Run.kind == "calibration",
             tables.Method.name == method,
-            tables.RunFacts.instrument_id == facts.instrument_id,
+            tables.RunFacts.instrument_id == instrument_id,
             tables.RunFacts.at >= start,
             tables.RunFacts.at < start + timedelta(days=1),
             tables.is_current(tables.RunFacts),
@@ -289,11 +291,8 @@ def _dependents(session: Session, run: tables.Run) -> tuple[int, ...]:
     return tuple(session.scalars(query))
 
 
-def _lot_facts(session: Session, run_id: int) -> LotFacts | None:
-    lot_id = facts_of(session, run_id).lot_id
-    if lot_id is None:
-        return None
-    lot = session.get_one(tables.StandardLot, lot_id)
+def lot_facts(lot: tables.StandardLot) -> LotFacts:
+    """What the certificate of a lot says."""
     return LotFacts(
         lot.name,
         lot.material,
