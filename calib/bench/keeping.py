@@ -62,6 +62,13 @@ def add_evaluation(
     return row.id
 
 
+def add_first_quantities(
+    session: Session, run_id: int, curve_id: int, quantities: Sequence[QuantityRecord]
+) -> None:
+    """Write the quantities of a run that has none yet."""
+    session.add_all(_quantity_row(run_id, curve_id, q, None) for q in quantities)
+
+
 def add_quantities(
     session: Session, run_id: int, curve_id: int, quantities: Sequence[QuantityRecord]
 ) -> None:

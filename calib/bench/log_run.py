@@ -11,7 +11,7 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.evaluate import evaluate
-from calib.bench.keeping import add_evaluation, add_quantities, versions
+from calib.bench.keeping import add_evaluation, add_first_quantities, versions
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.records import Evaluation, RunHeading, RunRecord
 from calib.bench.show_run import attempts_on_day, local, lot_facts
@@ -148,7 +148,7 @@ def _write(
     run_id = add_run(session, plan, run, original_id, now)
     reading_ids = add_readings(session, run_id, run)
     curve_id = add_evaluation(session, run_id, evaluation, reading_ids, by=plan.by, at=now)
-    add_quantities(session, run_id, curve_id, evaluation.quantities)
+    add_first_quantities(session, run_id, curve_id, evaluation.quantities)
     return run_id, curve_id
 
 

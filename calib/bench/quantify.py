@@ -9,7 +9,7 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.find import current_curve, run_numbered
-from calib.bench.keeping import add_quantities
+from calib.bench.keeping import add_first_quantities
 from calib.bench.log_run import add_original, add_readings, add_run
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.quantities import quantities_of
@@ -132,7 +132,7 @@ def _write(
         raise InputError(f"{plan.file.name}: the curve in force changed meanwhile; run the command again")
     run_id = add_run(session, plan, run, original_id, now, curve_id=curve.id)
     add_readings(session, run_id, run)
-    add_quantities(session, run_id, curve.id, quantities)
+    add_first_quantities(session, run_id, curve.id, quantities)
     return run_id
 
 
