@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import sys
 from importlib import import_module
 from io import TextIOWrapper
@@ -24,6 +25,9 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "plot": ("report:plot", "Draw the curve of a run to a file."),
     "store": ("store:store", "Check, back up and upgrade the store."),
 }
+
+
+RARELY = 100_000
 
 
 class LazyCommands(click.Group):
@@ -74,6 +78,8 @@ def run(arguments: list[str]) -> int:
     """Run one command; its exit code."""
     from calib.errors import CalibError
 
+    # A command is short and most of it is imports, which leave no garbage: collect rarely.
+    gc.set_threshold(RARELY)
     try:
         code = cli.main(arguments, prog_name="calib", standalone_mode=False)
     except click.ClickException as error:
