@@ -1,6 +1,6 @@
 """Layout `long-form`: one row a reading under one heading row; may hold several runs."""
 
-from calib.errors import InputError
+from calib.errors import InputError, UnreadableFile
 from calib.intake.extract import Extract, Layout, Source
 from calib.intake.facts import Facts
 from calib.intake.problems import Problems
@@ -28,7 +28,9 @@ def _read(source: Source) -> Extract:
     text = source.require_text()
     separator = guess_separator(first_line(text))
     rows = split_rows(text, separator)
-    start = next(index for index, row in enumerate(rows) if row.filled)
+    start = next((index for index, row in enumerate(rows) if row.filled), None)
+    if start is None:
+        raise UnreadableFile("there are separators but no cell with anything in it: export the file again")
     return read_table(rows[start:], Head(Facts(), separator=separator), Problems())
 
 

@@ -41,6 +41,12 @@ def test_a_damaged_text(text, changes, name):
     is_read_or_refused(text.encode(), name)
 
 
+@pytest.mark.parametrize("content", [b",", b";;\n;", b"\t\n\t\n"])
+@pytest.mark.parametrize("layout", [None, *(layout.name for layout in LAYOUTS)])
+def test_separators_alone_are_refused(content, layout):
+    is_read_or_refused(content, layout)
+
+
 @given(content=st.binary(max_size=300), name=NAMES)
 def test_any_bytes(content, name):
     is_read_or_refused(content, name)
