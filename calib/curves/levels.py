@@ -59,13 +59,19 @@ def collapsed(x: Array, y: Array) -> Levels:
     y : (n, R) array
         nan where a reading is absent.
     """
-    levels, place = np.unique(x, return_inverse=True)
+    levels, place, counts = np.unique(x, return_inverse=True, return_counts=True)
     order = np.argsort(place, kind="stable")
-    first = np.searchsorted(place[order], np.arange(levels.size))
-    ordered = y[order]
+    ordered = y if np.all(order[1:] > order[:-1]) else y[order]
     present = ~np.isnan(ordered)
+    if present.all() and np.all(counts == counts[0]):
+        # As many replicates at every level: a reshape serves.
+        grouped = ordered.reshape(levels.size, counts[0], -1)
+        mean = grouped.mean(axis=1)
+        pure = np.einsum("lmr,lmr->lr", grouped - mean[:, None], grouped - mean[:, None])
+        return Levels(levels[:, None], mean, counts.astype(np.float64)[:, None], pure)
+    first = np.searchsorted(place[order], np.arange(levels.size))
     if present.all():
-        size = np.diff(np.append(first, x.size)).astype(np.float64)[:, None]
+        size = counts.astype(np.float64)[:, None]
         mean = np.add.reduceat(ordered, first, axis=0) / size
         pure = np.add.reduceat((ordered - mean[place[order]]) ** 2, first, axis=0)
         return Levels(levels[:, None], mean, size, pure)

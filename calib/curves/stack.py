@@ -220,15 +220,21 @@ def _per_run(name: str, values: ArrayLike, runs: int) -> Array:
 
 def _statuses(x: Array, y: Array, needed: int) -> tuple[str, ...]:
     present = ~np.isnan(y)
-    if x.ndim == 1:
+    levels: Array | int
+    if x.ndim > 1:
+        levels = np.array([np.unique(x[present[:, i], i]).size for i in range(y.shape[1])])
+    elif present.all():
+        levels = np.unique(x).size
+    else:
         _, place = np.unique(x, return_inverse=True)
         seen = np.zeros((place.max() + 1, y.shape[1]), dtype=bool)
         np.logical_or.at(seen, place, present)
         levels = seen.sum(axis=0)
-    else:
-        levels = np.array([np.unique(x[present[:, i], i]).size for i in range(y.shape[1])])
     infinite = extreme(y).any(axis=0)
-    return tuple(np.select([infinite, levels < needed], [NOT_FINITE, TOO_FEW_LEVELS], OK).tolist())
+    few = np.broadcast_to(levels < needed, infinite.shape)
+    if not (infinite.any() or few.any()):
+        return (OK,) * infinite.size
+    return tuple(np.select([infinite, few], [NOT_FINITE, TOO_FEW_LEVELS], OK).tolist())
 
 
 def _levels(x: Array, y: Array, noise: NoiseModel) -> tuple[Levels, NoiseModel]:

@@ -11,11 +11,14 @@ from calib.curves.levels import Levels
 from calib.curves.noise import NoiseModel
 from calib.curves.search import Found
 from calib.curves.solver import Problem
+from calib.curves.stack_algebra import dot
 
 Array = NDArray[np.float64]
 
 # Inverted in blocks, so that memory stays flat.
 BLOCK = 4096
+# A pivot this small of a matrix with unit diagonal is rounding.
+VANISHING = 1e-13
 
 
 def inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) -> Array:
@@ -38,34 +41,48 @@ def _part_of(noise: NoiseModel, part: NDArray[np.intp]) -> NoiseModel:
 
 
 def _inverse_block(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> Array:
-    model, free = problem.model, problem.free
+    model, free = problem.model, np.flatnonzero(problem.free)
     with np.errstate(all="ignore"):
-        mean = model.response(levels.x, list(p)) * np.ones_like(levels.mean)
+        # Only a noise model that follows the fit asks for the fitted means.
+        mean = model.response(levels.x, list(p)) if noise.follows_fit else levels.x
+        mean = np.broadcast_to(mean, levels.mean.shape)
         variance = noise.at_standards(mean, np.broadcast_to(levels.x, mean.shape))
-        weight = np.where(levels.count > 0, levels.count / variance, 0.0) * np.ones_like(mean)
+        root = np.sqrt(np.where(levels.count > 0, levels.count / variance, 0.0))
         each = model.derivatives(levels.x, list(p))
-        derivatives = [d * np.ones_like(mean) for d, f in zip(each, free, strict=True) if f]
-        normal = np.empty((levels.runs, len(derivatives), len(derivatives)))
-        for i, a in enumerate(derivatives):
-            for j in range(i, len(derivatives)):
-                normal[:, i, j] = normal[:, j, i] = np.einsum("nr,nr,nr->r", weight, a, derivatives[j])
-        length = np.sqrt(np.diagonal(normal, axis1=1, axis2=2))
-        usable = np.all((length > 0) & np.isfinite(length), axis=1)
-        scaled = normal / (length[:, :, None] * length[:, None, :])
-    scaled[~usable] = np.eye(len(derivatives))
-    inner = np.full_like(scaled, np.nan)
-    inner[usable] = _inverse_of_scaled(scaled[usable])
-    with np.errstate(all="ignore"):
-        inner = inner / (length[:, :, None] * length[:, None, :])
-    full = np.zeros((levels.runs, free.size, free.size))
-    where = np.flatnonzero(free)
-    full[:, where[:, None], where[None, :]] = inner
+        columns = [np.broadcast_to(root * each[i], mean.shape) for i in free]
+        scaled = np.empty((free.size, free.size, levels.runs))
+        length = [np.sqrt(dot(a, a)) for a in columns]
+        for i, a in enumerate(columns):
+            for j in range(i, free.size):
+                scaled[i, j] = scaled[j, i] = dot(a, columns[j]) / (length[i] * length[j])
+        inner = _inverse_of_scaled(scaled)
+        full = np.zeros((levels.runs, problem.free.size, problem.free.size))
+        for i, row in enumerate(free):
+            for j, column in enumerate(free):
+                full[:, row, column] = inner[i, j] / (length[i] * length[j])
     return full
 
 
 def _inverse_of_scaled(scaled: Array) -> Array:
-    """Inverse of matrices with unit diagonal; a pseudo-inverse where one is singular."""
-    try:
-        return np.asarray(np.linalg.inv(scaled))
-    except np.linalg.LinAlgError:
-        return np.asarray(np.linalg.pinv(scaled, hermitian=True))
+    """Inverse of symmetric matrices (k, k, R) with unit diagonal, by elimination for all runs at once.
+
+    A pseudo-inverse takes the place where a pivot vanishes, nan where a matrix is not finite.
+    """
+    k, runs = scaled.shape[0], scaled.shape[2]
+    a = scaled.copy()
+    inverse = np.repeat(np.eye(k)[:, :, None], runs, axis=2)
+    smallest = np.full(runs, np.inf)
+    for i in range(k):
+        pivot = a[i, i].copy()
+        smallest = np.fmin(smallest, np.abs(pivot))
+        a[i], inverse[i] = a[i] / pivot, inverse[i] / pivot
+        for j in range(k):
+            if j != i:
+                factor = a[j, i].copy()
+                a[j] -= factor * a[i]
+                inverse[j] -= factor * inverse[i]
+    finite = np.all(np.isfinite(scaled), axis=(0, 1))
+    inverse[:, :, ~finite] = np.nan
+    for r in np.flatnonzero(finite & ~(smallest > VANISHING)):
+        inverse[:, :, r] = np.linalg.pinv(scaled[:, :, r], hermitian=True)
+    return inverse
