@@ -88,7 +88,7 @@ def _follow(stack: Stack, levels: Levels, noise: NoiseModel, first: Found, searc
         if keep.size == 0:
             break
         index, mean, part = index[keep], fitted[:, keep], part.take(keep)
-        now, some = _some_noise(now, keep), _some_bounds(some, keep)
+        now, some = some_noise(now, keep), _some_bounds(some, keep)
     return Settled(found, stable)
 
 
@@ -105,7 +105,7 @@ def _write(found: Found, index: NDArray[np.intp], again: Found) -> None:
     found.converged[index] = again.converged
 
 
-def _some_noise(noise: NoiseModel, keep: NDArray[np.intp]) -> NoiseModel:
+def some_noise(noise: NoiseModel, keep: NDArray[np.intp]) -> NoiseModel:
     """The noise model of some of the runs."""
     floor = getattr(noise, "floor", None)
     if not isinstance(floor, np.ndarray) or floor.ndim == 0:

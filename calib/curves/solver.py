@@ -12,6 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from calib.curves.search import OFFSET_LIMIT, ROUNDING
 from calib.curves.stack_solver import Stack
 from calib.errors import ModelError
 from calib.models import ResponseModel
@@ -19,11 +20,6 @@ from calib.models import ResponseModel
 Array = NDArray[np.float64]
 SOLVERS = ("least-squares", "simplex")
 
-# Share of the residual that may still lie in the tangent plane at a minimum
-# (relative offset of Bates and Watts 1981; the limit is the one of calib's design).
-OFFSET_LIMIT = 1e-6
-# Noise-free data: a residual this small against the response is rounding, not misfit.
-ROUNDING = 1e-12
 HUGE = 1e120
 
 

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 import numpy as np
 from numpy.typing import NDArray
 
 from calib.curves.levels import Levels
 from calib.curves.noise import NoiseModel
+from calib.curves.reweight import some_noise
 from calib.curves.search import Found
 from calib.curves.solver import Problem
 from calib.curves.stack_algebra import dot
@@ -28,16 +27,9 @@ def inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) 
     for i in range(0, levels.runs, BLOCK):
         part = np.arange(i, min(i + BLOCK, levels.runs))
         inverse[part] = _inverse_block(
-            problem, levels.take(part), _part_of(noise, part), found.parameters[:, part]
+            problem, levels.take(part), some_noise(noise, part), found.parameters[:, part]
         )
     return inverse
-
-
-def _part_of(noise: NoiseModel, part: NDArray[np.intp]) -> NoiseModel:
-    floor = getattr(noise, "floor", None)
-    if not isinstance(floor, np.ndarray) or floor.ndim == 0:
-        return noise
-    return replace(noise, floor=floor[part])  # type: ignore[type-var]
 
 
 def _inverse_block(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> Array:
