@@ -14,7 +14,7 @@ from calib.bench.log_run import add_original, add_readings, add_run
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.quantities import quantities_of
 from calib.bench.records import QuantityRecord, RunRecord
-from calib.bench.show_run import load_run, local, show_run
+from calib.bench.show_run import dependents_of, load_run, local, show_run
 from calib.errors import InputError
 
 QUANTIFIED_ROLES = ("unknown", "control", "check", "first-check")
@@ -139,11 +139,4 @@ def _write(
 def dependent_runs(session: Session, run_id: int) -> list[int]:
     """Runs of unknowns that were read on any curve of this run."""
     run_numbered(session, run_id)
-    return list(
-        session.scalars(
-            select(tables.Run.id)
-            .join(tables.Curve, tables.Curve.id == tables.Run.curve_id)
-            .where(tables.Curve.run_id == run_id)
-            .order_by(tables.Run.id)
-        )
-    )
+    return list(dependents_of(session, run_id))

@@ -164,7 +164,7 @@ def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
         evaluation=evaluation,
         readings=own,
         amendments=amendments_of(session, run),
-        dependents=_dependents(session, run),
+        dependents=dependents_of(session, run.id),
         curves_before=_curves_before(session, curve_row.run_id),
         attempts_that_day=attempts_on_day(
             session, facts.instrument_id, method.name, local(facts.at, facts.offset_minutes)
@@ -280,12 +280,12 @@ def attempts_on_day(session: Session, instrument_id: int, method: str, at: datet
     return int(session.scalar(query) or 0)
 
 
-def _dependents(session: Session, run: tables.Run) -> tuple[int, ...]:
+def dependents_of(session: Session, run_id: int) -> tuple[int, ...]:
     """Runs of unknowns that were read on a curve of this run."""
     query = (
         select(tables.Run.id)
         .join(tables.Curve, tables.Curve.id == tables.Run.curve_id)
-        .where(tables.Curve.run_id == run.id)
+        .where(tables.Curve.run_id == run_id)
         .order_by(tables.Run.id)
     )
     return tuple(session.scalars(query))
