@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from datetime import datetime, tzinfo
+from datetime import datetime
 
 from sqlalchemy import select
 from sqlalchemy.orm import Session
@@ -189,11 +189,6 @@ def add_run(
         )
     )
     return row.id
-
-
-def _aware(at: datetime | None, zone: tzinfo | None) -> datetime | None:
-    """Time of a reading on the clock of its run."""
-    return at if at is None or at.tzinfo else at.replace(tzinfo=zone)
 
 
 def add_readings(session: Session, run_id: int, run: PlannedRun) -> Mapping[int, int]:

@@ -27,7 +27,6 @@ if TYPE_CHECKING:
     from calib.bench.review_drift import DriftRecord
 
 LOG = "calib-log-1"
-RUN = "calib-run-1"
 RUNS = "calib-runs-1"
 DRIFT = "calib-drift-1"
 PREVIEW = "calib-preview-1"
