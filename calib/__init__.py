@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from calib.curves.diagnostics import Finding
     from calib.curves.fit import fit
     from calib.curves.noise import NoiseModel, assumed_noise
+    from calib.curves.pooling import pool_noise
     from calib.curves.stack import CurveStack, fit_stack
     from calib.errors import CalibError
     from calib.models import RESPONSE_MODELS, custom_model
@@ -45,6 +46,7 @@ _HOME = {
     "influence": "calib.quantification.influence",
     "Laboratory": "calib.bench.laboratory",
     "open_store": "calib.bench.laboratory",
+    "pool_noise": "calib.curves.pooling",
     "precision_profile": "calib.quantification.range",
     "working_range": "calib.quantification.range",
 }
@@ -69,6 +71,7 @@ __all__ = [
     "fit_stack",
     "influence",
     "open_store",
+    "pool_noise",
     "precision_profile",
     "working_range",
 ]

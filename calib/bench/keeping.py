@@ -161,7 +161,7 @@ def curve_of(row: tables.Curve, standards: Sequence[Measured]) -> Curve:
     free = np.array([n not in row.fixed for n in model.names])
     nu = int(row.degrees_of_freedom)
     total = _number(row.residual_sum)
-    scale = 1.0 if noise.known_scale else (float(np.sqrt(total / nu)) if nu > 0 else np.nan)
+    scale, freedom = (float(v) for v in noise.scale(total, nu))
     return Curve(
         response_model=model,
         values=frozen(np.array([_number(row.parameters[n]) for n in model.names])),
@@ -177,7 +177,7 @@ def curve_of(row: tables.Curve, standards: Sequence[Measured]) -> Curve:
         residual_sum=total,
         degrees_of_freedom=nu,
         scale=scale,
-        coverage_freedom=np.inf if noise.known_scale else float(nu),
+        coverage_freedom=freedom,
         r_squared=_number(row.r_squared),
         aicc=_number(row.aicc),
         determined=np.array([n not in row.undetermined for n in model.names]),

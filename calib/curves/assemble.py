@@ -10,6 +10,7 @@ from scipy.special import chdtrc
 
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding, Information, findings_of, information
+from calib.curves.history_noise import ENOUGH_RUNS, HistoryNoise
 from calib.curves.noise import NoiseModel, UniformNoise
 from calib.curves.solver import Problem, Solution
 from calib.curves.standards import Standards, frozen
@@ -41,8 +42,7 @@ def curve_from(fitted: Fitted, standards: Standards, solver: str) -> Curve:
     nu = standards.response.size - int(problem.free.sum())
     mean = problem.model.response(problem.x, solution.parameters)
     noise = fitted.noise.after_fit(mean)
-    known = noise.known_scale
-    scale = 1.0 if known else (float(np.sqrt(solution.weighted_sum / nu)) if nu > 0 else np.nan)
+    scale, freedom = (float(v) for v in noise.scale(solution.weighted_sum, nu))
     info = information(problem, solution.parameters)
     findings = findings_of(problem, solution, info, 0.0 if np.isnan(scale) else scale, fitted.stable)
     return Curve(
@@ -57,14 +57,14 @@ def curve_from(fitted: Fitted, standards: Standards, solver: str) -> Curve:
         residual_sum=solution.weighted_sum,
         degrees_of_freedom=nu,
         scale=scale,
-        coverage_freedom=np.inf if known else float(nu),
+        coverage_freedom=freedom,
         r_squared=_r_squared(problem, solution),
         determined=info.determined,
         aicc=_aicc(solution.weighted_sum, standards.response.size, int(problem.free.sum())),
         converged=solution.converged and fitted.stable,
         findings=(
             *findings,
-            *_noise_findings(noise),
+            *_noise_findings(noise, solution.weighted_sum, nu),
             *_contradicted(noise, solution.weighted_sum, nu),
             *_second_solution(fitted),
         ),
@@ -79,15 +79,19 @@ def _covariance(info: Information, free: NDArray[np.bool_], scale: float) -> Arr
     return covariance
 
 
-def _noise_findings(noise: NoiseModel) -> tuple[Finding, ...]:
-    if getattr(noise, "origin", "") != ONE_RUN:
-        return ()
-    return (
-        Finding(
-            "variance-from-one-run",
-            "variance function from 1 run: nominal 95 % intervals cover about 89–95 %",
-        ),
-    )
+def _noise_findings(noise: NoiseModel, weighted_sum: float, nu: int) -> tuple[Finding, ...]:
+    if isinstance(noise, HistoryNoise):
+        noisy = noise.noisy_run(weighted_sum, nu)
+        few = (_few_runs("variance-from-few-runs", noise.runs),) if noise.runs < ENOUGH_RUNS else ()
+        return (*few, *((Finding("noisy-run", noisy),) if noisy else ()))
+    if getattr(noise, "origin", "") == ONE_RUN:
+        return (_few_runs("variance-from-one-run", 1),)
+    return ()
+
+
+def _few_runs(code: str, runs: int) -> Finding:
+    which = "1 run" if runs == 1 else f"{runs} runs"
+    return Finding(code, f"variance function from {which}: nominal 95 % intervals cover about 89–95 %")
 
 
 def _second_solution(fitted: Fitted) -> tuple[Finding, ...]:

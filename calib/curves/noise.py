@@ -53,6 +53,25 @@ class NoiseModel(ABC):
         """Whether G changes with the fitted means, so that the fit is iterated."""
         return True
 
+    def scale(self, residual_sum: ArrayLike, degrees_of_freedom: ArrayLike) -> tuple[Array, Array]:
+        """Standard deviation that multiplies the model, and the degrees of freedom behind it.
+
+        Parameters
+        ----------
+        residual_sum, degrees_of_freedom : (R,) arrays or numbers
+            Weighted sum of squared residuals, and readings minus free parameters, of each run.
+
+        Returns
+        -------
+        tuple of arrays
+            The first is nan where a run has no degrees of freedom.
+        """
+        nu = np.asarray(degrees_of_freedom, dtype=np.float64)
+        if self.known_scale:
+            return np.ones_like(nu), np.full_like(nu, np.inf)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.where(nu > 0, np.sqrt(np.asarray(residual_sum) / nu), np.nan), nu
+
     def at_standards(self, mean: Array, concentration: Array) -> Array:
         """G of the standards themselves."""
         return self.variance(mean, concentration)
@@ -312,5 +331,9 @@ def noise_from_dict(record: Mapping[str, Any]) -> NoiseModel:
             return PowerOfConcentrationNoise(**fields)
         case "given":
             return GivenNoise(tuple(fields["sd"]), fields["known"], tuple(fields["mean"]))
+        case "history":
+            from calib.curves.history_noise import history_noise_from
+
+            return history_noise_from(fields)
         case kind:
             raise MethodError(f"unknown noise model {kind!r}")

@@ -36,8 +36,8 @@ def requested_noise(noise: str | NoiseModel, given: GivenNoise | None) -> str | 
         return noise
     if noise == "history":
         raise MethodError(
-            "noise = 'history' (pooled over past runs) is not available in this version; "
-            f"use one of {', '.join(NOISE_NAMES)} or an assumed noise model"
+            "noise = 'history' is known to a method alone, whose runs are in a store; here make the model with "
+            "calib.pool_noise(curves of past runs) and give that"
         )
     raise MethodError(f"unknown noise model {noise!r}; known are {', '.join(NOISE_NAMES)}")
 

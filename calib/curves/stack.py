@@ -290,10 +290,8 @@ def _assembled(
     total[usable] = found.total
     covariance = np.full((runs, k, k), np.nan)
     inverse = inverses(problem, levels, bound, found)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        known = bound.known_scale
-        scale = np.ones(usable.size) if known else np.where(nu[usable] > 0, found.total / nu[usable], np.nan)
-    covariance[usable] = inverse * scale[:, None, None]
+    scale, _ = bound.scale(found.total, nu[usable])
+    covariance[usable] = inverse * scale[:, None, None] ** 2
     converged, stable = np.zeros(runs, dtype=bool), np.zeros(runs, dtype=bool)
     converged[usable], stable[usable] = found.converged & settled.stable, settled.stable
     at_bound = np.zeros(runs, dtype=bool)

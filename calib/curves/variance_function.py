@@ -20,6 +20,8 @@ Array = NDArray[np.float64]
 # Range of theta in G = mean^(2·theta); beyond it no instrument noise is known.
 THETA = (-0.2, 2.0)
 ESTIMATED = ("power-of-mean", "additive-relative")
+# Cells of the first grid and of each closer one; five times closer, a cell is 1e-5 of the range.
+GRID, CELLS, ZOOMS = 25, 9, 5
 
 
 def pseudo_likelihood(noise: NoiseModel, residual: Array, mean: Array, leverage: Array) -> float:
@@ -48,8 +50,6 @@ def estimate_variance_function(
     MethodError
         For an unknown family.
     """
-    from scipy.optimize import minimize_scalar
-
     span = max(float(np.ptp(mean)), float(np.max(np.abs(mean))) * 1e-6, 1e-100)
     candidate: Callable[[float], NoiseModel]
     if family == "power-of-mean":
@@ -67,10 +67,23 @@ def estimate_variance_function(
 
     else:
         raise MethodError(f"unknown variance function '{family}'; known are {', '.join(ESTIMATED)}")
-    found = minimize_scalar(
-        lambda t: pseudo_likelihood(candidate(float(t)), residual, mean, leverage),
-        bounds=bounds,
-        method="bounded",
-        options={"xatol": 1e-6},
-    )
-    return candidate(float(found.x))
+    return candidate(_lowest(lambda t: pseudo_likelihood(candidate(t), residual, mean, leverage), *bounds))
+
+
+def _lowest(function: Callable[[float], float], low: float, high: float) -> float:
+    """Where a function is lowest: the best of a grid, closed in on, then the vertex of a parabola.
+
+    The vertex follows the data smoothly, as comparing nearly equal values could not.
+    """
+    at = np.linspace(low, high, GRID)
+    for _ in range(ZOOMS):
+        best = int(np.argmin([function(float(t)) for t in at]))
+        best = min(max(best, 1), at.size - 2)
+        at = np.linspace(at[best - 1], at[best + 1], CELLS)
+    values = [function(float(t)) for t in at]
+    best = int(np.argmin(values))
+    if best in (0, at.size - 1):
+        return float(at[best])
+    left, lowest, right = values[best - 1 : best + 2]
+    bend = left - 2.0 * lowest + right
+    return float(at[best] + (0.5 * (at[1] - at[0]) * (left - right) / bend if bend > 0 else 0.0))

@@ -115,8 +115,8 @@ def test_noise_that_cannot_be_assumed(of: str, exponent: float, message: str) ->
 
 
 def test_an_unknown_record_of_noise_is_refused() -> None:
-    with pytest.raises(MethodError, match="unknown noise model 'history'"):
-        noise_from_dict({"kind": "history"})
+    with pytest.raises(MethodError, match="unknown noise model 'guessed'"):
+        noise_from_dict({"kind": "guessed"})
 
 
 def test_a_response_of_zero_gets_no_unbounded_weight() -> None:

@@ -41,7 +41,7 @@ REFUSED: list[tuple[str, type[CalibError], str, dict[str, Any]]] = [
     ("nothing free", ModelError, "all parameters .* are fixed", {"model": "proportional", "fixed": {"slope": 1.0}}),
     ("unknown solver", ModelError, "unknown solver 'magic'; known are least-squares, simplex", {"solver": "magic"}),
     ("unknown noise", MethodError, "unknown noise model 'loud'; known are uniform, relative", {"noise": "loud"}),
-    ("history", MethodError, "'history'.*not available in this version; use one of", {"noise": "history"}),
+    ("history", MethodError, "known to a method alone.*calib.pool_noise", {"noise": "history"}),
     ("two scales", InputError, "u \\(known\\) or relative_sd.*not both", {"u": np.ones(5), "relative_sd": np.ones(5)}),
     ("two noises", MethodError, "leave noise at 'uniform'", {"u": np.ones(5), "noise": "relative"}),
     ("u too short", InputError, r"u has shape \(3,\) for 5 standards", {"u": np.ones(3)}),
