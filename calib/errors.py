@@ -34,7 +34,14 @@ class DuplicateFile(InputError):
 
 
 class MethodError(CalibError):
-    """A method definition or an acceptance limit contradicts itself."""
+    """A method definition or an acceptance limit contradicts itself.
+
+    ``key`` names the setting it is about, such as ``acceptance.blank``, where there is one.
+    """
+
+    def __init__(self, message: str, key: str | None = None) -> None:
+        super().__init__(message)
+        self.key = key
 
 
 class ModelError(CalibError):

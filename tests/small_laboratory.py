@@ -26,7 +26,7 @@ reference_concentrations = [2.0, 5.0, 9.0]
 [acceptance]
 preset = "plain"
 residual_sd = 0.2
-blank = 0.2
+blank = "0.2 mg/L"
 
 [curve]
 valid_for = "24 h"

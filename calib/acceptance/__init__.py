@@ -3,7 +3,7 @@
 from calib.acceptance.criteria import CRITERIA, criteria_from
 from calib.acceptance.criterion import Criterion, CriterionResult
 from calib.acceptance.evidence import Evidence, JudgedCheck, JudgedStandard
-from calib.acceptance.limits import Limit, read_preset
+from calib.acceptance.limits import Limit, Quantity, ratio_of, read_preset
 from calib.acceptance.verdict import Verdict, judge
 
 __all__ = [
@@ -14,8 +14,10 @@ __all__ = [
     "JudgedCheck",
     "JudgedStandard",
     "Limit",
+    "Quantity",
     "Verdict",
     "criteria_from",
     "judge",
+    "ratio_of",
     "read_preset",
 ]

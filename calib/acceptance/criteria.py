@@ -3,14 +3,41 @@
 from collections.abc import Mapping
 from types import MappingProxyType
 
+from calib.acceptance.control_criteria import (
+    RECOVERY,
+    ControlLevels,
+    ControlRecovery,
+    ControlsPassing,
+    ControlsPassingEachLevel,
+)
 from calib.acceptance.criterion import Criterion, LimitedCriterion
-from calib.acceptance.limits import Limit, check_value
+from calib.acceptance.design_criteria import (
+    MinimumBlanks,
+    MinimumChecks,
+    MinimumControls,
+    MinimumControlShare,
+    MinimumFirstChecks,
+    MinimumZeros,
+)
+from calib.acceptance.limits import Limit, check_value, place
 from calib.acceptance.run_criteria import (
     Blank,
+    BlankShare,
+    CarryOver,
     CheckRecovery,
     FirstCheckRecovery,
+    OpeningCheckRecovery,
     ResidualSd,
     SaturatedStandards,
+)
+from calib.acceptance.shape_criteria import (
+    LackOfFit,
+    MandelLinearity,
+    ResponseFactorSpread,
+    RSquared,
+    TopOfRange,
+    TopSlope,
+    VarianceHomogeneity,
 )
 from calib.acceptance.standard_criteria import (
     HIGHEST,
@@ -30,18 +57,41 @@ from calib.errors import MethodError
 
 CRITERIA: Mapping[str, type[LimitedCriterion]] = MappingProxyType(
     {
-        "relative_error": ErrorOfStandards,
-        "relative_error_lowest": ErrorAtLowest,
-        "relative_error_highest": ErrorAtHighest,
-        "standards_passing": StandardsPassing,
-        "levels_passing": LevelsPassing,
-        "minimum_levels": MinimumLevels,
-        "relative_standard_error": StandardErrorOfCurve,
-        "residual_sd": ResidualSd,
-        "blank": Blank,
-        "first_check_recovery": FirstCheckRecovery,
-        "check_recovery": CheckRecovery,
-        "saturated_standards": SaturatedStandards,
+        criterion.key: criterion
+        for criterion in (
+            ErrorOfStandards,
+            ErrorAtLowest,
+            ErrorAtHighest,
+            StandardsPassing,
+            LevelsPassing,
+            MinimumLevels,
+            StandardErrorOfCurve,
+            ResponseFactorSpread,
+            RSquared,
+            ResidualSd,
+            LackOfFit,
+            MandelLinearity,
+            VarianceHomogeneity,
+            TopSlope,
+            TopOfRange,
+            SaturatedStandards,
+            Blank,
+            BlankShare,
+            CarryOver,
+            FirstCheckRecovery,
+            OpeningCheckRecovery,
+            CheckRecovery,
+            ControlRecovery,
+            ControlsPassing,
+            ControlsPassingEachLevel,
+            ControlLevels,
+            MinimumBlanks,
+            MinimumZeros,
+            MinimumFirstChecks,
+            MinimumChecks,
+            MinimumControls,
+            MinimumControlShare,
+        )
     }
 )
 """Setting key and its criterion, in the order a verdict lists them. A new criterion is one line here."""
@@ -49,6 +99,7 @@ CRITERIA: Mapping[str, type[LimitedCriterion]] = MappingProxyType(
 NO_SATURATION = Limit(0.0, "no saturated reading in the fit unless the method allows it", "common practice")
 
 RELATIVE_ERROR_MEASURES = (ErrorOfStandards.key, StandardErrorOfCurve.key)
+NEEDS_CONTROL_RECOVERY = (ControlsPassing.key, ControlsPassingEachLevel.key, ControlLevels.key)
 NEEDS_RELATIVE_ERROR = (LOWEST, HIGHEST, StandardsPassing.key, LevelsPassing.key)
 
 
@@ -76,6 +127,7 @@ def criteria_from(limits: Mapping[str, Limit]) -> tuple[Criterion, ...]:
     for key, limit in complete.items():
         check_value(key, limit, CRITERIA[key].quantity)
     _refuse_without_relative_error(complete)
+    _refuse_without_control_recovery(complete)
     _refuse_narrow_ends(complete)
     return tuple(
         criterion(complete)
@@ -85,18 +137,22 @@ def criteria_from(limits: Mapping[str, Limit]) -> tuple[Criterion, ...]:
 
 
 def _counted_by_the_share(key: str, limits: Mapping[str, Limit]) -> bool:
-    """Whether a relative-error limit rejects nothing by itself.
+    """Whether a limit of single standards or controls rejects nothing by itself.
 
-    Where a method allows a share of the standards to fail, a single one beyond its limit
-    counts against that share; only without such a share must every standard keep it.
+    Where a method allows a share of them to fail, a single one beyond its limit counts
+    against that share; only without such a share must every one keep it.
     """
+    if key == RECOVERY:
+        return ControlsPassing.key in limits
     return StandardsPassing.key in limits and key in RELATIVE_ERRORS
 
 
 def _refuse_unknown(limits: Mapping[str, Limit]) -> None:
     for key in limits:
         if key not in CRITERIA:
-            raise MethodError(f"unknown acceptance limit {key!r}; allowed are {', '.join(CRITERIA)}")
+            raise MethodError(
+                f"unknown acceptance limit {key!r}; allowed are {', '.join(CRITERIA)}", place(key)
+            )
 
 
 def _refuse_without_relative_error(limits: Mapping[str, Limit]) -> None:
@@ -105,11 +161,22 @@ def _refuse_without_relative_error(limits: Mapping[str, Limit]) -> None:
     if not any(key in limits for key in RELATIVE_ERROR_MEASURES):
         raise MethodError(
             "the acceptance limits have no relative-error measure, without which no curve is accepted;"
-            f" give {' or '.join(RELATIVE_ERROR_MEASURES)}"
+            f" give {' or '.join(RELATIVE_ERROR_MEASURES)}",
+            "acceptance",
         )
     for key in NEEDS_RELATIVE_ERROR:
         if key in limits and MIDDLE not in limits:
-            raise MethodError(f"{key} needs the limit {MIDDLE} beside it; give {MIDDLE} or leave {key} out")
+            raise MethodError(
+                f"{key} needs the limit {MIDDLE} beside it; give {MIDDLE} or leave {key} out", place(key)
+            )
+
+
+def _refuse_without_control_recovery(limits: Mapping[str, Limit]) -> None:
+    for key in NEEDS_CONTROL_RECOVERY:
+        if key in limits and RECOVERY not in limits:
+            raise MethodError(
+                f"{key} needs the limit {RECOVERY} beside it; give {RECOVERY} or leave {key} out", place(key)
+            )
 
 
 def _refuse_narrow_ends(limits: Mapping[str, Limit]) -> None:
@@ -117,5 +184,6 @@ def _refuse_narrow_ends(limits: Mapping[str, Limit]) -> None:
         if key in limits and limits[key].value < limits[MIDDLE].value:
             raise MethodError(
                 f"{key} ({percent(limits[key].value)}) is narrower than {MIDDLE}"
-                f" ({percent(limits[MIDDLE].value)}); widen it or leave it out"
+                f" ({percent(limits[MIDDLE].value)}); widen it or leave it out",
+                place(key),
             )

@@ -28,6 +28,10 @@ class CriterionResult:
         Where the limit comes from, and how far that was checked.
     detail : str
         Which readings failed and by how much, or the figure that passed.
+    warns : bool
+        Not keeping this limit is shown and rejects nothing.
+    remedy : str
+        Of a limit that is not kept: what would have to be different, in words and figures.
     """
 
     id: str
@@ -37,6 +41,13 @@ class CriterionResult:
     passed: bool
     source: str
     detail: str
+    warns: bool = False
+    remedy: str = ""
+
+    @property
+    def rejects(self) -> bool:
+        """Whether this answer alone rejects the curve."""
+        return not self.passed and not self.warns
 
 
 class Criterion(Protocol):
@@ -69,7 +80,9 @@ class LimitedCriterion(ABC):
     def judge(self, evidence: Evidence) -> CriterionResult:
         """Judge the evidence."""
 
-    def _result(self, what: str, observed: float | None, passed: bool, detail: str) -> CriterionResult:
+    def _result(
+        self, what: str, observed: float | None, passed: bool, detail: str, remedy: str = ""
+    ) -> CriterionResult:
         return CriterionResult(
             id=self.key,
             what=what,
@@ -78,4 +91,6 @@ class LimitedCriterion(ABC):
             passed=passed,
             source=self.limit.cited,
             detail=detail,
+            warns=self.limit.warns,
+            remedy="" if passed else remedy,
         )

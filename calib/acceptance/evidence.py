@@ -1,8 +1,8 @@
 """What a verdict rests on: the standards, checks and blanks as the fitted curve reads them."""
 
 import math
-from collections.abc import Iterable
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,6 +27,10 @@ class JudgedStandard:
         Left out of the fit, with a reason kept elsewhere.
     saturated : bool
         The detector was at its ceiling.
+    fitted_response : float
+        Response of the curve at the level; nan where it has none.
+    variance : float
+        Noise model's variance of this response, up to the common scale: 1 where all weigh alike.
     """
 
     label: str
@@ -37,11 +41,16 @@ class JudgedStandard:
     relative_error: float
     excluded: bool
     saturated: bool
+    fitted_response: float = math.nan
+    variance: float = 1.0
 
 
 @dataclass(frozen=True, slots=True)
 class JudgedCheck:
-    """One reading of a check standard; `role` is 'check' or 'first-check', `found` nan off the curve."""
+    """One reading of a check standard or control sample; `found` is nan off the curve.
+
+    `role` is 'check', 'first-check' or 'control'.
+    """
 
     label: str
     role: str
@@ -63,7 +72,7 @@ class Evidence:
     standards : tuple of JudgedStandard
         Standards and anchor standards, the excluded ones too.
     checks : tuple of JudgedCheck
-        Check standards and first checks.
+        Check standards, first checks and controls, in the order they were measured.
     blanks : tuple of float
         Back-calculated concentrations of the blanks; 0.0 where the response lies on the
         far side of the response at concentration zero, nan where there is no value.
@@ -79,6 +88,17 @@ class Evidence:
         Shown with the verdict, never judged.
     concentration_unit : str
         Unit of every concentration here.
+    model : str
+        Key of the response model.
+    end_slopes : tuple of float
+        Slope dy/dx of the curve at the lowest and highest standard in the fit.
+    counts : mapping of str to int
+        Readings with a response, by role; samples count once as 'unknown'.
+    carry_over : tuple of float
+        Response of each carry-over blank above that at concentration zero, as a share of what the lowest
+        standard adds to it; nan where there is no such share.
+    reporting_limit : float or None
+        Lowest concentration the method reports, undiluted.
     """
 
     standards: tuple[JudgedStandard, ...]
@@ -90,6 +110,11 @@ class Evidence:
     free_parameters: int
     r_squared: float
     concentration_unit: str
+    model: str = ""
+    end_slopes: tuple[float, float] = (math.nan, math.nan)
+    counts: Mapping[str, int] = field(default_factory=dict)
+    carry_over: tuple[float, ...] = ()
+    reporting_limit: float | None = None
 
     @property
     def judged(self) -> tuple[JudgedStandard, ...]:
@@ -102,10 +127,28 @@ class Evidence:
         return tuple(s for s in self.judged if not s.excluded and not math.isnan(s.response))
 
     @property
+    def in_fit(self) -> tuple[JudgedStandard, ...]:
+        """Every reading in the fit: anchors, fitted blanks and concentration zero too, by level."""
+        return _by_level(s for s in self.standards if not s.excluded and not math.isnan(s.response))
+
+    @property
     def ends(self) -> tuple[float, float] | None:
         """Lowest and highest judged level in the fit; None when there is none."""
-        levels = [s.level for s in self.fitted]
-        return (min(levels), max(levels)) if levels else None
+        return _ends(self.fitted)
+
+    @property
+    def designed_ends(self) -> tuple[float, float] | None:
+        """Lowest and highest judged level of the run, excluded ones too.
+
+        A level that becomes the end because the one beyond it was lost keeps its own limit
+        (ICH M10, 2022, 3.3.2, from memory).
+        """
+        return _ends(self.judged)
+
+
+def _ends(standards: Iterable[JudgedStandard]) -> tuple[float, float] | None:
+    levels = [s.level for s in standards]
+    return (min(levels), max(levels)) if levels else None
 
 
 def _by_level(standards: Iterable[JudgedStandard]) -> tuple[JudgedStandard, ...]:

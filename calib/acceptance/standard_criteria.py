@@ -7,7 +7,7 @@ from typing import ClassVar
 
 from calib.acceptance.criterion import CriterionResult, LimitedCriterion
 from calib.acceptance.evidence import Evidence, JudgedStandard
-from calib.acceptance.limits import Limit, Quantity, at_least, within
+from calib.acceptance.limits import INCLUSIVE, Limit, Quantity, at_least, within
 from calib.acceptance.wording import (
     amount,
     count,
@@ -15,6 +15,7 @@ from calib.acceptance.wording import (
     percent,
     relative_error_words,
     signed_percent,
+    span,
     worst_first,
 )
 
@@ -25,7 +26,10 @@ RELATIVE_ERRORS = (MIDDLE, LOWEST, HIGHEST)
 
 
 def governing_key(limits: Mapping[str, Limit], level: float, ends: tuple[float, float] | None) -> str:
-    """Which relative-error limit a level is judged by: an end level's own one where the method gives it."""
+    """Which relative-error limit a level is judged by: an end level's own one where the method gives it.
+
+    ``ends`` are those of the run as it was designed, so that a level keeps its limit whatever is excluded.
+    """
     if ends is not None and level == ends[0] and LOWEST in limits:
         return LOWEST
     if ends is not None and level == ends[1] and HIGHEST in limits:
@@ -54,7 +58,16 @@ class ErrorOfStandards(LimitedCriterion):
         if not governed:
             return self._result(what, None, True, "no standard in the fit falls under this limit")
         failing = [s for s in governed if not keeps(s, self.limit.value)]
-        return self._result(what, _largest(governed), not failing, self._detail(governed, failing, evidence))
+        return self._result(
+            what,
+            _largest(governed),
+            not failing,
+            self._detail(governed, failing, evidence),
+            self._remedy(failing, evidence),
+        )
+
+    def _remedy(self, failing: list[JudgedStandard], evidence: Evidence) -> str:
+        return listed([_would_pass(s, self.limit.value, evidence) for s in worst_first(failing)])
 
     def _whom(self) -> str:
         words = {
@@ -66,7 +79,7 @@ class ErrorOfStandards(LimitedCriterion):
         return words[LOWEST in self.limits, HIGHEST in self.limits]
 
     def _governed(self, evidence: Evidence) -> list[JudgedStandard]:
-        ends = evidence.ends
+        ends = evidence.designed_ends
         return [s for s in evidence.fitted if governing_key(self.limits, s.level, ends) == self.key]
 
     def _detail(
@@ -120,8 +133,16 @@ class StandardsPassing(LimitedCriterion):
         passing = len(evidence.judged) - len(failing)
         share = passing / len(evidence.judged)
         detail = f"{passing} of {count(len(evidence.judged), 'standard')} ({100 * share:.1f} %)"
+        needed = math.ceil(self.limit.value * len(evidence.judged) * (1 - INCLUSIVE))
         return self._result(
-            what, share, at_least(share, self.limit.value), detail + self._named(failing, evidence)
+            what,
+            share,
+            at_least(share, self.limit.value),
+            detail + self._named(failing, evidence),
+            f"{needed} of {len(evidence.judged)} would have to pass: "
+            + listed(
+                [_would_pass(s, _own_limit(s, self.limits, evidence), evidence) for s in worst_first(failing)]
+            ),
         )
 
     def _named(self, failing: list[JudgedStandard], evidence: Evidence) -> str:
@@ -158,7 +179,14 @@ class LevelsPassing(LimitedCriterion):
         passing = len(_levels(evidence.judged)) - len(failing)
         named = [amount(level, evidence.concentration_unit) for level in failing]
         detail = count(passing, "passing level") + (f"; not passing: {', '.join(named)}" if named else "")
-        return self._result(what, passing, at_least(passing, self.limit.value), detail)
+        return self._result(
+            what,
+            passing,
+            at_least(passing, self.limit.value),
+            detail,
+            f"{count(int(self.limit.value) - passing, 'more level')} would have to pass, by more levels in the "
+            "run or by better readings at those named",
+        )
 
     def _passes(self, level: float, evidence: Evidence) -> bool:
         readings = [s for s in evidence.judged if s.level == level]
@@ -176,7 +204,14 @@ class MinimumLevels(LimitedCriterion):
         """Compare the number of levels with the limit."""
         levels = len(_levels(evidence.fitted))
         what = f"at least {count(int(self.limit.value), 'level')} above zero in the fit"
-        return self._result(what, levels, at_least(levels, self.limit.value), count(levels, "level"))
+        missing = int(self.limit.value) - levels
+        return self._result(
+            what,
+            levels,
+            at_least(levels, self.limit.value),
+            count(levels, "level"),
+            f"measure {count(missing, 'more level')} of standards",
+        )
 
 
 class StandardErrorOfCurve(LimitedCriterion):
@@ -202,7 +237,15 @@ class StandardErrorOfCurve(LimitedCriterion):
                 what, None, False, f"no value {basis}: a standard has no back-calculated value"
             )
         shown = signed_percent(rse, self.limit.value).removeprefix("+")
-        return self._result(what, rse, within(rse, self.limit.value), f"{shown} {basis}")
+        worst = max(evidence.fitted, key=lambda s: abs(s.relative_error))
+        words = relative_error_words(worst, evidence.concentration_unit, math.inf)
+        return self._result(
+            what,
+            rse,
+            within(rse, self.limit.value),
+            f"{shown} {basis}",
+            f"the relative errors would have to be smaller; the largest part of it is {words}",
+        )
 
 
 def relative_standard_error(relative_errors: Iterable[float], degrees_of_freedom: int) -> float:
@@ -210,8 +253,15 @@ def relative_standard_error(relative_errors: Iterable[float], degrees_of_freedom
     return math.sqrt(math.fsum(error * error for error in relative_errors) / degrees_of_freedom)
 
 
+def _would_pass(standard: JudgedStandard, limit: float, evidence: Evidence) -> str:
+    unit = evidence.concentration_unit
+    if standard.excluded:
+        return f"{standard.label} is excluded and cannot pass"
+    return f"{standard.label} would have to read {span(standard.level, limit, unit)}"
+
+
 def _own_limit(standard: JudgedStandard, limits: Mapping[str, Limit], evidence: Evidence) -> float:
-    return limits[governing_key(limits, standard.level, evidence.ends)].value
+    return limits[governing_key(limits, standard.level, evidence.designed_ends)].value
 
 
 def _keeps_own_limit(standard: JudgedStandard, limits: Mapping[str, Limit], evidence: Evidence) -> bool:

@@ -28,7 +28,7 @@ class Verdict:
     r_squared : float or None
         Shown, never judged.
     reasons : tuple of str
-        The failing criteria in words and figures.
+        The criteria that reject the curve, in words and figures.
     """
 
     decision: str
@@ -52,7 +52,7 @@ def judge(evidence: Evidence, criteria: Sequence[Criterion]) -> Verdict:
     Returns
     -------
     Verdict
-        Rejected when any criterion fails.
+        Rejected when any criterion fails that does more than warn.
     """
     results = tuple(criterion.judge(evidence) for criterion in (CurveUsable(), *criteria))
     lowest, highest = evidence.ends or (None, None)
@@ -62,12 +62,12 @@ def judge(evidence: Evidence, criteria: Sequence[Criterion]) -> Verdict:
         lowest=lowest,
         highest=highest,
         r_squared=evidence.r_squared if math.isfinite(evidence.r_squared) else None,
-        reasons=tuple(f"{r.what}: {r.detail}" for r in results if not r.passed),
+        reasons=tuple(f"{r.what}: {r.detail}" for r in results if r.rejects),
     )
 
 
 def _decision(evidence: Evidence, results: Sequence[CriterionResult]) -> str:
-    if not all(result.passed for result in results):
+    if any(result.rejects for result in results):
         return REJECTED
     excluded = any(standard.excluded for standard in evidence.judged)
     return ACCEPTED_WITH_EXCLUSIONS if excluded else ACCEPTED

@@ -44,6 +44,12 @@ def amount(concentration: float, unit: str) -> str:
     return with_unit(f"{concentration:g}", unit)
 
 
+def span(level: float, limit: float, unit: str) -> str:
+    """Say between which concentrations a known one reads within its relative limit."""
+    low, high = level * max(1 - limit, 0.0), level * (1 + limit)
+    return f"between {low:.4g} and {with_unit(f'{high:.4g}', unit)}"
+
+
 def relative_error_words(standard: JudgedStandard, unit: str, limit: float) -> str:
     """Say one standard's relative error, for example 'S1 at 0.5 ug/L: +16.4 %'."""
     return f"{standard.label} at {amount(standard.level, unit)}: {_outcome(standard, limit)}"

@@ -7,14 +7,14 @@ from collections.abc import Iterable, Sequence
 
 import numpy as np
 
-from calib.acceptance import Evidence, JudgedCheck, JudgedStandard, criteria_from, judge
+from calib.acceptance import criteria_from, judge
+from calib.bench.evidence import evidence_of, read_back
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.quantities import quantities_of
 from calib.bench.records import BlankRecord, Evaluation, Measured, StandardRecord, VerdictRecord
 from calib.curves.curve import Curve
 from calib.curves.fit import fit
 from calib.errors import InputError
-from calib.quantification.inverse import concentration_of
 
 STANDARD_ROLES = ("standard", "anchor")
 BLANK_ROLES = ("blank", "zero", "carry-over")
@@ -66,20 +66,8 @@ def assemble(definition: MethodDefinition, readings: Sequence[Measured], curve: 
     return Evaluation(curve, standards, blanks, verdict, quantities)
 
 
-def _read_back(curve: Curve, responses: Sequence[float | None]) -> list[float | None]:
-    """Concentrations of responses; None where there is no response or no concentration."""
-    present = [v for v in responses if v is not None]
-    found = iter(concentration_of(curve, present)) if present else iter(())
-    return [None if v is None else finite(float(next(found))) for v in responses]
-
-
-def finite(value: float) -> float | None:
-    """None for a value that is undefined."""
-    return value if math.isfinite(value) else None
-
-
 def _standards(curve: Curve, readings: Sequence[Measured], fitted: set[int]) -> Iterable[StandardRecord]:
-    found = _read_back(curve, [r.response for r in readings])
+    found = read_back(curve, [r.response for r in readings])
     for reading, value in zip(readings, found, strict=True):
         level = reading.concentration or 0.0
         yield StandardRecord(
@@ -105,7 +93,7 @@ def blank_records(curve: Curve, readings: Sequence[Measured]) -> tuple[BlankReco
 
 
 def _blanks(curve: Curve, readings: Sequence[Measured]) -> Iterable[BlankRecord]:
-    found = _read_back(curve, [r.response for r in readings])
+    found = read_back(curve, [r.response for r in readings])
     for reading, value in zip(readings, found, strict=True):
         if value is None and reading.response is not None and _below_zero_response(curve, reading.response):
             value = 0.0
@@ -130,42 +118,9 @@ def _verdict(
     standards: Sequence[StandardRecord],
     blanks: Sequence[BlankRecord],
 ) -> VerdictRecord:
-    evidence = Evidence(
-        standards=tuple(_judged(s) for s in standards if s.response is not None or s.saturated),
-        checks=tuple(_checks(curve, [r for r in readings if r.role in CHECK_ROLES])),
-        blanks=tuple(
-            math.nan if b.back_calculated is None else b.back_calculated
-            for b in blanks
-            if b.role == "blank" and b.response is not None
-        ),
-        converged=curve.converged,
-        findings=tuple((f.code, f.message) for f in curve.findings),
-        residual_sd=curve.residual_sd,
-        free_parameters=int(curve.free.sum()),
-        r_squared=curve.r_squared,
-        concentration_unit=definition.concentration_unit,
+    verdict = judge(
+        evidence_of(definition, readings, curve, standards, blanks), criteria_from(definition.limits)
     )
-    verdict = judge(evidence, criteria_from(definition.limits))
     return VerdictRecord(
         verdict.decision, verdict.criteria, verdict.lowest, verdict.highest, verdict.r_squared
     )
-
-
-def _judged(standard: StandardRecord) -> JudgedStandard:
-    return JudgedStandard(
-        label=f"{standard.label} ({standard.position})" if standard.position else standard.label,
-        role=standard.role,
-        level=standard.concentration,
-        response=math.nan if standard.response is None else standard.response,
-        back_calculated=math.nan if standard.back_calculated is None else standard.back_calculated,
-        relative_error=math.nan if standard.relative_error is None else standard.relative_error,
-        excluded=standard.excluded,
-        saturated=standard.saturated,
-    )
-
-
-def _checks(curve: Curve, readings: Sequence[Measured]) -> Iterable[JudgedCheck]:
-    present = [r for r in readings if r.response is not None]
-    for reading, value in zip(present, _read_back(curve, [r.response for r in present]), strict=True):
-        level = reading.concentration or 0.0
-        yield JudgedCheck(reading.where, reading.role, level, math.nan if value is None else value)

@@ -13,7 +13,8 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.acceptance import CriterionResult
-from calib.bench.evaluate import finite
+from calib.bench.acceptance_settings import preset_of_early_method
+from calib.bench.evidence import finite
 from calib.bench.method_definition import MethodDefinition, read_definition
 from calib.bench.records import (
     Evaluation,
@@ -310,6 +311,8 @@ def _criterion(result: CriterionResult) -> dict[str, Any]:
         "passed": bool(result.passed),
         "source": result.source,
         "detail": result.detail,
+        "warns": result.warns,
+        "remedy": result.remedy,
     }
 
 
@@ -380,4 +383,5 @@ def _bound(bounds: dict[str, Any], name: str, side: int, default: float) -> floa
 
 def definition_of(row: tables.Method) -> MethodDefinition:
     """The definition a method version stands for."""
-    return read_definition(row.definition, row.version)
+    preset = preset_of_early_method(row.definition) if row.preset is None else row.preset
+    return read_definition(row.definition, row.version, preset)

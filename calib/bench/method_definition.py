@@ -7,16 +7,17 @@ import re
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass
-from importlib import resources
 from typing import Any
 
 import numpy as np
 
-from calib.acceptance import Limit, criteria_from, read_preset
+from calib.acceptance import Limit
+from calib.bench.acceptance_settings import acceptance_limits
+from calib.bench.setting_lines import line_of
 from calib.curves.noise import NoiseModel, assumed_noise
 from calib.curves.requests import NOISE_NAMES, problem_of
 from calib.curves.standards import Standards
-from calib.errors import MethodError, ModelError
+from calib.errors import MethodError, ModelError, UnknownUnit
 from calib.intake import parse_concentration_unit
 from calib.models import ResponseModel, response_model
 
@@ -72,7 +73,7 @@ class MethodDefinition:
     valid_hours: float
 
 
-def read_definition(text: str, version: int = 1) -> MethodDefinition:
+def read_definition(text: str, version: int = 1, preset: str | None = None) -> MethodDefinition:
     """Read and validate the TOML text of a method.
 
     Parameters
@@ -80,27 +81,42 @@ def read_definition(text: str, version: int = 1) -> MethodDefinition:
     text : str
     version : int
         Named as the source of the limits the method sets itself.
+    preset : str, optional
+        Text of the preset as it was when the method was added; the one of this calib where left out.
 
     Raises
     ------
     MethodError
-        Naming key, value and what is allowed.
+        Naming line, key, value and what is allowed.
     """
     try:
         table = tomllib.loads(text)
     except tomllib.TOMLDecodeError as cause:
         raise MethodError(f"the method is not readable as TOML: {cause}; correct the text") from cause
+    try:
+        return _definition(table, version, preset)
+    except MethodError as wrong:
+        line = line_of(text, wrong.key)
+        raise MethodError(f"line {line}: {wrong}" if line else str(wrong), wrong.key) from wrong
+    except UnknownUnit as unknown:
+        line = line_of(text, "concentration_unit")
+        raise UnknownUnit(f"line {line}: concentration_unit: {unknown}") from unknown
+
+
+def _definition(table: Mapping[str, Any], version: int, preset: str | None) -> MethodDefinition:
     _check_keys(table)
     name = _text(table, "name")
     model = _model(_text(table, "model"))
     fixed = _numbers_of(table.get("fixed", {}), "fixed", model)
     bounds = _bounds(table.get("bounds", {}), model)
     _refuse_unfittable(model, fixed, bounds)
-    limits = _limits(table["acceptance"], f"method {name} version {version}")
+    unit = parse_concentration_unit(_text(table, "concentration_unit"))
+    own_source = f"method {name} version {version}"
+    limits = acceptance_limits(table["acceptance"], own_source, unit, model.name, preset)
     return MethodDefinition(
         name=name,
         analyte=_text(table, "analyte"),
-        concentration_unit=parse_concentration_unit(_text(table, "concentration_unit")),
+        concentration_unit=unit,
         response_unit=_text(table, "response_unit"),
         model=model.name,
         fixed=fixed,
@@ -116,31 +132,11 @@ def read_definition(text: str, version: int = 1) -> MethodDefinition:
     )
 
 
-def preset_names() -> tuple[str, ...]:
-    """Names of the acceptance presets that come with calib."""
-    folder = resources.files("calib.acceptance") / "presets"
-    return tuple(sorted(f.name.removesuffix(".toml") for f in folder.iterdir() if f.name.endswith(".toml")))
-
-
-def preset_limits(name: str) -> dict[str, Limit]:
-    """Limits of a preset.
-
-    Raises
-    ------
-    MethodError
-        When there is no such preset.
-    """
-    if name not in preset_names():
-        raise MethodError(f"acceptance.preset = {name!r} is unknown; known are {', '.join(preset_names())}")
-    file = resources.files("calib.acceptance") / "presets" / f"{name}.toml"
-    return read_preset(file.read_text(encoding="utf-8"))
-
-
 def _check_keys(table: Mapping[str, Any]) -> None:
     for key in table:
         if key not in (*REQUIRED, *OPTIONAL):
             raise MethodError(
-                f"unknown key '{key}' in the method; known are {', '.join((*REQUIRED, *OPTIONAL))}"
+                f"unknown key '{key}' in the method; known are {', '.join((*REQUIRED, *OPTIONAL))}", key
             )
     for key in REQUIRED:
         if key not in table:
@@ -150,7 +146,7 @@ def _check_keys(table: Mapping[str, Any]) -> None:
 def _text(table: Mapping[str, Any], key: str) -> str:
     value = table[key]
     if not isinstance(value, str) or not value.strip():
-        raise MethodError(f"{key} = {value!r} must be text in quotes")
+        raise MethodError(f"{key} = {value!r} must be text in quotes", key)
     return value.strip()
 
 
@@ -158,36 +154,37 @@ def _model(name: str) -> ResponseModel:
     try:
         return response_model(name)
     except ModelError as unknown:
-        raise MethodError(f"model: {unknown}") from unknown
+        raise MethodError(f"model: {unknown}", "model") from unknown
 
 
 def _number(value: object, key: str) -> float:
     if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
-        raise MethodError(f"{key} = {value!r} must be a finite number")
+        raise MethodError(f"{key} = {value!r} must be a finite number", key)
     return float(value)
 
 
 def _between(table: Mapping[str, Any], key: str, default: float, low: float, high: float) -> float:
     value = _number(table.get(key, default), key)
     if not low <= value <= high:
-        raise MethodError(f"{key} = {value:g} must lie between {low:g} and {high:g}")
+        raise MethodError(f"{key} = {value:g} must lie between {low:g} and {high:g}", key)
     return value
 
 
 def _switch(table: Mapping[str, Any], key: str) -> bool:
     value = table.get(key, False)
     if not isinstance(value, bool):
-        raise MethodError(f"{key} = {value!r} must be true or false")
+        raise MethodError(f"{key} = {value!r} must be true or false", key)
     return value
 
 
 def _parameters(table: object, key: str, model: ResponseModel) -> Mapping[str, Any]:
     if not isinstance(table, Mapping):
-        raise MethodError(f"{key} must be a table such as {key} = {{ {model.names[0]} = … }}")
+        raise MethodError(f"{key} must be a table such as {key} = {{ {model.names[0]} = … }}", key)
     for name in table:
         if name not in model.names:
             raise MethodError(
-                f"{key}.{name}: model '{model.name}' has no such parameter; it has {', '.join(model.names)}"
+                f"{key}.{name}: model '{model.name}' has no such parameter; it has {', '.join(model.names)}",
+                f"{key}.{name}",
             )
     return table
 
@@ -200,10 +197,13 @@ def _bounds(table: object, model: ResponseModel) -> dict[str, tuple[float, float
     bounds = {}
     for name, pair in _parameters(table, "bounds", model).items():
         if not isinstance(pair, list) or len(pair) != 2:
-            raise MethodError(f"bounds.{name} = {pair!r} must be [lower, upper]")
+            raise MethodError(f"bounds.{name} = {pair!r} must be [lower, upper]", f"bounds.{name}")
         low, high = (_number(v, f"bounds.{name}") for v in pair)
         if not low < high:
-            raise MethodError(f"bounds.{name} = [{low:g}, {high:g}]: the lower bound must be below the upper")
+            raise MethodError(
+                f"bounds.{name} = [{low:g}, {high:g}]: the lower bound must be below the upper",
+                f"bounds.{name}",
+            )
         bounds[name] = (low, high)
     return bounds
 
@@ -214,26 +214,27 @@ def _refuse_unfittable(
     """Refuse settings under which no run could ever be fitted."""
     both = sorted(set(fixed) & set(bounds))
     if both:
-        raise MethodError(f"{both[0]} is fixed and has bounds; keep one of the two")
+        raise MethodError(f"{both[0]} is fixed and has bounds; keep one of the two", f"bounds.{both[0]}")
     levels = np.geomspace(1.0, 100.0, 8)
     try:
         problem_of(model, Standards(levels, levels), fixed, bounds, {})
     except ModelError as cause:
-        raise MethodError(f"fixed and bounds: {cause}") from cause
+        raise MethodError(f"fixed and bounds: {cause}", "bounds" if bounds else "fixed") from cause
 
 
 def _noise(value: object) -> str | NoiseModel:
     if value == "history":
         raise MethodError(
             "noise = 'history' (pooled over past runs) is not available in this version; use one of "
-            f'{", ".join(NOISE_NAMES)} or {{ assumed = "response", exponent = 2.0 }}'
+            f'{", ".join(NOISE_NAMES)} or {{ assumed = "response", exponent = 2.0 }}',
+            "noise",
         )
     if isinstance(value, str):
         if value not in NOISE_NAMES:
-            raise MethodError(f"noise = {value!r} is unknown; known are {', '.join(NOISE_NAMES)}")
+            raise MethodError(f"noise = {value!r} is unknown; known are {', '.join(NOISE_NAMES)}", "noise")
         return value
     if not isinstance(value, Mapping) or "assumed" not in value or set(value) - {"assumed", "exponent"}:
-        raise MethodError('noise must be a name or { assumed = "response", exponent = 2.0 }')
+        raise MethodError('noise must be a name or { assumed = "response", exponent = 2.0 }', "noise")
     return assumed_noise(str(value["assumed"]), _number(value.get("exponent", 2.0), "noise.exponent"))
 
 
@@ -241,43 +242,27 @@ def _references(value: object) -> tuple[float, ...]:
     if value == []:
         return ()
     if not isinstance(value, list) or len(value) != 3:
-        raise MethodError(f"reference_concentrations = {value!r} must be [low, middle, high]")
+        raise MethodError(
+            f"reference_concentrations = {value!r} must be [low, middle, high]", "reference_concentrations"
+        )
     low, middle, high = (_number(v, "reference_concentrations") for v in value)
     if not 0 < low < middle < high:
-        raise MethodError("reference_concentrations must rise and lie above 0")
+        raise MethodError("reference_concentrations must rise and lie above 0", "reference_concentrations")
     return low, middle, high
-
-
-def _limits(table: object, source: str) -> dict[str, Limit]:
-    if not isinstance(table, Mapping) or "preset" not in table:
-        raise MethodError(f'acceptance needs preset = "…"; known are {", ".join(preset_names())}')
-    own = {
-        key: Limit(_number(value, f"acceptance.{key}"), source, "method")
-        for key, value in table.items()
-        if key != "preset"
-    }
-    limits = _narrower_ends_left_out(preset_limits(str(table["preset"])), own) | own
-    criteria_from(limits)  # refuses unknown keys and contradictions
-    return limits
-
-
-def _narrower_ends_left_out(preset: dict[str, Limit], own: Mapping[str, Limit]) -> dict[str, Limit]:
-    """Preset limits without end-level ones that the method's own wider middle limit overtakes."""
-    middle = own.get("relative_error")
-    if middle is None:
-        return preset
-    ends = ("relative_error_lowest", "relative_error_highest")
-    return {k: v for k, v in preset.items() if k not in ends or v.value >= middle.value}
 
 
 def _valid_hours(table: object) -> float:
     if not isinstance(table, Mapping) or set(table) - {"valid_for"}:
-        raise MethodError('[curve] knows the one key valid_for, such as valid_for = "24 h"')
+        raise MethodError('[curve] knows the one key valid_for, such as valid_for = "24 h"', "curve")
     text = table.get("valid_for", "24 h")
     match = DURATION.match(text) if isinstance(text, str) else None
     if match is None or float(match[1]) == 0:
-        raise MethodError(f'curve.valid_for = {text!r} must be a time such as "90 min", "24 h" or "7 d"')
+        raise MethodError(
+            f'curve.valid_for = {text!r} must be a time such as "90 min", "24 h" or "7 d"', "curve.valid_for"
+        )
     hours = float(match[1]) * HOURS[match[2]]
     if hours > LONGEST_HOURS:
-        raise MethodError(f"curve.valid_for = {text!r} is longer than ten years; correct it")
+        raise MethodError(
+            f"curve.valid_for = {text!r} is longer than ten years; correct it", "curve.valid_for"
+        )
     return hours

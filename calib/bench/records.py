@@ -113,8 +113,13 @@ class VerdictRecord:
 
     @property
     def reasons(self) -> tuple[str, ...]:
-        """The failing criteria in words and figures."""
-        return tuple(f"{c.what}: {c.detail}" for c in self.criteria if not c.passed)
+        """The criteria that reject the curve, in words and figures."""
+        return tuple(f"{c.what}: {c.detail}" for c in self.criteria if c.rejects)
+
+    @property
+    def warnings(self) -> tuple[str, ...]:
+        """The criteria that are not kept and only warn, in words and figures."""
+        return tuple(f"{c.what}: {c.detail}" for c in self.criteria if not c.passed and c.warns)
 
     @property
     def accepted(self) -> bool:

@@ -12,11 +12,14 @@ from pathlib import Path
 from sqlalchemy import func, select
 
 from calib import store as tables
+from calib.bench.acceptance_settings import limits_without_unit, preset_of
 from calib.bench.find import instrument_named, method_named
+from calib.bench.keeping import definition_of
 from calib.bench.method_definition import MethodDefinition, read_definition
 from calib.bench.names import plain_name
+from calib.bench.setting_lines import line_of
 from calib.bench.show_run import local
-from calib.errors import InputError, MethodError, UnreadableFile
+from calib.errors import InputError, MethodError, UnknownUnit, UnreadableFile
 from calib.intake import parse_concentration_unit
 from calib.store.instruments import EVENT_KINDS
 
@@ -213,7 +216,7 @@ def add_method(store: tables.Store, path: str | Path, *, by: str) -> MethodRecor
         When the file cannot be read or contradicts itself; or holds what is stored already.
     """
     text = read_method_text(Path(path))
-    name = read_definition(text).name
+    name = _new_definition(path, text).name
     fingerprint = hashlib.sha256(text.encode()).hexdigest()
     with store.change(action="add method", by=by) as session:
         latest = session.scalar(
@@ -231,11 +234,28 @@ def add_method(store: tables.Store, path: str | Path, *, by: str) -> MethodRecor
             version=latest.version + 1 if latest else 1,
             definition=text,
             fingerprint=fingerprint,
+            preset=preset_of(text),
             added_at=store.now(),
             added_by=by,
         )
         session.add(row)
     return _method_record(row)
+
+
+def _new_definition(path: str | Path, text: str) -> MethodDefinition:
+    """The definition of a text that is to be added; what it leaves open is refused too."""
+    try:
+        definition = read_definition(text)
+    except (MethodError, UnknownUnit) as wrong:
+        raise type(wrong)(f"{path}: {wrong}") from wrong
+    for key in limits_without_unit(text):
+        unit, place = definition.concentration_unit, f"acceptance.{key}"
+        raise MethodError(
+            f"{path}: line {line_of(text, place)}: {place} is a concentration and has no unit; "
+            f'write {key} = "{definition.limits[key].value:g} {unit}"',
+            place,
+        )
+    return definition
 
 
 def read_method_text(path: Path) -> str:
@@ -272,9 +292,14 @@ def show_method(store: tables.Store, name: str, version: int | None = None) -> M
 
 
 def _method_record(row: tables.Method) -> MethodRecord:
-    definition = read_definition(row.definition, row.version)
     return MethodRecord(
-        row.name, row.version, row.added_at, row.added_by, row.fingerprint, row.definition, definition
+        row.name,
+        row.version,
+        row.added_at,
+        row.added_by,
+        row.fingerprint,
+        row.definition,
+        definition_of(row),
     )
 
 

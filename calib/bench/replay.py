@@ -10,8 +10,8 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.bench.evaluate import finite
 from calib.bench.evaluate_many import evaluate_many
+from calib.bench.evidence import finite
 from calib.bench.find import instrument_named, method_named, run_numbered
 from calib.bench.keeping import definition_of
 from calib.bench.method_definition import MethodDefinition, read_definition

@@ -78,6 +78,7 @@ def show(ctx: click.Context, name: str, version: int | None, as_json: bool) -> N
         echo_json({"schema": SCHEMA, "methods": [method_json(record)]})
         return
     from calib.cli.screen import print_table, say
+    from calib.report.limit_wording import limit_text
     from calib.report.wording import number
 
     definition = record.definition
@@ -91,5 +92,8 @@ def show(ctx: click.Context, name: str, version: int | None, as_json: bool) -> N
     )
     print_table(
         ("Limit", ">Value", "Source", "Checked"),
-        [(key, number(v.value), v.source, v.checked) for key, v in definition.limits.items()],
+        [
+            (key, limit_text(key, v, definition.concentration_unit), v.source, v.checked)
+            for key, v in definition.limits.items()
+        ],
     )

@@ -87,6 +87,8 @@ def show_reasons(verdict: VerdictRecord) -> None:
     """The failing rules in words and figures."""
     for reason in verdict.reasons:
         say(f"  ✗ {reason}")
+    for warning in verdict.warnings:
+        say(f"  ! warning, rejects nothing: {warning}")
 
 
 def show_rules(verdict: VerdictRecord) -> None:
@@ -109,6 +111,8 @@ def show_rules(verdict: VerdictRecord) -> None:
 def _kept(criterion: CriterionResult) -> str:
     if criterion.limit is not None and criterion.observed is None and criterion.passed:
         return "nothing to judge"
+    if not criterion.passed and criterion.warns:
+        return "no (warning)"
     return "yes" if criterion.passed else "NO"
 
 

@@ -287,6 +287,8 @@ def _criterion(result: CriterionResult) -> dict[str, Any]:
         "passed": result.passed,
         "source": result.source,
         "detail": result.detail,
+        "warns": result.warns,
+        "remedy": result.remedy,
     }
 
 

@@ -25,7 +25,7 @@ CAUTIONS = (
     "recovery. A statement of compliance needs a decision rule.",
     "Nothing is reported outside the calibrated range. Near a plateau an interval is wide, lopsided or "
     "open on one side.",
-    "r² is no evidence of fit and is never judged.",
+    "r² is no evidence of fit and never judged by itself.",
     "Weighting rests on the noise model named here; several readings of one preparation are not independent.",
     "The record chain shows that something was changed; it does not prevent it. Names say who acted, they "
     "do not prove it.",
@@ -87,6 +87,7 @@ def _view(record: RunRecord) -> dict[str, Any]:
         "confidence": f"{number(100 * definition.interval_confidence)} %",
         "standards": run_rows.standard_rows(record),
         "reasons": run_rows.reasons(record),
+        "warnings": run_rows.warnings(record),
         "rules": run_rows.rule_rows(record),
         "blanks": run_rows.blank_rows(record),
         "checks": run_rows.check_rows(record),

@@ -26,15 +26,31 @@ if TYPE_CHECKING:
     from calib.acceptance import CriterionResult
     from calib.bench.records import BlankRecord, QuantityRecord, RunRecord, StandardRecord
 
-CHECK_LIMITS = {"check": "check_recovery", "first-check": "first_check_recovery"}
-SHARES = ("standards_passing",)
+CHECK_LIMITS = {
+    "check": "check_recovery",
+    "first-check": "first_check_recovery",
+    "control": "control_recovery",
+}
+SHARES = (
+    "standards_passing",
+    "controls_passing",
+    "controls_passing_each_level",
+    "minimum_control_share",
+    "top_slope",
+    "top_of_range",
+)
 DEVIATIONS = (
     "relative_error",
     "relative_error_lowest",
     "relative_error_highest",
     "relative_standard_error",
     "check_recovery",
+    "opening_check_recovery",
     "first_check_recovery",
+    "control_recovery",
+    "response_factor_rsd",
+    "carry_over",
+    "blank_share",
 )
 # Of a value outside the calibrated range nothing but the limit is printed, so nothing about its interval.
 ABOUT_THE_INTERVAL = ("lopsided", "one-sided", "no-value")
@@ -60,7 +76,7 @@ class StandardRow:
 
 @dataclass(frozen=True, slots=True)
 class RuleRow:
-    """One acceptance criterion."""
+    """One acceptance criterion; ``failed`` where it rejects the curve, ``warns`` where it is only not kept."""
 
     what: str
     detail: str
@@ -69,6 +85,7 @@ class RuleRow:
     verdict: str
     source: str
     failed: bool
+    warns: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -172,9 +189,10 @@ def _rule(c: CriterionResult, unit: str) -> RuleRow:
         detail=c.detail,
         limit=_criterion_figure(c, c.limit, unit),
         observed=_criterion_figure(c, c.observed, unit),
-        verdict="kept" if c.passed else "NOT KEPT",
+        verdict="kept" if c.passed else "warning" if c.warns else "NOT KEPT",
         source=c.source,
-        failed=not c.passed,
+        failed=c.rejects,
+        warns=not c.passed and c.warns,
     )
 
 
@@ -193,12 +211,17 @@ def _criterion_figure(c: CriterionResult, value: float | None, unit: str) -> str
 
 
 def reasons(record: RunRecord) -> tuple[str, ...]:
-    """What was not kept, each in one sentence; a long list of readings is left to the rules."""
-    return tuple(
-        f"{row.what}: {row.detail if len(row.detail) <= LONGEST_DETAIL else _in_short(row)}"
-        for row in rule_rows(record)
-        if row.failed
-    )
+    """What rejects the curve, each in one sentence; a long list of readings is left to the rules."""
+    return tuple(_sentence(row) for row in rule_rows(record) if row.failed)
+
+
+def warnings(record: RunRecord) -> tuple[str, ...]:
+    """What is not kept and only warns, each in one sentence."""
+    return tuple(_sentence(row) for row in rule_rows(record) if row.warns)
+
+
+def _sentence(row: RuleRow) -> str:
+    return f"{row.what}: {row.detail if len(row.detail) <= LONGEST_DETAIL else _in_short(row)}"
 
 
 def _in_short(row: RuleRow) -> str:
@@ -224,7 +247,7 @@ def _blank(b: BlankRecord) -> BlankRow:
 def check_rows(record: RunRecord) -> tuple[CheckRow, ...]:
     """Check standards, first checks and control samples."""
     found = record.evaluation.quantities
-    return tuple(_check(record, q) for q in found if q.role in (*CHECK_LIMITS, "control"))
+    return tuple(_check(record, q) for q in found if q.role in CHECK_LIMITS)
 
 
 def _check(record: RunRecord, q: QuantityRecord) -> CheckRow:

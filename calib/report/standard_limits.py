@@ -19,9 +19,12 @@ def relative_error_limit(record: RunRecord, level: float) -> float | None:
     level : float
         Nominal concentration of a standard that is no anchor.
     """
-    verdict, limits = record.evaluation.verdict, record.definition.limits
-    ends = None
-    if verdict.lowest is not None and verdict.highest is not None:
-        ends = (verdict.lowest, verdict.highest)
+    limits = record.definition.limits
+    levels = [
+        s.concentration
+        for s in record.evaluation.standards
+        if s.role == "standard" and s.concentration > 0 and (s.response is not None or s.saturated)
+    ]
+    ends = (min(levels), max(levels)) if levels else None
     limit = limits.get(governing_key(limits, level, ends))
     return limit.value if limit and level > 0 else None

@@ -12,11 +12,13 @@ def test_each_line_of_the_mapping_names_its_own_class():
 
 
 def test_an_unknown_key_is_named_beside_the_allowed_ones():
-    with pytest.raises(MethodError, match=r"'r_squared'; allowed are relative_error, .*saturated_standards"):
-        criteria_from(limits(relative_error=0.15, r_squared=0.99))
+    with pytest.raises(MethodError, match=r"'beauty'; allowed are relative_error, .*saturated_standards"):
+        criteria_from(limits(relative_error=0.15, beauty=0.99))
 
 
-@pytest.mark.parametrize("others", [{}, {"residual_sd": 2.0}, {"minimum_levels": 5, "check_recovery": 0.1}])
+@pytest.mark.parametrize(
+    "others", [{}, {"residual_sd": 2.0}, {"r_squared": 0.999}, {"minimum_levels": 5, "check_recovery": 0.1}]
+)
 def test_limits_without_a_relative_error_measure_are_refused(others):
     # The NELAC Institute, volume 1 module 4, 1.7.1.1 (read as quoted): such a measure is compulsory.
     with pytest.raises(MethodError, match="no relative-error measure"):
@@ -41,6 +43,11 @@ def test_either_measure_is_enough(measure):
         ({"relative_standard_error": 0.2, "standards_passing": 0.75}, "standards_passing needs the limit"),
         ({"relative_standard_error": 0.2, "levels_passing": 6}, "levels_passing needs the limit"),
         ({"relative_standard_error": 0.2, "relative_error_lowest": 0.3}, "relative_error_lowest needs"),
+        (
+            {"relative_error": 0.2, "controls_passing": 0.6},
+            "controls_passing needs the limit control_recovery",
+        ),
+        ({"relative_error": 0.2, "control_levels": 3}, "control_levels needs the limit control_recovery"),
     ],
 )
 def test_contradictions_are_refused_in_one_line_of_words(method, words):

@@ -14,6 +14,13 @@ PRESETS = {
 # Figures: ICH M10 2022 and FDA 2018 (read in texts that quote them), EAEU bioanalysis rule par. 93 (read),
 # Standard Methods 2020, 4020, 6020 and ICH Q2(R1) (read), EPA 8000D (from memory);
 # the plain preset is common practice but for its number of levels.
+CONTROLS = {
+    "controls_passing": 2 / 3,
+    "controls_passing_each_level": 0.5,
+    "control_levels": 3,
+    "minimum_controls": 6,
+    "minimum_control_share": 0.05,
+}
 FIGURES = {
     "bioanalytical-chromatographic": {
         "relative_error": 0.15,
@@ -21,6 +28,11 @@ FIGURES = {
         "standards_passing": 0.75,
         "levels_passing": 6,
         "minimum_levels": 6,
+        "minimum_blanks": 1,
+        "minimum_zeros": 1,
+        "carry_over": 0.20,
+        "control_recovery": 0.15,
+        **CONTROLS,
     },
     "bioanalytical-ligand-binding": {
         "relative_error": 0.20,
@@ -29,6 +41,8 @@ FIGURES = {
         "standards_passing": 0.75,
         "levels_passing": 6,
         "minimum_levels": 6,
+        "control_recovery": 0.20,
+        **CONTROLS,
     },
     "environmental": {
         "relative_error": 0.30,
@@ -37,18 +51,38 @@ FIGURES = {
         "minimum_levels": 5,
         "first_check_recovery": 0.15,
         "check_recovery": 0.20,
+        "response_factor_rsd": 0.20,
+        "top_slope": 0.5,
+        "blank_share": 0.5,
     },
     "metals-frequent-checks": {
         "relative_error": 0.10,
         "minimum_levels": 5,
         "first_check_recovery": 0.10,
         "check_recovery": 0.10,
+        "opening_check_recovery": 0.05,
+        "minimum_checks": 2,
+        "top_of_range": 0.90,
+        "top_slope": 0.5,
+        "blank_share": 0.5,
+    },
+    "drinking-water-checks": {
+        "relative_error": 0.10,
+        "relative_error_lowest": 0.20,
+        "minimum_levels": 5,
+        "r_squared": 0.990025,
+        "top_slope": 0.5,
+        "first_check_recovery": 0.15,
+        "check_recovery": 0.10,
+        "minimum_checks": 1,
+        "blank_share": 0.5,
     },
     "plain": {
         "relative_error": 0.20,
         "relative_error_lowest": 0.25,
         "minimum_levels": 5,
         "check_recovery": 0.15,
+        "lack_of_fit": 0.01,
     },
 }
 
@@ -67,6 +101,21 @@ def test_every_preset_makes_criteria_and_says_how_each_limit_was_checked(name):
     preset = read_preset(PRESETS[name])
     assert criteria_from(preset)
     assert all(limit.source and limit.checked in CHECKED[:-1] for limit in preset.values())
+
+
+# TNI 1.7.1.1(f) for a line (second-hand), EPA 8000D for an average factor (from memory), Standard Methods 6020
+# for a quadratic (read); 4PL and 5PL are common practice.
+@pytest.mark.parametrize(
+    ("model", "levels"), [("line", 5), ("proportional", 4), ("quadratic", 6), ("4PL", 6), ("5PL", 7)]
+)
+@pytest.mark.parametrize("name", ["environmental", "metals-frequent-checks", "drinking-water-checks"])
+def test_the_number_of_levels_depends_on_the_model(name, model, levels):
+    assert read_preset(PRESETS[name], model)["minimum_levels"].value == levels
+
+
+def test_a_limit_may_only_warn():
+    assert read_preset(PRESETS["plain"])["lack_of_fit"].warns
+    assert not read_preset(PRESETS["plain"])["relative_error"].warns
 
 
 @pytest.mark.parametrize(

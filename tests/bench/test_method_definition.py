@@ -2,7 +2,9 @@
 
 import pytest
 
-from calib.bench.method_definition import preset_limits, preset_names, read_definition
+from calib.bench.acceptance_settings import preset_limits, preset_names, preset_of_early_method
+from calib.bench.method_definition import read_definition
+from calib.bench.register import add_method, show_method
 from calib.curves.noise import NoiseModel
 from calib.errors import CalibError
 
@@ -164,8 +166,88 @@ def test_a_wrong_word_is_refused_in_words(old, new, words):
         (PLAIN + "blank = -1", "blank: the limit -1 is not a number of at least 0"),
         (PLAIN + "standards_passing = 75", "standards_passing: 75 is no share"),
         (PLAIN + "minimum_levels = 5.5", "minimum_levels: 5.5 is no count"),
+        (PLAIN + 'blank = "1 cup"', "acceptance.blank = '1 cup': 'cup' is no known unit"),
+        (PLAIN + 'minimum_levels = "5 %"', "acceptance.minimum_levels = '5 %' must be a finite number"),
+        (PLAIN + 'left_out = ["beauty"]', "acceptance.left_out: the preset has no limit 'beauty'"),
+        (PLAIN + "left_out = 3", "acceptance.left_out = 3 must be a list of limits"),
+        (PLAIN + 'warn_only = ["blank"]', "acceptance.warn_only: the method has no limit 'blank'"),
+        (PLAIN + 'left_out = ["relative_error"]', "no relative-error measure"),
+        (PLAIN + "blank = { source = 'x' }", "acceptance.blank: a limit is a value, or a table of value"),
+        (PLAIN + "blank = { value = 1, checked = 'yes' }", "acceptance.blank.checked = 'yes' is unknown"),
+        (PLAIN + "relative_error_lowest = 0.1", r"narrower than relative_error \(20 %\)"),
     ],
 )
 def test_wrong_limits_are_refused_in_words(acceptance, words):
     with pytest.raises(CalibError, match=words):
         read_definition(SHORT + acceptance + "\n")
+
+
+def test_limits_are_written_as_people_write_them():
+    acceptance = (
+        PLAIN
+        + 'blank = "50 ug/L"\nrelative_error = "15 %"\ncontrol_recovery = 0.2\ncontrols_passing = "2/3"\n'
+    )
+    limits = read_definition(SHORT + acceptance).limits
+    assert limits["blank"].value == pytest.approx(0.05, rel=1e-15)  # the method's unit is mg/L
+    assert limits["relative_error"].value == 0.15
+    assert limits["controls_passing"].value == 2 / 3
+
+
+def test_an_own_limit_may_name_its_source():
+    acceptance = PLAIN + 'blank = { value = "0.1 mg/L", source = "rule 7", checked = "verified" }\n'
+    limit = read_definition(SHORT + acceptance).limits["blank"]
+    assert (limit.value, limit.source, limit.checked) == (0.1, "rule 7", "verified")
+
+
+def test_limits_of_the_preset_can_be_left_out_or_only_warn():
+    acceptance = PLAIN + 'left_out = ["lack_of_fit"]\nwarn_only = ["minimum_levels"]\n'
+    limits = read_definition(SHORT + acceptance).limits
+    assert "lack_of_fit" not in limits
+    assert limits["minimum_levels"].warns
+
+
+@pytest.mark.parametrize(
+    ("text", "line"),
+    [
+        (SHORT + PLAIN + "taste = 1\n", 9),
+        (SHORT + PLAIN + '\n# a remark\nblank = "low"\n', 11),
+        (SHORT + PLAIN + "[curve]\nvalid_for = 3\n", 10),
+        (SHORT + "fixed = { tilt = 1 }\n" + PLAIN, 7),
+        (SHORT.replace('"mg/L"', '"cups"') + PLAIN, 4),
+        (SHORT + "colour = 1\n" + PLAIN, 7),
+        (SHORT + PLAIN.replace("plain", "easy"), 8),
+    ],
+)
+def test_a_refusal_names_the_line_of_the_text(text, line):
+    with pytest.raises(CalibError, match=rf"^line {line}: "):
+        read_definition(text)
+
+
+def test_a_concentration_without_its_unit_is_refused_when_the_method_is_added(bench):
+    file = bench.file("new.toml", SHORT + PLAIN + "blank = 0.1\n")
+    with pytest.raises(
+        CalibError,
+        match=r'line 9: acceptance\.blank is a concentration and has no unit; write blank = "0\.1 mg/L"',
+    ):
+        add_method(bench.store, file, by="KM")
+
+
+def test_the_preset_is_kept_beside_the_method_as_it_was(bench, monkeypatch):
+    file = bench.file("new.toml", SHORT + PLAIN)
+    add_method(bench.store, file, by="KM")
+    before = show_method(bench.store, "m").definition.limits
+    monkeypatch.setattr("calib.bench.acceptance_settings.preset_text", lambda name: "")
+    assert show_method(bench.store, "m").definition.limits == before
+
+
+def test_methods_added_before_presets_were_kept_have_the_limits_of_that_time():
+    text = SHORT + '[acceptance]\npreset = "environmental"\n'
+    early = read_definition(text, preset=preset_of_early_method(text)).limits
+    assert sorted(early) == [
+        "check_recovery",
+        "first_check_recovery",
+        "minimum_levels",
+        "relative_error",
+        "relative_error_lowest",
+        "relative_standard_error",
+    ]

@@ -130,7 +130,7 @@ def test_what_cannot_be_replayed_is_one_line(worked, arguments, words):
             "judged by version 1 of method line-a with concentrations in mg/L, but bad.toml",
         ),
         ('"mV"', '"V"', "responses in mV, but bad.toml has them in V"),
-        ('"line"', '"knot"', "bad.toml: model"),
+        ('"line"', '"knot"', "bad.toml: line 5: model"),
         ("[acceptance]", "[acceptance", "bad.toml: the method is not readable as TOML"),
     ],
 )

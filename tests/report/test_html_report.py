@@ -155,5 +155,5 @@ def test_record_is_traceable(records: dict[str, RunRecord]) -> None:
     text = Page(render_run(record)).text
     for what in (record.heading.fingerprint, record.chain_head, f"entry {record.chain_sequence}", "numpy"):
         assert what in text
-    assert "(shown, never judged)" in text
+    assert "(shown, not judged)" in text
     assert "1/d" in text

@@ -10,14 +10,15 @@ import pytest
 from calib.errors import SchemaTooNew, StoreDamaged
 from calib.shipped import shipped
 from calib.store import Store, check_store, open_store, upgrade_store
+from calib.store.schema import REVISIONS
 
 NEXT = """
 import sqlalchemy as sa
 from alembic import op
 from calib.store.triggers import create_triggers
 
-revision = "0002"
-down_revision = "0001"
+revision = "9999"
+down_revision = "{before}"
 
 def upgrade():
     with op.batch_alter_table(
@@ -29,6 +30,7 @@ def upgrade():
 def downgrade():
     pass
 """
+NEWEST = REVISIONS[-1]
 WHOLE = 'create_triggers(op.get_bind(), ["instrument"])'
 FORGETS_TRIGGERS = "pass"
 LOSES_ROWS = 'op.execute("DELETE FROM instrument WHERE id = 2"); ' + WHOLE
@@ -42,8 +44,8 @@ def next_schema(filled: Store, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) 
     folder = tmp_path / "migrations"
     shutil.copytree(shipped("migrations"), folder)
     monkeypatch.setattr("calib.store.migrating.shipped", lambda _: folder)
-    monkeypatch.setattr("calib.store.schema.REVISIONS", ("0001", "0002"))
-    return folder / "versions" / "0002_next.py"
+    monkeypatch.setattr("calib.store.schema.REVISIONS", (*REVISIONS, "9999"))
+    return folder / "versions" / "9999_next.py"
 
 
 def dump(path: Path) -> list[str]:
@@ -53,14 +55,14 @@ def dump(path: Path) -> list[str]:
 
 def test_nothing_to_do_leaves_no_backup(filled: Store) -> None:
     upgrade = upgrade_store(filled.path)
-    assert (upgrade.before, upgrade.after, upgrade.backup) == ("0001", "0001", None)
+    assert (upgrade.before, upgrade.after, upgrade.backup) == (NEWEST, NEWEST, None)
 
 
 def test_a_parent_table_is_built_again_and_all_rows_are_kept(next_schema: Path, path: Path) -> None:
-    next_schema.write_text(NEXT.format(then=WHOLE))
+    next_schema.write_text(NEXT.format(before=NEWEST, then=WHOLE))
     before = dump(path)
     upgrade = upgrade_store(path)
-    assert (upgrade.before, upgrade.after) == ("0001", "0002")
+    assert (upgrade.before, upgrade.after) == (NEWEST, "9999")
     assert (upgrade.rows["instrument"], upgrade.rows["reading"]) == (2, 10)
     assert upgrade.backup is not None
     assert dump(upgrade.backup) == before
@@ -81,7 +83,7 @@ def test_a_parent_table_is_built_again_and_all_rows_are_kept(next_schema: Path, 
 def test_a_migration_that_fails_leaves_the_store_as_it_was(
     next_schema: Path, path: Path, then: str, error: type[Exception], words: str
 ) -> None:
-    next_schema.write_text(NEXT.format(then=then))
+    next_schema.write_text(NEXT.format(before=NEWEST, then=then))
     before = dump(path)
     with pytest.raises(error, match=words):
         upgrade_store(path)
