@@ -31,6 +31,8 @@ class JudgedStandard:
         Response of the curve at the level; nan where it has none.
     variance : float
         Noise model's variance of this response, up to the common scale: 1 where all weigh alike.
+    key : int
+        Ties the reading to its record; no two readings of a run share one.
     """
 
     label: str
@@ -43,6 +45,7 @@ class JudgedStandard:
     saturated: bool
     fitted_response: float = math.nan
     variance: float = 1.0
+    key: int = 0
 
 
 @dataclass(frozen=True, slots=True)

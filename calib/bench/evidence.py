@@ -85,6 +85,7 @@ def _judged(standard: StandardRecord) -> JudgedStandard:
         relative_error=_number(standard.relative_error),
         excluded=standard.excluded,
         saturated=standard.saturated,
+        key=standard.key,
     )
 
 
@@ -99,6 +100,7 @@ def _fitted_blank(reading: Measured) -> JudgedStandard:
         relative_error=math.nan,
         excluded=reading.excluded is not None,
         saturated=False,
+        key=reading.key,
     )
 
 

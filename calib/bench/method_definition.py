@@ -11,8 +11,9 @@ from typing import Any
 
 import numpy as np
 
-from calib.acceptance import Limit
+from calib.acceptance import ExclusionRule, Limit
 from calib.bench.acceptance_settings import acceptance_limits
+from calib.bench.exclusion_settings import exclusion_rule
 from calib.bench.setting_lines import line_of
 from calib.curves.noise import NoiseModel, assumed_noise
 from calib.curves.requests import NOISE_NAMES, problem_of
@@ -31,6 +32,7 @@ OPTIONAL = (
     "reference_concentrations",
     "required_cv",
     "curve",
+    "exclusion",
 )
 DURATION = re.compile(r"^\s*(\d+(?:\.\d+)?)\s*(min|h|d)\s*$")
 LONGEST_HOURS = 87660.0
@@ -54,6 +56,8 @@ class MethodDefinition:
         Coefficient of variation that bounds the working range, a fraction.
     valid_hours : float
         How long a curve stays in force.
+    exclusion : ExclusionRule or None
+        How failing standards are left out; None where the method does not ask for it.
     """
 
     name: str
@@ -71,6 +75,7 @@ class MethodDefinition:
     preset: str
     limits: Mapping[str, Limit]
     valid_hours: float
+    exclusion: ExclusionRule | None = None
 
 
 def read_definition(text: str, version: int = 1, preset: str | None = None) -> MethodDefinition:
@@ -129,6 +134,7 @@ def _definition(table: Mapping[str, Any], version: int, preset: str | None) -> M
         preset=str(table["acceptance"]["preset"]),
         limits=limits,
         valid_hours=_valid_hours(table.get("curve", {})),
+        exclusion=exclusion_rule(table.get("exclusion"), limits),
     )
 
 
