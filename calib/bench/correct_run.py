@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from datetime import datetime, timedelta, timezone
 
@@ -12,6 +12,7 @@ from sqlalchemy.orm import Session
 from calib import store as tables
 from calib.bench.evaluate import evaluate
 from calib.bench.find import current_curve, facts_of, instrument_named, lot_named, run_numbered, void_of
+from calib.bench.find_readings import find_readings
 from calib.bench.keeping import add_evaluation, add_quantities, current_readings, exclusions_in_force
 from calib.bench.quantify import QUANTIFIED_ROLES, dependent_runs
 from calib.bench.quantities import quantities_of
@@ -130,26 +131,6 @@ def amend_run(store: tables.Store, number: int, change: Change, *, reason: str, 
         elif change.instrument or change.samples or change.dilutions:
             _requantify(session, number)
     return show_run(store, number)
-
-
-def find_readings(readings: Iterable[Measured], name: str) -> list[Measured]:
-    """Readings a person means: a position ('B7'), a number in the file ('#12'), or a sample name.
-
-    Raises
-    ------
-    InputError
-        When no reading has that name.
-    """
-    rows = list(readings)
-    if name.startswith("#"):
-        found = [r for r in rows if f"#{r.key}" == name]
-    else:
-        found = [r for r in rows if r.position == name] or [r for r in rows if r.sample == name]
-    if not found:
-        raise InputError(
-            f"no reading '{name}' in this run; give a position, a sample name, or #number in the file"
-        )
-    return found
 
 
 def _decide(

@@ -7,8 +7,9 @@ from collections.abc import Iterable, Sequence
 
 import numpy as np
 
-from calib.acceptance import criteria_from, judge
+from calib.acceptance import Evidence, criteria_from, judge
 from calib.bench.evidence import evidence_of, read_back
+from calib.bench.exclude_failing import evaluate_with_exclusions
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.quantities import quantities_of
 from calib.bench.records import BlankRecord, Evaluation, Measured, StandardRecord, VerdictRecord
@@ -38,7 +39,12 @@ def evaluate(definition: MethodDefinition, readings: Sequence[Measured]) -> Eval
     fitted = fitted_readings(definition, readings)
     if not fitted:
         raise InputError("no standard with a response is left to fit: check the roles, or log it as unknowns")
-    curve = fit(
+    return settle(definition, readings, fitted_curve(definition, fitted))
+
+
+def fitted_curve(definition: MethodDefinition, fitted: Sequence[Measured]) -> Curve:
+    """Curve of one run under the noise model its method asks for."""
+    return fit(
         [r.concentration or 0.0 for r in fitted],
         [math.nan if r.response is None else r.response for r in fitted],
         model=definition.model,
@@ -46,7 +52,19 @@ def evaluate(definition: MethodDefinition, readings: Sequence[Measured]) -> Eval
         fixed=definition.fixed,
         bounds=definition.bounds,
     )
-    return assemble(definition, readings, curve)
+
+
+def settle(definition: MethodDefinition, readings: Sequence[Measured], curve: Curve) -> Evaluation:
+    """Judge and quantify on the first curve, or on what the method's exclusion rule makes of it."""
+    if definition.exclusion is None:
+        return assemble(definition, readings, curve)[0]
+    return evaluate_with_exclusions(
+        definition,
+        readings,
+        curve,
+        lambda kept: fitted_curve(definition, fitted_readings(definition, kept)),
+        lambda kept, found: assemble(definition, kept, found),
+    )
 
 
 def fitted_readings(definition: MethodDefinition, readings: Iterable[Measured]) -> list[Measured]:
@@ -55,15 +73,18 @@ def fitted_readings(definition: MethodDefinition, readings: Iterable[Measured]) 
     return [r for r in readings if r.role in roles and r.response is not None and r.excluded is None]
 
 
-def assemble(definition: MethodDefinition, readings: Sequence[Measured], curve: Curve) -> Evaluation:
-    """Judge and quantify on a curve that is there already."""
+def assemble(
+    definition: MethodDefinition, readings: Sequence[Measured], curve: Curve
+) -> tuple[Evaluation, Evidence]:
+    """Judge and quantify on a curve that is there already; with what the verdict rests on."""
     fitted = {r.key for r in fitted_readings(definition, readings)}
     standards = tuple(_standards(curve, [r for r in readings if r.role in STANDARD_ROLES], fitted))
     blanks = blank_records(curve, readings)
-    verdict = _verdict(definition, readings, curve, standards, blanks)
+    evidence = evidence_of(definition, readings, curve, standards, blanks)
+    verdict = _verdict(definition, evidence)
     others = [r for r in readings if r.role in ("unknown", "control", *CHECK_ROLES)]
     quantities = quantities_of(definition, curve, verdict.accepted, others, verdict.lowest, verdict.highest)
-    return Evaluation(curve, standards, blanks, verdict, quantities)
+    return Evaluation(curve, standards, blanks, verdict, quantities), evidence
 
 
 def _standards(curve: Curve, readings: Sequence[Measured], fitted: set[int]) -> Iterable[StandardRecord]:
@@ -111,16 +132,8 @@ def _below_zero_response(curve: Curve, response: float) -> bool:
     return (response - zero.response) * (top - zero.response) <= 0
 
 
-def _verdict(
-    definition: MethodDefinition,
-    readings: Sequence[Measured],
-    curve: Curve,
-    standards: Sequence[StandardRecord],
-    blanks: Sequence[BlankRecord],
-) -> VerdictRecord:
-    verdict = judge(
-        evidence_of(definition, readings, curve, standards, blanks), criteria_from(definition.limits)
-    )
+def _verdict(definition: MethodDefinition, evidence: Evidence) -> VerdictRecord:
+    verdict = judge(evidence, criteria_from(definition.limits))
     return VerdictRecord(
         verdict.decision, verdict.criteria, verdict.lowest, verdict.highest, verdict.r_squared
     )

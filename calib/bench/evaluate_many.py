@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
-from calib.bench.evaluate import assemble, fitted_readings
+from calib.bench.evaluate import fitted_readings, settle
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Evaluation, Measured
 from calib.curves.curve import Curve
@@ -33,7 +33,7 @@ def evaluate_many(
     # In the order of the levels, so that runs measured in another order share a stack.
     fitted = {n: sorted(fitted_readings(definition, readings), key=_level) for n, readings in runs.items()}
     curves = _curves(definition, {n: readings for n, readings in fitted.items() if readings})
-    return {n: assemble(definition, r, curves[n]) if n in curves else None for n, r in runs.items()}
+    return {n: settle(definition, r, curves[n]) if n in curves else None for n, r in runs.items()}
 
 
 def _level(reading: Measured) -> float:

@@ -53,7 +53,26 @@ def add_evaluation(
     supersedes: int | None = None,
     reason: str | None = None,
 ) -> int:
-    """Write curve, standards and verdict; ``reading_ids`` by ordinal. The number of the new curve."""
+    """Write curve, standards and verdict; ``reading_ids`` by ordinal. The number of the new curve.
+
+    Earlier curves of the exclusion rule are written first, each superseded by the next.
+    """
+    for number, stage in enumerate(evaluation.before, start=1):
+        supersedes = _add_curve(session, run_id, stage, reading_ids, by, at, supersedes, reason)
+        reason = f"exclusion rule of the method, step {number}"
+    return _add_curve(session, run_id, evaluation, reading_ids, by, at, supersedes, reason)
+
+
+def _add_curve(
+    session: Session,
+    run_id: int,
+    evaluation: Evaluation,
+    reading_ids: Mapping[int, int],
+    by: str,
+    at: datetime,
+    supersedes: int | None,
+    reason: str | None,
+) -> int:
     row = _curve_row(run_id, evaluation, by, at)
     row.supersedes, row.reason = supersedes, reason
     session.add(row)

@@ -49,9 +49,10 @@ class Laboratory:
         at: datetime | None = None,
         lot: str | None = None,
         layout: str | None = None,
+        exclusions: Sequence[tuple[str, str]] = (),
     ) -> tuple[RunRecord, ...]:
-        """Log a file of standards: fit, judge, quantify."""
-        options = LogOptions(self.by, instrument, tuple(methods), at, lot, layout)
+        """Log a file of standards: fit, judge, quantify; ``exclusions`` are (reading, cause) known before."""
+        options = LogOptions(self.by, instrument, tuple(methods), at, lot, layout, tuple(exclusions))
         return log_plan(self.store, evaluate_plan(plan_file(self.store, path, options)))
 
     def quantify(

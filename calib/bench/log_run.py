@@ -93,7 +93,7 @@ def _logged_record(
         readings=run.measured,
         amendments=(),
         dependents=(),
-        curves_before=0,
+        curves_before=len(evaluation.before),
         attempts_that_day=attempts,
         versions=versions(),
         lot=lot_facts(run.lot) if run.lot else None,
@@ -147,6 +147,18 @@ def _write(
 ) -> tuple[int, int]:
     run_id = add_run(session, plan, run, original_id, now)
     reading_ids = add_readings(session, run_id, run)
+    session.add_all(
+        tables.Exclusion(
+            reading_id=reading_ids[reading.key],
+            decision="exclude",
+            reason_class="assignable cause",
+            reason=reading.excluded,
+            by=plan.by,
+            at=now,
+        )
+        for reading in run.measured
+        if reading.excluded is not None
+    )
     curve_id = add_evaluation(session, run_id, evaluation, reading_ids, by=plan.by, at=now)
     add_first_quantities(session, run_id, curve_id, evaluation.quantities)
     return run_id, curve_id

@@ -12,6 +12,7 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.find import instrument_named, lot_named, method_named
+from calib.bench.find_readings import with_exclusions
 from calib.bench.keeping import definition_of, is_saturated
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured
@@ -31,7 +32,10 @@ SMALLEST, LARGEST = 1e-100, 1e100  # numbers beyond only overflow in a fit
 
 @dataclass(frozen=True, slots=True)
 class LogOptions:
-    """What a person says beside the file; what the file says itself need not be repeated."""
+    """What a person says beside the file; what the file says itself need not be repeated.
+
+    ``exclusions`` names readings left out for an assignable cause before any fit, each with the cause.
+    """
 
     by: str
     instrument: str | None = None
@@ -39,6 +43,7 @@ class LogOptions:
     at: datetime | None = None
     lot: str | None = None
     layout: str | None = None
+    exclusions: tuple[tuple[str, str], ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,6 +95,8 @@ def plan_file(store: tables.Store, path: str | Path, options: LogOptions) -> Log
         runs = tuple(_plan(session, parsed, run, options, store.now()) for run in parsed.runs)
         _refuse_one_method_for_two(parsed, runs)
         refuse_duplicates(session, parsed, runs)
+    kept = with_exclusions([run.measured for run in runs], options.exclusions)
+    runs = tuple(replace(run, measured=measured) for run, measured in zip(runs, kept, strict=True))
     return LogPlan(parsed, runs, options.by)
 
 

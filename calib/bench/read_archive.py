@@ -130,13 +130,35 @@ def curves_in_force(
         .join(tables.VerdictRow, tables.VerdictRow.curve_id == tables.Curve.id)
         .where(tables.Curve.run_id.in_(measured), tables.is_current(tables.Curve))
     )
+    found = [(curve, verdict) for curve, verdict in rows]
+    by_rule = _left_out_by_rule(session, [curve.id for curve, _ in found])
     return {
         curve.run_id: (
-            curve_of(curve, fitted_readings(definition_of_run(curve.run_id), measured[curve.run_id])),
+            curve_of(
+                curve,
+                [
+                    m
+                    for m in fitted_readings(definition_of_run(curve.run_id), measured[curve.run_id])
+                    if m.key not in by_rule.get(curve.id, ())
+                ],
+            ),
             verdict_record(verdict),
         )
-        for curve, verdict in rows
+        for curve, verdict in found
     }
+
+
+def _left_out_by_rule(session: Session, curves: Collection[int]) -> dict[int, set[int]]:
+    """Ordinals of the standards each curve excludes, by a person or by the rule of its method."""
+    query = (
+        select(tables.CurveStandard.curve_id, tables.Reading.ordinal)
+        .join(tables.Reading, tables.Reading.id == tables.CurveStandard.reading_id)
+        .where(tables.CurveStandard.curve_id.in_(curves), tables.CurveStandard.excluded)
+    )
+    found: dict[int, set[int]] = {}
+    for curve, ordinal in session.execute(query):
+        found.setdefault(curve, set()).add(ordinal)
+    return found
 
 
 def reported_in_force(session: Session, numbers: Collection[int]) -> dict[int, dict[SampleKey, Reported]]:

@@ -129,13 +129,17 @@ class VerdictRecord:
 
 @dataclass(frozen=True, slots=True)
 class Evaluation:
-    """A run evaluated: nothing is stored yet."""
+    """A run evaluated: nothing is stored yet.
+
+    ``before`` holds the earlier curves where the method's exclusion rule left out standards, oldest first.
+    """
 
     curve: Curve
     standards: tuple[StandardRecord, ...]
     blanks: tuple[BlankRecord, ...]
     verdict: VerdictRecord
     quantities: tuple[QuantityRecord, ...]
+    before: tuple[Evaluation, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,6 +8,7 @@ from typing import Any
 import click
 
 from calib.cli.options import REJECTED, acting, by_option, echo_json, json_option, moment, opened
+from calib.errors import InputError
 
 
 def file_options(command: Any) -> Any:
@@ -30,6 +31,13 @@ def file_options(command: Any) -> Any:
 @click.command()
 @file_options
 @click.option("--dry-run", is_flag=True, help="Show what was understood and the verdict; write nothing.")
+@click.option(
+    "--exclude",
+    "exclusions",
+    multiple=True,
+    metavar="READING=CAUSE",
+    help="Leave a reading out before the fit, for a cause known apart from it (a spill, the wrong well).",
+)
 @click.pass_context
 def log(ctx: click.Context, /, file: Path, dry_run: bool, as_json: bool, **said: Any) -> int:
     """Log FILE: show what was understood, fit, judge and quantify in one go."""
@@ -70,7 +78,15 @@ def _options(said: dict[str, Any]) -> Any:
         at=moment(said["at"]),
         lot=said["lot"],
         layout=said["layout"],
+        exclusions=tuple(_cause(text) for text in said.get("exclusions", ())),
     )
+
+
+def _cause(text: str) -> tuple[str, str]:
+    name, sign, cause = text.partition("=")
+    if not sign or not name.strip() or not cause.strip():
+        raise InputError(f"--exclude {text!r} must be READING=CAUSE, such as 'B7=bubble in the well'")
+    return name.strip(), cause.strip()
 
 
 def _show(plan: Any, records: Any, as_json: bool) -> None:

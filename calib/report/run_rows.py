@@ -306,8 +306,11 @@ def remarks(q: QuantityRecord) -> str:
 
 
 def excluded_readings(record: RunRecord) -> tuple[str, ...]:
-    """Readings left out of the fit, with their reason."""
-    return tuple(f"{r.where}: {r.excluded}" for r in record.readings if r.excluded is not None)
+    """Readings left out of the fit, with their reason: by a person first, then by the rule of the method."""
+    by_people = tuple(f"{r.where}: {r.excluded}" for r in record.readings if r.excluded is not None)
+    decided = {r.key for r in record.readings if r.excluded is not None}
+    by_rule = (s for s in record.evaluation.standards if s.excluded and s.key not in decided)
+    return by_people + tuple(f"{s.label}: {s.reason}" for s in by_rule)
 
 
 def absent_readings(record: RunRecord) -> tuple[str, ...]:
