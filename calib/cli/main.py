@@ -18,6 +18,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "lot": ("lot:lot", "Register and list standard lots."),
     "log": ("log:log", "Log a file of standards: fit, judge, quantify."),
     "quantify": ("log:quantify", "Read later unknowns on the curve in force."),
+    "rules": ("rules:rules", "Why a run has its verdict, and what would have to change."),
     "run": ("run:run", "List, show and correct runs."),
     "drift": ("drift:drift", "Review an instrument over time."),
     "replay": ("replay:replay", "Evaluate past runs under another method version; nothing is written."),

@@ -69,18 +69,24 @@ def show_preview(definition: MethodDefinition, evaluation: Evaluation) -> None:
 
 def show_verdict(record: RunRecord) -> None:
     """The verdict line, with the failing rules in words and figures."""
-    heading, verdict = record.heading, record.evaluation.verdict
-    say(
-        f"{verdict.decision.upper()}   run {heading.id} · {heading.instrument} · {heading.method} "
-        f"v{heading.method_version} · {heading.at:%Y-%m-%d %H:%M} · {heading.operator}",
-        STYLES[verdict.decision],
-    )
+    verdict = record.evaluation.verdict
+    show_verdict_line(record)
     show_reasons(verdict)
     if verdict.accepted and verdict.lowest is not None and verdict.highest is not None:
         say(
             f"  calibrated range {number(verdict.lowest)} to {number(verdict.highest)} "
             f"{record.definition.concentration_unit}"
         )
+
+
+def show_verdict_line(record: RunRecord) -> None:
+    """The verdict, with run, instrument, method, time and person."""
+    heading, verdict = record.heading, record.evaluation.verdict
+    say(
+        f"{verdict.decision.upper()}   run {heading.id} · {heading.instrument} · {heading.method} "
+        f"v{heading.method_version} · {heading.at:%Y-%m-%d %H:%M} · {heading.operator}",
+        STYLES[verdict.decision],
+    )
 
 
 def show_reasons(verdict: VerdictRecord) -> None:

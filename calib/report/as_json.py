@@ -31,6 +31,7 @@ RUNS = "calib-runs-1"
 DRIFT = "calib-drift-1"
 PREVIEW = "calib-preview-1"
 REPLAY = "calib-replay-1"
+RULES = "calib-rules-1"
 
 
 def log_json(file: str, records: Iterable[RunRecord]) -> dict[str, Any]:
@@ -182,6 +183,27 @@ def _outcome(outcome: Outcome, unit: str) -> dict[str, Any]:
         "reasons": list(outcome.reasons),
         "calibrated_range": plain(outcome.calibrated) | {"unit": unit},
         "working_range": plain(outcome.working) | {"unit": unit},
+    }
+
+
+def rules_json(record: RunRecord) -> dict[str, Any]:
+    """What `calib rules --json` prints: the verdict with every rule, and what was left out of the fit."""
+    verdict = record.evaluation.verdict
+    return {
+        "schema": RULES,
+        "run": record.heading.id,
+        "curve_run": record.curve_run,
+        "method": record.heading.method,
+        "method_version": record.heading.method_version,
+        "preset": record.definition.preset,
+        "decision": verdict.decision,
+        "rules": [_criterion(c) for c in verdict.criteria],
+        "excluded": [
+            {"label": s.label, "position": s.position, "concentration": s.concentration, "reason": s.reason}
+            for s in record.evaluation.standards
+            if s.excluded
+        ],
+        "earlier_curves": record.curves_before,
     }
 
 

@@ -76,7 +76,10 @@ class StandardRow:
 
 @dataclass(frozen=True, slots=True)
 class RuleRow:
-    """One acceptance criterion; ``failed`` where it rejects the curve, ``warns`` where it is only not kept."""
+    """One acceptance criterion; ``failed`` where it rejects the curve, ``warns`` where it is only not kept.
+
+    ``idle`` where the run had nothing to judge by it; ``remedy`` says what would have to be different.
+    """
 
     what: str
     detail: str
@@ -86,6 +89,8 @@ class RuleRow:
     source: str
     failed: bool
     warns: bool
+    idle: bool
+    remedy: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -193,6 +198,8 @@ def _rule(c: CriterionResult, unit: str) -> RuleRow:
         source=c.source,
         failed=c.rejects,
         warns=not c.passed and c.warns,
+        idle=c.passed and c.limit is not None and c.observed is None,
+        remedy=c.remedy,
     )
 
 
