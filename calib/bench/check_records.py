@@ -98,7 +98,7 @@ def _refit(store: tables.Store, number: int) -> RecordFinding | None:
         with store.reading() as session:
             record = load_run(session, number, (0, ""))
             row = session.get_one(tables.Curve, record.curve_id)
-        again = evaluate(record.definition, record.readings)
+        again = evaluate(record.definition, record.readings, record.evaluation.history)
     except CalibError as cause:
         return RecordFinding("curve-unreadable", place, str(cause))
     difference = _difference(record, again.standards)

@@ -78,7 +78,7 @@ def refit_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunR
     """Fit and judge a run again with the readings and exclusions in force."""
     _require_reason(reason)
     record = _correctable(store, number)
-    evaluation = evaluate(record.definition, record.readings)
+    evaluation = evaluate(record.definition, record.readings, record.evaluation.history)
     now = store.now()
     with store.change(action="refit run", by=by, reason=reason) as session:
         _refuse_changed(session, record)
@@ -151,7 +151,7 @@ def _decide(
     keys = {r.key for r in chosen}
     excluded = reason if decision == "exclude" else None
     readings = [replace(r, excluded=excluded) if r.key in keys else r for r in record.readings]
-    evaluation = evaluate(record.definition, readings)
+    evaluation = evaluate(record.definition, readings, record.evaluation.history)
     now = store.now()
     with store.change(action=f"{decision} readings", by=by, reason=reason) as session:
         _refuse_changed(session, record)
@@ -225,7 +225,7 @@ def _supersede(
 def _judge_again(session: Session, number: int, by: str, now: datetime, reason: str) -> None:
     """Evaluate a run anew: another instrument has another detector ceiling."""
     record = load_run(session, number, (0, ""))
-    evaluation = evaluate(record.definition, record.readings)
+    evaluation = evaluate(record.definition, record.readings, record.evaluation.history)
     _supersede(session, record, evaluation, by=by, at=now, reason=reason)
 
 

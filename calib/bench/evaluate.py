@@ -10,11 +10,20 @@ import numpy as np
 from calib.acceptance import Evidence, criteria_from, judge
 from calib.bench.evidence import evidence_of, read_back
 from calib.bench.exclude_failing import evaluate_with_exclusions
-from calib.bench.method_definition import MethodDefinition
+from calib.bench.method_definition import HISTORY, MethodDefinition
 from calib.bench.quantities import quantities_of
-from calib.bench.records import BlankRecord, Evaluation, Measured, StandardRecord, VerdictRecord
+from calib.bench.records import (
+    BlankRecord,
+    Evaluation,
+    Measured,
+    NoiseHistory,
+    StandardRecord,
+    VerdictRecord,
+)
 from calib.curves.curve import Curve
 from calib.curves.fit import fit
+from calib.curves.history_noise import HistoryNoise
+from calib.curves.own_noise import fit_with_own_noise
 from calib.errors import InputError
 
 STANDARD_ROLES = ("standard", "anchor")
@@ -22,7 +31,9 @@ BLANK_ROLES = ("blank", "zero", "carry-over")
 CHECK_ROLES = ("check", "first-check")
 
 
-def evaluate(definition: MethodDefinition, readings: Sequence[Measured]) -> Evaluation:
+def evaluate(
+    definition: MethodDefinition, readings: Sequence[Measured], history: NoiseHistory | None = None
+) -> Evaluation:
     """Fit the standards, judge the curve, and quantify what else was measured.
 
     Parameters
@@ -30,6 +41,9 @@ def evaluate(definition: MethodDefinition, readings: Sequence[Measured]) -> Eval
     definition : MethodDefinition
     readings : sequence of Measured
         Of one run, in the method's units.
+    history : NoiseHistory, optional
+        Where the method takes its noise from its history: what was pooled for this run. Without it
+        the variance function is estimated from this run alone, and the curve says so.
 
     Raises
     ------
@@ -39,31 +53,38 @@ def evaluate(definition: MethodDefinition, readings: Sequence[Measured]) -> Eval
     fitted = fitted_readings(definition, readings)
     if not fitted:
         raise InputError("no standard with a response is left to fit: check the roles, or log it as unknowns")
-    return settle(definition, readings, fitted_curve(definition, fitted))
+    return settle(definition, readings, fitted_curve(definition, fitted, history), history)
 
 
-def fitted_curve(definition: MethodDefinition, fitted: Sequence[Measured]) -> Curve:
+def fitted_curve(
+    definition: MethodDefinition, fitted: Sequence[Measured], history: NoiseHistory | None
+) -> Curve:
     """Curve of one run under the noise model its method asks for."""
-    return fit(
-        [r.concentration or 0.0 for r in fitted],
-        [math.nan if r.response is None else r.response for r in fitted],
-        model=definition.model,
-        noise=definition.noise,
-        fixed=definition.fixed,
-        bounds=definition.bounds,
-    )
+    x = [r.concentration or 0.0 for r in fitted]
+    y = [math.nan if r.response is None else r.response for r in fitted]
+    fixed, bounds = definition.fixed, definition.bounds
+    if definition.noise != HISTORY:
+        return fit(x, y, definition.model, noise=definition.noise, fixed=fixed, bounds=bounds)
+    if history is None:
+        return fit_with_own_noise(x, y, definition.model, fixed=fixed, bounds=bounds)
+    return fit(x, y, definition.model, noise=history.noise, fixed=fixed, bounds=bounds)
 
 
-def settle(definition: MethodDefinition, readings: Sequence[Measured], curve: Curve) -> Evaluation:
+def settle(
+    definition: MethodDefinition,
+    readings: Sequence[Measured],
+    curve: Curve,
+    history: NoiseHistory | None = None,
+) -> Evaluation:
     """Judge and quantify on the first curve, or on what the method's exclusion rule makes of it."""
     if definition.exclusion is None:
-        return assemble(definition, readings, curve)[0]
+        return assemble(definition, readings, curve, history)[0]
     return evaluate_with_exclusions(
         definition,
         readings,
         curve,
-        lambda kept: fitted_curve(definition, fitted_readings(definition, kept)),
-        lambda kept, found: assemble(definition, kept, found),
+        lambda kept: fitted_curve(definition, fitted_readings(definition, kept), history),
+        lambda kept, found: assemble(definition, kept, found, history),
     )
 
 
@@ -74,7 +95,10 @@ def fitted_readings(definition: MethodDefinition, readings: Iterable[Measured]) 
 
 
 def assemble(
-    definition: MethodDefinition, readings: Sequence[Measured], curve: Curve
+    definition: MethodDefinition,
+    readings: Sequence[Measured],
+    curve: Curve,
+    history: NoiseHistory | None = None,
 ) -> tuple[Evaluation, Evidence]:
     """Judge and quantify on a curve that is there already; with what the verdict rests on."""
     fitted = {r.key for r in fitted_readings(definition, readings)}
@@ -84,7 +108,8 @@ def assemble(
     verdict = _verdict(definition, evidence)
     others = [r for r in readings if r.role in ("unknown", "control", *CHECK_ROLES)]
     quantities = quantities_of(definition, curve, verdict.accepted, others, verdict.lowest, verdict.highest)
-    return Evaluation(curve, standards, blanks, verdict, quantities), evidence
+    used = history if isinstance(curve.noise, HistoryNoise) else None
+    return Evaluation(curve, standards, blanks, verdict, quantities, history=used), evidence
 
 
 def _standards(curve: Curve, readings: Sequence[Measured], fitted: set[int]) -> Iterable[StandardRecord]:

@@ -4,18 +4,21 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from types import MappingProxyType
 
 import numpy as np
 
-from calib.bench.evaluate import fitted_readings, settle
-from calib.bench.method_definition import MethodDefinition
-from calib.bench.records import Evaluation, Measured
+from calib.bench.evaluate import fitted_curve, fitted_readings, settle
+from calib.bench.method_definition import HISTORY, MethodDefinition
+from calib.bench.records import Evaluation, Measured, NoiseHistory
 from calib.curves.curve import Curve
 from calib.curves.stack import fit_stack
 
 
 def evaluate_many(
-    definition: MethodDefinition, runs: Mapping[int, Sequence[Measured]]
+    definition: MethodDefinition,
+    runs: Mapping[int, Sequence[Measured]],
+    histories: Mapping[int, NoiseHistory] = MappingProxyType({}),
 ) -> dict[int, Evaluation | None]:
     """Evaluate runs as `evaluate` does one by one, and as fast as a stack.
 
@@ -24,6 +27,8 @@ def evaluate_many(
     definition : MethodDefinition
     runs : mapping
         Readings of each run by its number, in the method's units.
+    histories : mapping, optional
+        What the noise model of a run was pooled over, by its number; see `evaluate`.
 
     Returns
     -------
@@ -32,8 +37,15 @@ def evaluate_many(
     """
     # In the order of the levels, so that runs measured in another order share a stack.
     fitted = {n: sorted(fitted_readings(definition, readings), key=_level) for n, readings in runs.items()}
-    curves = _curves(definition, {n: readings for n, readings in fitted.items() if readings})
-    return {n: settle(definition, r, curves[n]) if n in curves else None for n, r in runs.items()}
+    present = {n: readings for n, readings in fitted.items() if readings}
+    if definition.noise == HISTORY:  # every run has a noise model of its own
+        curves = {n: fitted_curve(definition, r, histories.get(n)) for n, r in present.items()}
+    else:
+        curves = _curves(definition, present)
+    return {
+        n: settle(definition, r, curves[n], histories.get(n)) if n in curves else None
+        for n, r in runs.items()
+    }
 
 
 def _level(reading: Measured) -> float:

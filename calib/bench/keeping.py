@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import asdict
 from datetime import datetime
 from typing import Any
 
@@ -19,12 +20,15 @@ from calib.bench.method_definition import MethodDefinition, read_definition
 from calib.bench.records import (
     Evaluation,
     Measured,
+    NoiseHistory,
+    PastRun,
     QuantityRecord,
     StandardRecord,
     VerdictRecord,
 )
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding
+from calib.curves.history_noise import HistoryNoise
 from calib.curves.noise import noise_from_dict
 from calib.curves.standards import Standards, frozen
 from calib.models import response_model
@@ -207,6 +211,14 @@ def curve_of(row: tables.Curve, standards: Sequence[Measured]) -> Curve:
     )
 
 
+def history_of(row: tables.Curve) -> NoiseHistory | None:
+    """What the noise model of a curve was pooled over, where it was."""
+    noise = noise_from_dict(row.noise)
+    if not isinstance(noise, HistoryNoise):
+        return None
+    return NoiseHistory(noise, tuple(PastRun(**past) for past in row.noise_from or ()))
+
+
 def standard_records(
     rows: Iterable[tables.CurveStandard], measured: Mapping[int, Measured]
 ) -> tuple[StandardRecord, ...]:
@@ -269,7 +281,7 @@ def quantity_record(row: tables.QuantityRow) -> QuantityRecord:
 
 
 def _curve_row(run_id: int, evaluation: Evaluation, by: str, at: datetime) -> tables.Curve:
-    curve = evaluation.curve
+    curve, history = evaluation.curve, evaluation.history
     pairs = zip(curve.response_model.names, curve.lower, curve.upper, strict=True)
     return tables.Curve(
         run_id=run_id,
@@ -277,6 +289,7 @@ def _curve_row(run_id: int, evaluation: Evaluation, by: str, at: datetime) -> ta
         fixed=curve.fixed,
         bounds={n: [finite(float(low)), finite(float(high))] for n, low, high in pairs},
         noise=curve.noise.to_dict(),
+        noise_from=None if history is None else [asdict(past) for past in history.past],
         parameters={n: finite(v) for n, v in curve.parameters.items()},
         covariance=[[finite(float(v)) for v in line] for line in curve.covariance],
         undetermined=[n for n, d in zip(curve.response_model.names, curve.determined, strict=True) if not d],

@@ -12,6 +12,7 @@ from sqlalchemy.orm import Session
 from calib import store as tables
 from calib.bench.evaluate import evaluate
 from calib.bench.keeping import add_evaluation, add_first_quantities, versions
+from calib.bench.noise_history import refuse_changed_history
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.records import Evaluation, RunHeading, RunRecord
 from calib.bench.show_run import attempts_on_day, local, lot_facts
@@ -41,7 +42,7 @@ def evaluate_plan(plan: LogPlan) -> EvaluatedPlan:
                 f"{plan.file.name}: no standards in it; unknowns alone belong to calib quantify, "
                 "which reads them on the curve in force"
             )
-    return EvaluatedPlan(plan, tuple(evaluate(r.definition, r.measured) for r in plan.runs))
+    return EvaluatedPlan(plan, tuple(evaluate(r.definition, r.measured, r.history) for r in plan.runs))
 
 
 def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, ...]:
@@ -51,11 +52,15 @@ def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, 
     ------
     DuplicateFile
         When another program logged the same readings meanwhile.
+    InputError
+        When the past runs the noise model was pooled over changed meanwhile.
     """
     plan = evaluated.plan
     now = store.now()
     with store.change(action="log run", by=plan.by) as session:
         refuse_duplicates(session, plan.file, plan.runs)
+        for run in plan.runs:
+            refuse_changed_history(session, run.instrument.name, run.definition, run.at, run.history)
         original_id = add_original(session, plan.file, now)
         name = session.get_one(tables.Original, original_id).name
         written = [

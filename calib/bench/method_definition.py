@@ -34,6 +34,8 @@ OPTIONAL = (
     "curve",
     "exclusion",
 )
+# Noise pooled over past runs; the only name that `calib.fit` does not know.
+HISTORY = "history"
 DURATION = re.compile(r"^\s*(\d+(?:\.\d+)?)\s*(min|h|d)\s*$")
 LONGEST_HOURS = 87660.0
 HOURS = {"min": 1.0 / 60.0, "h": 1.0, "d": 24.0}
@@ -48,6 +50,7 @@ class MethodDefinition:
     fixed, bounds : mapping
         Of the model's parameters, by name.
     noise : str or NoiseModel
+        A name of `calib.fit`, or 'history'.
     limits : mapping of str to Limit
         Preset limits overridden by the method's own.
     reference_concentrations : tuple of float
@@ -229,15 +232,10 @@ def _refuse_unfittable(
 
 
 def _noise(value: object) -> str | NoiseModel:
-    if value == "history":
-        raise MethodError(
-            "noise = 'history' (pooled over past runs) is not available in this version; use one of "
-            f'{", ".join(NOISE_NAMES)} or {{ assumed = "response", exponent = 2.0 }}',
-            "noise",
-        )
     if isinstance(value, str):
-        if value not in NOISE_NAMES:
-            raise MethodError(f"noise = {value!r} is unknown; known are {', '.join(NOISE_NAMES)}", "noise")
+        known = (*NOISE_NAMES, HISTORY)
+        if value not in known:
+            raise MethodError(f"noise = {value!r} is unknown; known are {', '.join(known)}", "noise")
         return value
     if not isinstance(value, Mapping) or "assumed" not in value or set(value) - {"assumed", "exponent"}:
         raise MethodError('noise must be a name or { assumed = "response", exponent = 2.0 }', "noise")

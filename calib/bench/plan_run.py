@@ -15,7 +15,8 @@ from calib.bench.find import instrument_named, lot_named, method_named
 from calib.bench.find_readings import with_exclusions
 from calib.bench.keeping import definition_of, is_saturated
 from calib.bench.method_definition import MethodDefinition
-from calib.bench.records import Measured
+from calib.bench.noise_history import history_before
+from calib.bench.records import Measured, NoiseHistory
 from calib.errors import DuplicateFile, InputError, UnknownUnit
 from calib.intake import (
     ParsedFile,
@@ -50,7 +51,8 @@ class LogOptions:
 class PlannedRun:
     """One run of a file with everything resolved.
 
-    ``notes`` says in words what was decided, such as a conversion of units.
+    ``history`` is what the noise model was pooled over, where the method asks for it; ``notes`` says
+    in words what was decided, such as a conversion of units.
     """
 
     parsed: ParsedRun
@@ -63,6 +65,7 @@ class PlannedRun:
     lot: tables.StandardLot | None
     measured: tuple[Measured, ...]
     content_fingerprint: str
+    history: NoiseHistory | None = None
     notes: tuple[str, ...] = field(default=())
 
     @property
@@ -191,6 +194,8 @@ def _plan(
     _require_response_unit(file, run, definition)
     for reading in run.readings:
         _require_measurable(file, reading)
+    measured = tuple(_measured(i, r, factor, instrument) for i, r in enumerate(run.readings, start=1))
+    standards = any(m.role == "standard" for m in measured)
     return PlannedRun(
         parsed=run,
         instrument=instrument,
@@ -200,8 +205,9 @@ def _plan(
         offset_minutes=_offset_minutes(at),
         operator=run.operator or options.by,
         lot=lot,
-        measured=tuple(_measured(i, r, factor, instrument) for i, r in enumerate(run.readings, start=1)),
+        measured=measured,
         content_fingerprint=content_fingerprint(_resolved(run, instrument.name, definition.analyte, at)),
+        history=history_before(session, instrument.name, definition, at) if standards else None,
         notes=(*_notes(run, definition, factor), *_lot_notes(lot, at)),
     )
 

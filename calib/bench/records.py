@@ -9,6 +9,7 @@ from datetime import date, datetime
 from calib.acceptance import CriterionResult
 from calib.bench.method_definition import MethodDefinition
 from calib.curves.curve import Curve
+from calib.curves.history_noise import HistoryNoise
 
 
 @dataclass(frozen=True, slots=True)
@@ -128,10 +129,27 @@ class VerdictRecord:
 
 
 @dataclass(frozen=True, slots=True)
+class PastRun:
+    """A run that took part in a pooled noise model, by the numbers of the run and of its curve."""
+
+    run: int
+    curve: int
+
+
+@dataclass(frozen=True, slots=True)
+class NoiseHistory:
+    """A noise model pooled over past runs, and which, oldest first."""
+
+    noise: HistoryNoise
+    past: tuple[PastRun, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Evaluation:
     """A run evaluated: nothing is stored yet.
 
     ``before`` holds the earlier curves where the method's exclusion rule left out standards, oldest first.
+    ``history`` is what the noise model of the curve was pooled over, where it was.
     """
 
     curve: Curve
@@ -140,6 +158,7 @@ class Evaluation:
     verdict: VerdictRecord
     quantities: tuple[QuantityRecord, ...]
     before: tuple[Evaluation, ...] = ()
+    history: NoiseHistory | None = None
 
 
 @dataclass(frozen=True, slots=True)

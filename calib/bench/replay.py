@@ -14,7 +14,8 @@ from calib.bench.evaluate_many import evaluate_many
 from calib.bench.evidence import finite
 from calib.bench.find import instrument_named, method_named, run_numbered
 from calib.bench.keeping import definition_of
-from calib.bench.method_definition import MethodDefinition, read_definition
+from calib.bench.method_definition import HISTORY, MethodDefinition, read_definition
+from calib.bench.noise_history import history_before
 from calib.bench.quantify import QUANTIFIED_ROLES
 from calib.bench.quantities import quantities_of
 from calib.bench.read_archive import (
@@ -27,7 +28,7 @@ from calib.bench.read_archive import (
     measured_of_runs,
     reported_in_force,
 )
-from calib.bench.records import Evaluation, Measured, QuantityRecord, VerdictRecord
+from calib.bench.records import Evaluation, Measured, NoiseHistory, QuantityRecord, VerdictRecord
 from calib.bench.register import read_method_text
 from calib.bench.replay_records import (
     Outcome,
@@ -38,6 +39,7 @@ from calib.bench.replay_records import (
     sample_changes,
 )
 from calib.curves.curve import Curve
+from calib.curves.history_noise import HistoryNoise
 from calib.errors import InputError, MethodError, NotFound, UnknownUnit
 from calib.quantification.range import working_range
 
@@ -247,7 +249,12 @@ def _replay_batch(
     measured = measured_of_runs(session, needed, target.definition.concentration_unit)
     before = curves_in_force(session, {n: measured[n] for n in sources}, archive.definition_of_run)
     reported = reported_in_force(session, [run.id for run in batch])
-    after = evaluate_many(target.definition, {n: measured[n] for n in sources})
+    histories = {
+        n: history
+        for n in sources
+        if (history := _history(session, archive, target.definition, archive.runs[n], before[n][0]))
+    }
+    after = evaluate_many(target.definition, {n: measured[n] for n in sources}, histories)
     replayed = []
     for run in batch:
         version, old = archive.definitions[run.method_id]
@@ -273,6 +280,17 @@ def _replay_batch(
             )
         )
     return replayed
+
+
+def _history(
+    session: Session, archive: _Archive, new: MethodDefinition, run: ArchivedRun, curve: Curve
+) -> NoiseHistory | None:
+    """Noise model a run would have been given: the one it has, or one pooled for the first time."""
+    if isinstance(curve.noise, HistoryNoise):
+        return NoiseHistory(curve.noise, ())
+    if archive.definition_of_run(run.id).noise == HISTORY:  # it had too little history, and still has
+        return None
+    return history_before(session, run.instrument, new, run.at)
 
 
 def _outcome(

@@ -27,6 +27,7 @@ from calib.bench.keeping import (
     curve_of,
     definition_of,
     exclusions_in_force,
+    history_of,
     measured_of,
     quantity_record,
     standard_records,
@@ -228,7 +229,9 @@ def stored_evaluation(
         quantity_record(q) for q in current_quantities(session, run.id) if WITHDRAWN not in q.flags
     )
     blanks = blank_records(curve, own)
-    return Evaluation(curve, standards, blanks, verdict_record(verdict), quantities)
+    return Evaluation(
+        curve, standards, blanks, verdict_record(verdict), quantities, history=history_of(curve_row)
+    )
 
 
 def heading_of(session: Session, run: tables.Run, method: tables.Method) -> RunHeading:

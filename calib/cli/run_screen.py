@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 
 from calib.bench.flags import in_words
 from calib.cli.screen import print_table, say
+from calib.report.curve_wording import history_text, interval_scale_text
 from calib.report.wording import LARGEST_PLAIN, SMALLEST_PLAIN, number, percent, result_text, rounded
 
 if TYPE_CHECKING:
@@ -135,6 +136,9 @@ def show_curve(evaluation: Evaluation) -> None:
         f"  residual SD {number(curve.residual_sd)} with {curve.degrees_of_freedom} degrees of freedom; "
         f"noise {curve.noise.label}"
     )
+    if evaluation.history is not None:
+        say(f"  noise history: {history_text(evaluation.history)}")
+        say(f"  intervals rest on SD {interval_scale_text(evaluation)}")
     for finding in curve.findings:
         say(f"  ! {finding.message}")
 

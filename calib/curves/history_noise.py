@@ -60,16 +60,6 @@ class HistoryNoise(NoiseModel):
         """In words."""
         return self.function.label
 
-    @property
-    def account(self) -> str:
-        """How it was made, in words."""
-        other = "additive-relative" if self.family == "power-of-mean" else "power-of-mean"
-        return (
-            f"{self.family} from {self.readings} readings of {self.runs} runs, pseudo-likelihood lower by "
-            f"{self.difference:.3g} than {other}; typical residual SD {self.spread.sd:.4g}, which counts as "
-            f"{self.spread.weight:.3g} degrees of freedom of {self.spread.degrees_of_freedom:.0f}"
-        )
-
     def noisy_run(self, residual_sum: float, degrees_of_freedom: int) -> str | None:
         """What to say of a run that scatters more than its history, or None."""
         d = degrees_of_freedom

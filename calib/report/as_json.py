@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     from calib.bench.records import (
         BlankRecord,
         Evaluation,
+        NoiseHistory,
         QuantityRecord,
         RunHeading,
         RunRecord,
@@ -256,6 +257,7 @@ def _curve(number: int | None, evaluation: Evaluation) -> dict[str, Any]:
         "id": number,
         "model": curve.model,
         "noise": curve.noise.label,
+        "noise_history": _noise_history(evaluation.history),
         "parameters": {
             name: {"value": plain(value), "u": plain(errors[name])}
             for name, value in curve.parameters.items()
@@ -263,9 +265,28 @@ def _curve(number: int | None, evaluation: Evaluation) -> dict[str, Any]:
         "fixed": sorted(curve.fixed),
         "residual_sd": plain(curve.residual_sd),
         "degrees_of_freedom": curve.degrees_of_freedom,
+        "interval_scale": plain(curve.scale),
+        "interval_degrees_of_freedom": plain(curve.coverage_freedom),
         "r_squared": plain(curve.r_squared),
         "converged": curve.converged,
         "findings": [{"code": f.code, "message": f.message} for f in curve.findings],
+    }
+
+
+def _noise_history(history: NoiseHistory | None) -> dict[str, Any] | None:
+    if history is None:
+        return None
+    noise = history.noise
+    return {
+        "family": noise.family,
+        "function": plain(noise.function.to_dict()),
+        "runs": [past.run for past in history.past],
+        "curves": [past.curve for past in history.past],
+        "readings": noise.readings,
+        "pseudo_likelihood_difference": noise.difference,
+        "residual_sd": noise.spread.sd,
+        "weight": noise.spread.weight,
+        "degrees_of_freedom": noise.spread.degrees_of_freedom,
     }
 
 

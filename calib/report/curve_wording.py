@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
 from calib.report.wording import MISSING, number, percent, rounded, with_unit
 
 if TYPE_CHECKING:
+    from calib.bench.records import Evaluation, NoiseHistory
     from calib.curves.curve import Curve
 
 
@@ -54,7 +56,7 @@ def residual_sd_text(curve: Curve, concentration_unit: str, response_unit: str) 
 
     The scale is that of the noise model: a response, a share of it, or a response per power.
     """
-    sd, noise = curve.residual_sd, curve.noise
+    sd, noise = curve.residual_sd, getattr(curve.noise, "function", curve.noise)
     exponent = float(getattr(noise, "exponent", 0.0))
     match noise.kind:
         case "uniform":
@@ -73,6 +75,53 @@ def residual_sd_text(curve: Curve, concentration_unit: str, response_unit: str) 
         case _ if noise.known_scale:
             return f"{number(sd)} times the known standard uncertainties"
     return f"{number(sd)} times the given standard deviations"
+
+
+def history_text(history: NoiseHistory) -> str:
+    """Say what a noise model was pooled over.
+
+    For example '320 readings of 20 runs (1–18, 20, 21); power-of-mean, pseudo-likelihood lower by 3.1
+    than additive-relative'.
+    """
+    noise = history.noise
+    other = "additive-relative" if noise.family == "power-of-mean" else "power-of-mean"
+    return (
+        f"{noise.readings} readings of {noise.runs} runs ({spans(p.run for p in history.past)}); {noise.family}, "
+        f"pseudo-likelihood lower by {number(noise.difference, 2)} than {other}"
+    )
+
+
+def interval_scale_text(evaluation: Evaluation) -> str:
+    """Say which standard deviation the intervals rest on, and with how many degrees of freedom."""
+    curve = evaluation.curve
+    nu = curve.coverage_freedom
+    text = f"{number(curve.scale)}, {'known' if math.isinf(nu) else f'{nu:.0f} degrees of freedom'}"
+    if evaluation.history is None:
+        return text
+    spread = evaluation.history.noise.spread
+    if any(f.code == "noisy-run" for f in curve.findings):
+        return f"{text}, of this run alone: it scatters more than its history ({number(spread.sd)})"
+    return (
+        f"{text}: this run's {number(curve.residual_sd)} moderated by its history ({number(spread.sd)}, "
+        f"which counts as {spread.weight:.0f} of {spread.degrees_of_freedom:.0f} degrees of freedom)"
+    )
+
+
+def spans(numbers: Iterable[int]) -> str:
+    """Write whole numbers with runs of neighbours drawn together.
+
+    Examples
+    --------
+    >>> spans([3, 5, 6, 7, 9, 10])
+    '3, 5–7, 9, 10'
+    """
+    parts: list[list[int]] = []
+    for n in sorted(numbers):
+        if parts and n == parts[-1][-1] + 1:
+            parts[-1].append(n)
+        else:
+            parts.append([n])
+    return ", ".join(f"{p[0]}–{p[-1]}" if len(p) > 2 else ", ".join(map(str, p)) for p in parts)
 
 
 def _percent(sd: float) -> str:

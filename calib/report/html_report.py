@@ -82,6 +82,10 @@ def _view(record: RunRecord) -> dict[str, Any]:
         "equation": curve_wording.equation(curve),
         "parameters": curve_wording.parameter_rows(curve, *units),
         "residual_sd": curve_wording.residual_sd_text(curve, *units),
+        "interval_scale": curve_wording.interval_scale_text(record.evaluation),
+        "history": curve_wording.history_text(record.evaluation.history)
+        if record.evaluation.history
+        else None,
         "r_squared": number(record.evaluation.verdict.r_squared),
         "valid_for": f"{number(definition.valid_hours)} h",
         "confidence": f"{number(100 * definition.interval_confidence)} %",

@@ -16,7 +16,8 @@ class Curve(Base):
 
     ``parameters`` maps names to values, ``covariance`` is a list of rows in the
     same order; a cell that is undefined is null. ``undetermined`` names parameters
-    without a standard error. ``lowest`` and ``highest`` are
+    without a standard error. ``noise_from`` lists run and curve of each past run
+    a noise model was pooled over. ``lowest`` and ``highest`` are
     the calibrated range in the run's concentration unit.
     """
 
@@ -29,6 +30,7 @@ class Curve(Base):
     fixed: Mapped[dict[str, Any]]
     bounds: Mapped[dict[str, Any]]
     noise: Mapped[dict[str, Any]]
+    noise_from: Mapped[list[Any] | None]
     parameters: Mapped[dict[str, Any]]
     covariance: Mapped[list[Any]]
     undetermined: Mapped[list[Any]]

@@ -95,8 +95,8 @@ def test_digits_within_the_promise_are_no_finding(bench):
 def test_another_verdict_than_the_stored_one_is_found(bench, monkeypatch):
     bench.log(a_day())
 
-    def stricter(definition, readings):
-        found = evaluate(definition, readings)
+    def stricter(definition, readings, history):
+        found = evaluate(definition, readings, history)
         return replace(found, verdict=replace(found.verdict, decision="rejected"))
 
     monkeypatch.setattr(check_records, "evaluate", stricter)

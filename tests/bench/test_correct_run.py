@@ -292,10 +292,10 @@ def test_a_correction_made_meanwhile_is_noticed(bench, monkeypatch):
     bench.log(SPOILED)
     real = correct_run.evaluate
 
-    def slow(definition, readings):
+    def slow(definition, readings, history):
         monkeypatch.setattr(correct_run, "evaluate", real)
         bench.laboratory.exclude(1, ["#4"], reason="someone else")
-        return real(definition, readings)
+        return real(definition, readings, history)
 
     monkeypatch.setattr(correct_run, "evaluate", slow)
     with pytest.raises(InputError, match="run 1 was corrected by someone else meanwhile"):

@@ -98,7 +98,7 @@ def test_a_missing_key_is_named(key):
     ("line", "words"),
     [
         ("colour = 1", "unknown key 'colour' in the method; known are name, analyte"),
-        ('noise = "history"', r"noise = 'history' .* is not available in this version; use one of uniform"),
+        ('noise = "histories"', r"noise = 'histories' is unknown; known are uniform, .*, history"),
         ('noise = "loud"', "noise = 'loud' is unknown; known are uniform"),
         ("noise = 3", "noise must be a name or"),
         ('noise = { assumed = "response", power = 1 }', "noise must be a name or"),

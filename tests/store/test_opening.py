@@ -24,6 +24,7 @@ from calib.errors import (
     StoreLocked,
 )
 from calib.store import Store, check_store, default_store_path, open_store, store_path
+from calib.store.schema import REVISIONS
 
 NOBODY = 65534
 
@@ -153,8 +154,8 @@ def test_a_folder_is_no_store(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("found", "known", "kind", "words"),
     [
-        ("9999", ("0001",), SchemaTooNew, "install the newer calib"),
-        ("0001", ("0001", "0002"), SchemaTooOld, "run calib store upgrade"),
+        ("9999", REVISIONS, SchemaTooNew, "install the newer calib"),
+        (REVISIONS[-1], (*REVISIONS, "9999"), SchemaTooOld, "run calib store upgrade"),
     ],
 )
 def test_other_schemas_are_refused_and_left_alone(
