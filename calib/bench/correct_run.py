@@ -245,6 +245,7 @@ def _requantify(session: Session, number: int) -> None:
         verdict.lowest,
         verdict.highest,
         flag,
+        verdict.carried_over and record.curve_run == number,
     )
     add_quantities(session, number, record.curve_id or 0, found)
 

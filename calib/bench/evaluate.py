@@ -107,7 +107,15 @@ def assemble(
     evidence = evidence_of(definition, readings, curve, standards, blanks)
     verdict = _verdict(definition, evidence)
     others = [r for r in readings if r.role in ("unknown", "control", *CHECK_ROLES)]
-    quantities = quantities_of(definition, curve, verdict.accepted, others, verdict.lowest, verdict.highest)
+    quantities = quantities_of(
+        definition,
+        curve,
+        verdict.accepted,
+        others,
+        verdict.lowest,
+        verdict.highest,
+        carried_over=verdict.carried_over,
+    )
     used = history if isinstance(curve.noise, HistoryNoise) else None
     return Evaluation(curve, standards, blanks, verdict, quantities, history=used), evidence
 

@@ -60,6 +60,7 @@ def evidence_of(
         end_slopes=_slopes(curve, ends),
         counts=_counts(readings),
         carry_over=tuple(_carry_over(curve, blanks, ends)),
+        reporting_limit=definition.results.reporting_limit,
     )
 
 

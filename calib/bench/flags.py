@@ -13,6 +13,12 @@ FLAGS: dict[str, str] = {
     "replicate-spread": "replicates differ more than the curve's noise allows: no interval is given",
     "absent-reading": "a reading is absent (see the file)",
     "saturated": "detector at its ceiling",
+    "below-reporting-limit": "below the reporting limit: the estimate is kept and not reported",
+    "too-few-replicates": "fewer readings than the method asks for: measure again",
+    "replicate-cv": "replicates differ more than the method allows: measure again",
+    "not-bracketed": "not between two passing check standards: measure again",
+    "high-bias-kept": "a check around it read too high; kept, as nothing was found",
+    "carry-over-risk": "measured right after a sample above the range, with carry-over: measure again",
     "curve-rejected": "the curve was rejected: no result",
     "curve-superseded": "the curve was superseded and its successor rejected: no result",
 }

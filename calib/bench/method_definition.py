@@ -6,7 +6,7 @@ import math
 import re
 import tomllib
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -14,6 +14,13 @@ import numpy as np
 from calib.acceptance import ExclusionRule, Limit
 from calib.bench.acceptance_settings import acceptance_limits
 from calib.bench.exclusion_settings import exclusion_rule
+from calib.bench.result_settings import (
+    CheckRules,
+    ResultRules,
+    check_rules,
+    result_rules,
+    specification_of,
+)
 from calib.bench.setting_lines import line_of
 from calib.curves.noise import NoiseModel, assumed_noise
 from calib.curves.requests import NOISE_NAMES, problem_of
@@ -21,6 +28,8 @@ from calib.curves.standards import Standards
 from calib.errors import MethodError, ModelError, UnknownUnit
 from calib.intake import parse_concentration_unit
 from calib.models import ResponseModel, response_model
+from calib.quantification.specification import Specification
+from calib.store.instruments import EVENT_KINDS
 
 REQUIRED = ("name", "analyte", "concentration_unit", "response_unit", "model", "acceptance")
 OPTIONAL = (
@@ -33,9 +42,14 @@ OPTIONAL = (
     "required_cv",
     "curve",
     "exclusion",
+    "results",
+    "checks",
+    "specification",
 )
 # Noise pooled over past runs; the only name that `calib.fit` does not know.
 HISTORY = "history"
+# 42 CFR 493.1255(b)(3) and ISO/IEC 17025:2017, 6.4.10: what may change the response of an instrument.
+NEED_A_CHECK = ("maintenance", "part", "move", "software", "lot")
 DURATION = re.compile(r"^\s*(\d+(?:\.\d+)?)\s*(min|h|d)\s*$")
 LONGEST_HOURS = 87660.0
 HOURS = {"min": 1.0 / 60.0, "h": 1.0, "d": 24.0}
@@ -59,8 +73,14 @@ class MethodDefinition:
         Coefficient of variation that bounds the working range, a fraction.
     valid_hours : float
         How long a curve stays in force.
+    needs_check_after : tuple of str
+        Kinds of event after which a curve is used only once a check standard passed.
     exclusion : ExclusionRule or None
         How failing standards are left out; None where the method does not ask for it.
+    results : ResultRules
+    checks : CheckRules
+    specification : Specification or None
+        What results are compared with; None where the method makes no statement.
     """
 
     name: str
@@ -78,7 +98,11 @@ class MethodDefinition:
     preset: str
     limits: Mapping[str, Limit]
     valid_hours: float
-    exclusion: ExclusionRule | None = None
+    needs_check_after: tuple[str, ...]
+    exclusion: ExclusionRule | None
+    results: ResultRules
+    checks: CheckRules
+    specification: Specification | None
 
 
 def read_definition(text: str, version: int = 1, preset: str | None = None) -> MethodDefinition:
@@ -121,6 +145,10 @@ def _definition(table: Mapping[str, Any], version: int, preset: str | None) -> M
     unit = parse_concentration_unit(_text(table, "concentration_unit"))
     own_source = f"method {name} version {version}"
     limits = acceptance_limits(table["acceptance"], own_source, unit, model.name, preset)
+    checks = check_rules(table.get("checks"), limits)
+    if checks.bracket:
+        # A failing check then costs the samples around it, not the curve.
+        limits["check_recovery"] = replace(limits["check_recovery"], warns=True)
     return MethodDefinition(
         name=name,
         analyte=_text(table, "analyte"),
@@ -137,7 +165,11 @@ def _definition(table: Mapping[str, Any], version: int, preset: str | None) -> M
         preset=str(table["acceptance"]["preset"]),
         limits=limits,
         valid_hours=_valid_hours(table.get("curve", {})),
+        needs_check_after=_needs_check_after(table.get("curve", {})),
         exclusion=exclusion_rule(table.get("exclusion"), limits),
+        results=result_rules(table.get("results"), unit),
+        checks=checks,
+        specification=specification_of(table.get("specification"), unit),
     )
 
 
@@ -256,8 +288,10 @@ def _references(value: object) -> tuple[float, ...]:
 
 
 def _valid_hours(table: object) -> float:
-    if not isinstance(table, Mapping) or set(table) - {"valid_for"}:
-        raise MethodError('[curve] knows the one key valid_for, such as valid_for = "24 h"', "curve")
+    if not isinstance(table, Mapping) or set(table) - {"valid_for", "needs_check_after"}:
+        raise MethodError(
+            '[curve] knows the keys valid_for, such as valid_for = "24 h", and needs_check_after', "curve"
+        )
     text = table.get("valid_for", "24 h")
     match = DURATION.match(text) if isinstance(text, str) else None
     if match is None or float(match[1]) == 0:
@@ -270,3 +304,13 @@ def _valid_hours(table: object) -> float:
             f"curve.valid_for = {text!r} is longer than ten years; correct it", "curve.valid_for"
         )
     return hours
+
+
+def _needs_check_after(table: Mapping[str, Any]) -> tuple[str, ...]:
+    kinds = table.get("needs_check_after", list(NEED_A_CHECK))
+    if not isinstance(kinds, list) or any(kind not in EVENT_KINDS for kind in kinds):
+        raise MethodError(
+            f"curve.needs_check_after = {kinds!r} must be a list of kinds of event: {', '.join(EVENT_KINDS)}",
+            "curve.needs_check_after",
+        )
+    return tuple(kinds)

@@ -8,6 +8,7 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
+from calib.bench.curve_life import refuse_unchecked
 from calib.bench.find import current_curve, run_numbered
 from calib.bench.keeping import add_first_quantities
 from calib.bench.log_run import add_original, add_readings, add_run
@@ -26,7 +27,7 @@ def quantify_plan(store: tables.Store, plan: LogPlan) -> tuple[RunRecord, ...]:
     Raises
     ------
     InputError
-        When the file holds standards, or no accepted curve is in force.
+        When the file holds standards, no accepted curve is in force, or the curve needs a check.
     """
     for run in plan.runs:
         if run.has_standards:
@@ -34,13 +35,16 @@ def quantify_plan(store: tables.Store, plan: LogPlan) -> tuple[RunRecord, ...]:
     with store.reading() as session:
         curves = [curve_in_force(session, run) for run in plan.runs]
         sources = [load_run(session, c.run_id, (0, "")) for c in curves]
+        for run, source in zip(plan.runs, sources, strict=True):
+            refuse_unchecked(session, run, source)
     results = [quantify_on(source, run) for source, run in zip(sources, plan.runs, strict=True)]
     now = store.now()
     numbers = []
     with store.change(action="quantify unknowns", by=plan.by) as session:
         refuse_duplicates(session, plan.file, plan.runs)
         original_id = add_original(session, plan.file, now)
-        for run, curve, quantities in zip(plan.runs, curves, results, strict=True):
+        for run, source, curve, quantities in zip(plan.runs, sources, curves, results, strict=True):
+            refuse_unchecked(session, run, source)
             numbers.append(_write(session, plan, run, curve, quantities, original_id, now))
     return tuple(show_run(store, n) for n in numbers)
 

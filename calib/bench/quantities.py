@@ -7,6 +7,7 @@ from itertools import groupby
 
 import numpy as np
 
+from calib.bench.formed_results import formed
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured, QuantityRecord
 from calib.curves.curve import Curve
@@ -22,8 +23,11 @@ def quantities_of(
     lowest: float | None,
     highest: float | None,
     unusable_flag: str = "curve-rejected",
+    carried_over: bool = False,
 ) -> tuple[QuantityRecord, ...]:
     """Quantify samples: responses of one sample and dilution are averaged, then inverted.
+
+    The rules of the method on results and checks are applied to what comes out.
 
     Parameters
     ----------
@@ -37,6 +41,8 @@ def quantities_of(
         Calibrated range in force.
     unusable_flag : str
         Flag of a quantity without a concentration when the curve is not usable.
+    carried_over : bool
+        The carry-over blank of the run did not keep its limit.
     """
     groups = [tuple(g) for g in _groups(readings)]
     present = [g for g in groups if any(r.response is not None for r in g)]
@@ -50,7 +56,7 @@ def quantities_of(
         )
     order = {id(g): i for i, g in enumerate(present)}
     tests = ("check", "first-check")
-    return tuple(
+    found_of_groups = tuple(
         _record(
             definition,
             curve,
@@ -64,6 +70,7 @@ def quantities_of(
         )
         for g in groups
     )
+    return formed(definition, curve, readings, found_of_groups, highest, carried_over)
 
 
 def _groups(readings: Sequence[Measured]) -> Iterable[Iterable[Measured]]:

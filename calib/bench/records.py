@@ -123,6 +123,11 @@ class VerdictRecord:
         return tuple(f"{c.what}: {c.detail}" for c in self.criteria if not c.passed and c.warns)
 
     @property
+    def carried_over(self) -> bool:
+        """Whether the carry-over blank did not keep its limit."""
+        return any(c.id == "carry_over" and not c.passed for c in self.criteria)
+
+    @property
     def accepted(self) -> bool:
         """Whether the curve may be used."""
         return self.decision != "rejected"
@@ -236,3 +241,14 @@ class RunRecord:
     lot: LotFacts | None
     chain_sequence: int
     chain_head: str
+
+    @property
+    def lowest_reported(self) -> float | None:
+        """Lowest concentration reported, undiluted."""
+        return lowest_reported(self.definition, self.evaluation.verdict)
+
+
+def lowest_reported(definition: MethodDefinition, verdict: VerdictRecord) -> float | None:
+    """Lowest concentration reported, undiluted: the lowest standard in force or the reporting limit above it."""
+    ends = [end for end in (verdict.lowest, definition.results.reporting_limit) if end is not None]
+    return max(ends, default=None)

@@ -20,6 +20,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "quantify": ("log:quantify", "Read later unknowns on the curve in force."),
     "rules": ("rules:rules", "Why a run has its verdict, and what would have to change."),
     "run": ("run:run", "List, show and correct runs."),
+    "sample": ("sample:sample", "What can be released, what waits, and why."),
     "drift": ("drift:drift", "Review an instrument over time."),
     "replay": ("replay:replay", "Evaluate past runs under another method version; nothing is written."),
     "report": ("report:report", "Write the report of a run to a file."),

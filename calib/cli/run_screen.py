@@ -7,6 +7,7 @@ from itertools import groupby
 from typing import TYPE_CHECKING
 
 from calib.bench.flags import in_words
+from calib.bench.records import lowest_reported
 from calib.cli.screen import print_table, say
 from calib.report.curve_wording import history_text, interval_scale_text
 from calib.report.wording import LARGEST_PLAIN, SMALLEST_PLAIN, number, percent, result_text, rounded
@@ -50,7 +51,7 @@ def show_run(record: RunRecord) -> None:
     if heading.void_reason is not None:
         say(f"VOID: {heading.void_reason}", "bold red")
     show_checks(record.evaluation, definition)
-    show_samples(record.evaluation)
+    show_samples(record.evaluation, definition)
     if record.dependents:
         say(f"  samples of run {', '.join(map(str, record.dependents))} are read on this curve")
     for amendment in record.amendments:
@@ -65,7 +66,7 @@ def show_preview(definition: MethodDefinition, evaluation: Evaluation) -> None:
     show_curve(evaluation)
     show_standards(evaluation.standards, definition.concentration_unit)
     show_checks(evaluation, definition)
-    show_samples(evaluation)
+    show_samples(evaluation, definition)
 
 
 def show_verdict(record: RunRecord) -> None:
@@ -185,12 +186,12 @@ def show_checks(evaluation: Evaluation, definition: MethodDefinition) -> None:
             continue
         found = q.concentration if q.concentration is not None else q.estimate
         recovery = "–" if found is None or not q.nominal else percent(found / q.nominal)
-        rows.append((q.role, q.sample, number(q.nominal or 0.0), _cell(q, evaluation), recovery))
+        rows.append((q.role, q.sample, number(q.nominal or 0.0), _cell(q, evaluation, definition), recovery))
     if rows:
         print_table(("Check", "Sample", f">Nominal [{unit}]", ">Found", ">Recovery"), rows)
 
 
-def show_samples(evaluation: Evaluation) -> None:
+def show_samples(evaluation: Evaluation, definition: MethodDefinition) -> None:
     """Unknowns, flagged ones first."""
     samples = [q for q in evaluation.quantities if q.role == "unknown"]
     if not samples:
@@ -205,7 +206,7 @@ def show_samples(evaluation: Evaluation) -> None:
                 q.sample,
                 str(q.replicates),
                 f"× {number(q.dilution)}" if q.dilution != 1 else "",
-                _cell(q, evaluation),
+                _cell(q, evaluation, definition),
                 "; ".join(in_words(f) for f in q.flags),
             )
             for q in ordered
@@ -213,6 +214,7 @@ def show_samples(evaluation: Evaluation) -> None:
     )
 
 
-def _cell(q: QuantityRecord, evaluation: Evaluation) -> str:
+def _cell(q: QuantityRecord, evaluation: Evaluation, definition: MethodDefinition) -> str:
     verdict = evaluation.verdict
-    return result_text(q, verdict.lowest, verdict.highest)
+    lowest = lowest_reported(definition, verdict) if q.role == "unknown" else verdict.lowest
+    return result_text(q, lowest, verdict.highest)

@@ -50,7 +50,7 @@ def run_json(record: RunRecord) -> dict[str, Any]:
         "blanks": [_blank(b) for b in evaluation.blanks],
         "verdict": _verdict(evaluation, record.definition.concentration_unit),
         "checks": [_check(q) for q in evaluation.quantities if q.role in ("check", "first-check")],
-        "quantities": [_quantity(q) for q in evaluation.quantities if q.role in ("unknown", "control")],
+        "quantities": [quantity_json(q) for q in evaluation.quantities if q.role in ("unknown", "control")],
         "amendments": [plain(a) for a in record.amendments],
         "dependent_runs": list(record.dependents),
         "earlier_curves": record.curves_before,
@@ -81,7 +81,7 @@ def preview_json(evaluated: EvaluatedPlan) -> dict[str, Any]:
                 "curve": _curve(None, evaluation),
                 "standards": [_standard(s) for s in evaluation.standards],
                 "verdict": _verdict(evaluation, run.definition.concentration_unit),
-                "quantities": [_quantity(q) for q in evaluation.quantities],
+                "quantities": [quantity_json(q) for q in evaluation.quantities],
             }
             for run, evaluation in zip(plan.runs, evaluated.evaluations, strict=True)
         ],
@@ -338,10 +338,11 @@ def _criterion(result: CriterionResult) -> dict[str, Any]:
 def _check(q: QuantityRecord) -> dict[str, Any]:
     found = q.concentration if q.concentration is not None else q.estimate
     recovery = found / q.nominal if found is not None and q.nominal else None
-    return _quantity(q) | {"role": q.role, "nominal": q.nominal, "recovery": recovery}
+    return quantity_json(q) | {"role": q.role, "nominal": q.nominal, "recovery": recovery}
 
 
-def _quantity(q: QuantityRecord) -> dict[str, Any]:
+def quantity_json(q: QuantityRecord) -> dict[str, Any]:
+    """One quantity, full precision."""
     return {
         "sample": q.sample,
         "role": q.role,

@@ -290,7 +290,7 @@ def _unknown(record: RunRecord, q: QuantityRecord) -> UnknownRow:
         n=str(q.replicates),
         mean_response=significant(q.mean_response),
         dilution=f"× {number(q.dilution)}",
-        result=NO_RESULT if void else quantity_text(q, verdict.lowest, verdict.highest),
+        result=NO_RESULT if void else quantity_text(q, record.lowest_reported, verdict.highest),
         expanded=expanded,
         k=f"{q.k:.2f}" if expanded != MISSING and q.k is not None else MISSING,
         interval=MISSING if void else interval_text(q),

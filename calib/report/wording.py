@@ -17,6 +17,7 @@ MISSING = "–"
 NO_RESULT = "no result"
 # Replicates that contradict each other make the interval untrue: the value is printed alone.
 SPREAD = "replicate-spread"
+LOW = "below-reporting-limit"
 UNCERTAINTY_DIGITS = 2
 LIMIT_DIGITS = 3
 LEVEL_DIGITS = 6
@@ -137,7 +138,7 @@ def result_text(q: QuantityRecord, lowest: float | None, highest: float | None) 
     ----------
     q : QuantityRecord
     lowest, highest : float or None
-        Calibrated range in force, before dilution, in the unit of the quantity.
+        Lowest concentration reported and highest standard in force, before dilution, in the unit of the quantity.
 
     Returns
     -------
@@ -182,7 +183,7 @@ def quantity_text(q: QuantityRecord, lowest: float | None, highest: float | None
     if q.position == "above":
         return _above(q, highest, "{} (highest standard): dilute")
     if q.position == "below":
-        return _below(q, lowest, "{} (lowest standard)")
+        return _below(q, lowest, "{} (reporting limit)" if LOW in q.flags else "{} (lowest standard)")
     if q.concentration is None:
         return NO_RESULT
     if q.state in ("ok", "asymmetric"):
