@@ -38,6 +38,7 @@ from calib.acceptance.shape_criteria import (
     TopOfRange,
     TopSlope,
     VarianceHomogeneity,
+    VarianceOfOneLevel,
 )
 from calib.acceptance.standard_criteria import (
     HIGHEST,
@@ -72,6 +73,7 @@ CRITERIA: Mapping[str, type[LimitedCriterion]] = MappingProxyType(
             LackOfFit,
             MandelLinearity,
             VarianceHomogeneity,
+            VarianceOfOneLevel,
             TopSlope,
             TopOfRange,
             SaturatedStandards,

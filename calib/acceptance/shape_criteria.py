@@ -164,6 +164,52 @@ class VarianceHomogeneity(LimitedCriterion):
         )
 
 
+class VarianceOfOneLevel(LimitedCriterion):
+    """p-value of Cochran's test: does one level scatter far more than the others.
+
+    C is the largest variance of replicates over the sum of them all, for levels of equally many readings,
+    each divided by what the noise model expects there.
+
+    Source: ISO 5725-2:1994, 7.3.3 and Table 4 (from memory).
+    """
+
+    key: ClassVar[str] = "variance_of_one_level"
+    quantity: ClassVar[Quantity] = Quantity.SHARE
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Compare the p-value with the limit; levels without as many replicates have nothing to judge."""
+        what = f"p-value of Cochran's test for one scattering level at least {self.limit.value:g}"
+        levels = by_level(evidence.fitted)
+        sizes = {len(group) for group in levels}
+        if len(levels) < 2 or len(sizes) != 1 or min(sizes) < 2:
+            return self._result(what, None, True, "levels without equally many replicates")
+        variances = [_variance(group)[0] for group in levels]
+        total, largest = math.fsum(variances), max(variances)
+        if not total:
+            return self._result(what, 1.0, True, "no scatter at any level")
+        k, nu = len(levels), min(sizes) - 1
+        p_value = cochran_p(largest / total, k, nu)
+        level = levels[variances.index(largest)][0].level
+        return self._result(
+            what,
+            p_value,
+            at_least(p_value, self.limit.value),
+            f"p = {p_value:.3g} (C = {largest / total:.4g} at {amount(level, evidence.concentration_unit)})",
+            "look for the replicate that stands off at that level, and for its cause",
+        )
+
+
+def cochran_p(share: float, groups: int, nu: int) -> float:
+    """Probability, at most 1, of so large a share of the largest of so many variances of ``nu`` degrees of freedom.
+
+    C = 1 / (1 + (k - 1)/F) with F at 1 - p/k, so that p = k times the upper tail of F(nu, (k - 1) nu).
+    """
+    if share >= 1:
+        return 0.0
+    f = (groups - 1) * share / (1 - share)
+    return min(1.0, groups * float(fdtrc(nu, (groups - 1) * nu, f)))
+
+
 class TopSlope(LimitedCriterion):
     """Slope of a quadratic at its highest standard, as a share of that at the lowest.
 
