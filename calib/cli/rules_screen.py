@@ -10,6 +10,7 @@ from calib.cli.screen import say
 from calib.report.run_rows import excluded_readings, rule_rows
 
 if TYPE_CHECKING:
+    from calib.bench.control_history import ControlHistory
     from calib.bench.records import RunRecord
     from calib.report.run_rows import RuleRow
 
@@ -34,6 +35,23 @@ def show_rules(record: RunRecord) -> None:
             say(f"  · {line}")
     if record.curves_before:
         say(f"  earlier curves of this run are kept: {record.curves_before}")
+
+
+def show_control_history(history: ControlHistory) -> None:
+    """What the multirule makes of the controls and checks, beside the verdict and no part of it."""
+    if not history.baseline:
+        return
+    judged = [f"{material} ({runs} runs)" for material, runs in history.baseline.items() if runs]
+    few = [material for material, runs in history.baseline.items() if not runs]
+    say("Controls and checks over the runs (multirule; no part of the verdict)", "bold")
+    for line in history.lines:
+        say(f"  ! {line}")
+    if judged and not history.lines:
+        say("  ✓ no rule fired")
+    if judged:
+        say(f"  mean and standard deviation from the first runs of {', '.join(judged)}")
+    if few:
+        say(f"  too few runs to judge: {', '.join(few)}")
 
 
 def _group(title: str, rows: Iterable[RuleRow], sign: str) -> None:

@@ -11,8 +11,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from calib.acceptance import CriterionResult
+from calib.bench.statements import statement_of
 
 if TYPE_CHECKING:
+    from calib.bench.control_history import ControlHistory
     from calib.bench.log_run import EvaluatedPlan
     from calib.bench.records import (
         BlankRecord,
@@ -50,7 +52,11 @@ def run_json(record: RunRecord) -> dict[str, Any]:
         "blanks": [_blank(b) for b in evaluation.blanks],
         "verdict": _verdict(evaluation, record.definition.concentration_unit),
         "checks": [_check(q) for q in evaluation.quantities if q.role in ("check", "first-check")],
-        "quantities": [quantity_json(q) for q in evaluation.quantities if q.role in ("unknown", "control")],
+        "quantities": [
+            quantity_json(q) | {"statement": plain(statement_of(record.definition, evaluation.verdict, q))}
+            for q in evaluation.quantities
+            if q.role in ("unknown", "control")
+        ],
         "amendments": [plain(a) for a in record.amendments],
         "dependent_runs": list(record.dependents),
         "earlier_curves": record.curves_before,
@@ -187,8 +193,8 @@ def _outcome(outcome: Outcome, unit: str) -> dict[str, Any]:
     }
 
 
-def rules_json(record: RunRecord) -> dict[str, Any]:
-    """What `calib rules --json` prints: the verdict with every rule, and what was left out of the fit."""
+def rules_json(record: RunRecord, history: ControlHistory) -> dict[str, Any]:
+    """What `calib rules --json` prints: the verdict with every rule, what was left out, and the multirule."""
     verdict = record.evaluation.verdict
     return {
         "schema": RULES,
@@ -205,6 +211,10 @@ def rules_json(record: RunRecord) -> dict[str, Any]:
             if s.excluded
         ],
         "earlier_curves": record.curves_before,
+        "multirule": {
+            "signals": [plain(signal) for signal in history.signals],
+            "baseline_runs": dict(history.baseline),
+        },
     }
 
 

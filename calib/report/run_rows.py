@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 from calib.acceptance.limits import within
 from calib.acceptance.wording import signed_percent
 from calib.bench.flags import in_words
+from calib.bench.statements import statement_of
 from calib.report.standard_limits import relative_error_limit
 from calib.report.wording import (
     LEVEL_DIGITS,
@@ -295,9 +296,15 @@ def _unknown(record: RunRecord, q: QuantityRecord) -> UnknownRow:
         k=f"{q.k:.2f}" if expanded != MISSING and q.k is not None else MISSING,
         interval=MISSING if void else interval_text(q),
         kind=q.kind if q.concentration is not None and not void else "",
-        remarks="the run is void: no result" if void else remarks(q),
+        remarks="the run is void: no result" if void else _remarks_and_statement(record, q),
         marked=void or q.concentration is None or bool(q.flags),
     )
+
+
+def _remarks_and_statement(record: RunRecord, q: QuantityRecord) -> str:
+    statement = statement_of(record.definition, record.evaluation.verdict, q)
+    said = "" if statement is None else f"{statement.outcome}: {statement.rule}"
+    return "; ".join(part for part in (said, remarks(q)) if part)
 
 
 def one_kind(record: RunRecord) -> str:

@@ -32,5 +32,15 @@ def test_the_rules_as_json(worked):
     assert all(r["remedy"] for r in failed.values())
 
 
+def test_the_multirule_stands_beside_the_verdict(worked):
+    out = worked("rules", "1").out
+    assert "Controls and checks over the runs (multirule; no part of the verdict)" in out
+    assert "too few runs to judge: check 5" in out
+    assert worked("rules", "1", "--json").json["multirule"] == {
+        "signals": [],
+        "baseline_runs": {"check 5": 0},
+    }
+
+
 def test_an_unknown_run_is_refused(worked):
     assert "there is no run 99" in worked.refused("rules", "99")
