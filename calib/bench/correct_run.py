@@ -13,6 +13,7 @@ from calib import store as tables
 from calib.bench.evaluate import evaluate
 from calib.bench.find import current_curve, facts_of, instrument_named, lot_named, run_numbered, void_of
 from calib.bench.find_readings import find_readings
+from calib.bench.formed_results import CurveRun, curve_run
 from calib.bench.keeping import add_evaluation, add_quantities, current_readings, exclusions_in_force
 from calib.bench.quantify import QUANTIFIED_ROLES, dependent_runs
 from calib.bench.quantities import quantities_of
@@ -245,9 +246,16 @@ def _requantify(session: Session, number: int) -> None:
         verdict.lowest,
         verdict.highest,
         flag,
-        verdict.carried_over and record.curve_run == number,
+        _curve_run(session, record),
     )
     add_quantities(session, number, record.curve_id or 0, found)
+
+
+def _curve_run(session: Session, record: RunRecord) -> CurveRun:
+    """What the run whose curve is used says about the samples, its own or another."""
+    if record.curve_run == record.heading.id:
+        return curve_run(record.readings, record.evaluation.verdict.carried_over)
+    return curve_run(load_run(session, record.curve_run or 0, (0, "")).readings)
 
 
 def _amend_facts(session: Session, number: int, change: Change, reason: str, by: str, now: datetime) -> None:

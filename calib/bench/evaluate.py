@@ -10,6 +10,7 @@ import numpy as np
 from calib.acceptance import Evidence, criteria_from, judge
 from calib.bench.evidence import evidence_of, read_back
 from calib.bench.exclude_failing import evaluate_with_exclusions
+from calib.bench.formed_results import curve_run
 from calib.bench.method_definition import HISTORY, MethodDefinition
 from calib.bench.quantities import quantities_of
 from calib.bench.records import (
@@ -114,7 +115,7 @@ def assemble(
         others,
         verdict.lowest,
         verdict.highest,
-        carried_over=verdict.carried_over,
+        of_curve=curve_run(readings, verdict.carried_over),
     )
     used = history if isinstance(curve.noise, HistoryNoise) else None
     return Evaluation(curve, standards, blanks, verdict, quantities, history=used), evidence

@@ -19,6 +19,7 @@ FLAGS: dict[str, str] = {
     "not-bracketed": "not between two passing check standards: measure again",
     "high-bias-kept": "a check around it read too high; kept, as nothing was found",
     "carry-over-risk": "measured right after a sample above the range, with carry-over: measure again",
+    "internal-standard": "internal standard outside its limits: dilute or measure again",
     "curve-rejected": "the curve was rejected: no result",
     "curve-superseded": "the curve was superseded and its successor rejected: no result",
 }

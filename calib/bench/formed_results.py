@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from calib.acceptance.bracketing import Bracket, Injection, brackets
-from calib.acceptance.limits import within
+from calib.acceptance.limits import at_least, at_most, within
 from calib.bench.evidence import read_back
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured, QuantityRecord
@@ -19,13 +19,37 @@ CHECKS = {"check": "check_recovery", "first-check": "first_check_recovery"}
 SampleKey = tuple[str, str, float, float]  # role, sample, dilution, nominal concentration
 
 
+@dataclass(frozen=True, slots=True)
+class CurveRun:
+    """What the run of a curve says about the samples read on it.
+
+    Attributes
+    ----------
+    carried_over : bool
+        Its carry-over blank did not keep its limit, and the samples are of the same run.
+    internal_standard : float or None
+        Mean response of the internal standard in its standards.
+    """
+
+    carried_over: bool = False
+    internal_standard: float | None = None
+
+
+def curve_run(readings: Sequence[Measured], carried_over: bool = False) -> CurveRun:
+    """What the readings of the curve's own run say about the samples read on it."""
+    found = [
+        r.internal_standard for r in readings if r.role == "standard" and r.internal_standard is not None
+    ]
+    return CurveRun(carried_over, float(np.mean(found)) if found else None)
+
+
 def formed(
     definition: MethodDefinition,
     curve: Curve,
     readings: Sequence[Measured],
     quantities: Sequence[QuantityRecord],
     highest: float | None,
-    carried_over: bool = False,
+    of_curve: CurveRun,
 ) -> tuple[QuantityRecord, ...]:
     """Quantities with what the method's rules on results, checks and carry-over make of them.
 
@@ -39,16 +63,18 @@ def formed(
     quantities : sequence of QuantityRecord
     highest : float or None
         Highest standard in force.
-    carried_over : bool
-        The carry-over blank of the run did not keep its limit.
+    of_curve : CurveRun
+        What the run of the curve says about its samples.
     """
     by_sample: dict[SampleKey, list[Measured]] = {}
     for reading in readings:
         by_sample.setdefault(_key_of_reading(reading), []).append(reading)
     around = _brackets(definition, curve, readings) if definition.checks.bracket else {}
-    risky = _after_a_high_one(curve, readings, highest) if carried_over else frozenset()
+    risky = _after_a_high_one(curve, readings, highest) if of_curve.carried_over else frozenset()
     return tuple(
-        _formed(definition, q, by_sample.get(_key(q), []), around, risky) if q.role == "unknown" else q
+        _formed(definition, q, by_sample.get(_key(q), []), around, risky, of_curve.internal_standard)
+        if q.role == "unknown"
+        else q
         for q in quantities
     )
 
@@ -75,6 +101,7 @@ def _formed(
     readings: Sequence[Measured],
     around: Mapping[int, Bracket],
     risky: frozenset[int],
+    internal_standard: float | None,
 ) -> QuantityRecord:
     flags = list(q.flags)
     rules = definition.results
@@ -88,6 +115,10 @@ def _formed(
         flags.append(_bracket_flag(definition, q, open_brackets))
     if any(r.key in risky for r in readings):
         flags.append("carry-over-risk")
+    if rules.internal_standard and not _internal_standard_kept(
+        readings, rules.internal_standard, internal_standard
+    ):
+        flags.append("internal-standard")
     return replace(q, flags=tuple(flags))
 
 
@@ -97,6 +128,21 @@ def _censored(q: QuantityRecord, limit: float | None, flags: list[str]) -> Quant
         return q
     flags.append("below-reporting-limit")
     return replace(q, concentration=None, estimate=q.concentration, position="below")
+
+
+def _internal_standard_kept(
+    readings: Sequence[Measured], limits: tuple[float, float], mean: float | None
+) -> bool:
+    """Whether the internal standard of every reading keeps its limits; a reading without one does not."""
+    low, high = limits
+    return all(
+        mean is not None
+        and r.internal_standard is not None
+        and at_least(r.internal_standard / mean, low)
+        and at_most(r.internal_standard / mean, high)
+        for r in readings
+        if r.response is not None
+    )
 
 
 def _cv(readings: Sequence[Measured]) -> float:

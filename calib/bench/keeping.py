@@ -168,6 +168,7 @@ def _measured(
             for word, value in (("sheet", row.sheet), ("row", row.row), ("column", row.column))
             if value is not None
         ),
+        internal_standard=row.internal_standard,
     )
 
 

@@ -229,6 +229,7 @@ def add_readings(session: Session, run_id: int, run: PlannedRun) -> Mapping[int,
             sheet=reading.place.sheet,
             row=reading.place.row,
             column=reading.place.column,
+            internal_standard=reading.internal_standard,
         )
         for ordinal, reading in enumerate(run.parsed.readings, start=1)
     ]

@@ -324,6 +324,7 @@ def _measured(ordinal: int, reading: ParsedReading, factor: float, instrument: t
         excluded=None,
         saturated=is_saturated(reading.response, reading.absent_cause, instrument.response_ceiling),
         place=str(reading.place),
+        internal_standard=reading.internal_standard,
     )
 
 

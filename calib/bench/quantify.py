@@ -10,6 +10,7 @@ from sqlalchemy.orm import Session
 from calib import store as tables
 from calib.bench.curve_life import refuse_unchecked
 from calib.bench.find import current_curve, run_numbered
+from calib.bench.formed_results import curve_run
 from calib.bench.keeping import add_first_quantities
 from calib.bench.log_run import add_original, add_readings, add_run
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
@@ -59,6 +60,7 @@ def quantify_on(source: RunRecord, run: PlannedRun) -> tuple[QuantityRecord, ...
         [m for m in run.measured if m.role in QUANTIFIED_ROLES],
         verdict.lowest,
         verdict.highest,
+        of_curve=curve_run(source.readings),
     )
 
 

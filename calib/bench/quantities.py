@@ -7,12 +7,14 @@ from itertools import groupby
 
 import numpy as np
 
-from calib.bench.formed_results import formed
+from calib.bench.formed_results import CurveRun, formed
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured, QuantityRecord
 from calib.curves.curve import Curve
 from calib.quantification.inverse import Quantity, invert
 from calib.quantification.replicates import replicates_disagree
+
+NOTHING_KNOWN = CurveRun()
 
 
 def quantities_of(
@@ -23,7 +25,7 @@ def quantities_of(
     lowest: float | None,
     highest: float | None,
     unusable_flag: str = "curve-rejected",
-    carried_over: bool = False,
+    of_curve: CurveRun = NOTHING_KNOWN,
 ) -> tuple[QuantityRecord, ...]:
     """Quantify samples: responses of one sample and dilution are averaged, then inverted.
 
@@ -41,8 +43,8 @@ def quantities_of(
         Calibrated range in force.
     unusable_flag : str
         Flag of a quantity without a concentration when the curve is not usable.
-    carried_over : bool
-        The carry-over blank of the run did not keep its limit.
+    of_curve : CurveRun
+        What the run of the curve says about its samples.
     """
     groups = [tuple(g) for g in _groups(readings)]
     present = [g for g in groups if any(r.response is not None for r in g)]
@@ -70,7 +72,7 @@ def quantities_of(
         )
         for g in groups
     )
-    return formed(definition, curve, readings, found_of_groups, highest, carried_over)
+    return formed(definition, curve, readings, found_of_groups, highest, of_curve)
 
 
 def _groups(readings: Sequence[Measured]) -> Iterable[Iterable[Measured]]:

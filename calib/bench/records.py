@@ -31,6 +31,7 @@ class Measured:
     excluded: str | None
     saturated: bool
     place: str = ""
+    internal_standard: float | None = None
 
     @property
     def where(self) -> str:

@@ -13,6 +13,7 @@ from calib import store as tables
 from calib.bench.evaluate_many import evaluate_many
 from calib.bench.evidence import finite
 from calib.bench.find import instrument_named, method_named, run_numbered
+from calib.bench.formed_results import curve_run
 from calib.bench.keeping import definition_of
 from calib.bench.method_definition import HISTORY, MethodDefinition, read_definition
 from calib.bench.noise_history import history_before
@@ -260,9 +261,7 @@ def _replay_batch(
         version, old = archive.definitions[run.method_id]
         curve, verdict = before[run.source]
         source = archive.runs[run.source]
-        outcome, quantities = _outcome(
-            run, source, old, target.definition, after[run.source], measured[run.id]
-        )
+        outcome, quantities = _outcome(run, source, old, target.definition, after[run.source], measured)
         fresh = _reported(quantities)
         replayed.append(
             ReplayedRun(
@@ -299,7 +298,7 @@ def _outcome(
     old: MethodDefinition,
     new: MethodDefinition,
     evaluation: Evaluation | None,
-    measured: Sequence[Measured],
+    measured: Mapping[int, Sequence[Measured]],
 ) -> tuple[Outcome, Sequence[QuantityRecord]]:
     """Verdict and quantities of a run under the new definition."""
     if evaluation is None:
@@ -316,9 +315,15 @@ def _outcome(
         )
         return Outcome("expired", (reason,), outcome.calibrated, outcome.working), ()
     verdict = evaluation.verdict
-    others = [m for m in measured if m.role in QUANTIFIED_ROLES]
+    others = [m for m in measured[run.id] if m.role in QUANTIFIED_ROLES]
     return outcome, quantities_of(
-        new, evaluation.curve, verdict.accepted, others, verdict.lowest, verdict.highest
+        new,
+        evaluation.curve,
+        verdict.accepted,
+        others,
+        verdict.lowest,
+        verdict.highest,
+        of_curve=curve_run(measured[source.id]),
     )
 
 

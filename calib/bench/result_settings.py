@@ -19,6 +19,7 @@ RESULT_KEYS = (
     "replicate_cv",
     "dilution_agreement",
     "which_dilution",
+    "internal_standard",
 )
 CHECK_KEYS = ("bracket", "every", "keep_high_bias_non_detects")
 SPECIFICATION_KEYS = ("lower", "upper", "decision_rule", "guard_band")
@@ -40,6 +41,8 @@ class ResultRules:
         Largest relative spread of one sample over its dilutions, a fraction.
     which_dilution : str
         Which of several agreeing dilutions counts: 'least diluted' or 'mean'.
+    internal_standard : tuple of float, or None
+        Least and largest response of the internal standard in a sample, as a share of its mean in the standards.
     """
 
     reporting_limit: float | None = None
@@ -47,6 +50,7 @@ class ResultRules:
     replicate_cv: float | None = None
     dilution_agreement: float | None = None
     which_dilution: str = LEAST_DILUTED
+    internal_standard: tuple[float, float] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,6 +94,7 @@ def result_rules(table: object, unit: str) -> ResultRules:
         replicate_cv=_fraction(found, "replicate_cv"),
         dilution_agreement=_fraction(found, "dilution_agreement"),
         which_dilution=which,
+        internal_standard=_span(found.get("internal_standard")),
     )
 
 
@@ -192,6 +197,19 @@ def _fraction(table: Mapping[str, Any], key: str) -> float | None:
             f'results.{key} = {value!r} must be a fraction above 0, such as 0.2 or "20 %"', f"results.{key}"
         )
     return float(ratio)
+
+
+def _span(value: object) -> tuple[float, float] | None:
+    if value is None:
+        return None
+    ends = [ratio_of(v) if isinstance(v, str) else v for v in value] if isinstance(value, list) else []
+    numbers = [float(v) for v in ends if isinstance(v, int | float) and not isinstance(v, bool)]
+    if len(ends) != 2 or len(numbers) != 2 or not 0 < numbers[0] < numbers[1] < math.inf:
+        raise MethodError(
+            f'results.internal_standard = {value!r} must be the least and largest share, such as ["60 %", "125 %"]',
+            "results.internal_standard",
+        )
+    return numbers[0], numbers[1]
 
 
 def _switch(table: Mapping[str, Any], name: str, key: str) -> bool:

@@ -39,6 +39,7 @@ RERUN_FLAGS = (
     "replicate-cv",
     "replicate-spread",
     "carry-over-risk",
+    "internal-standard",
     "curve-rejected",
     "curve-superseded",
     "no-value",

@@ -47,7 +47,10 @@ class Place:
 
 @dataclass(frozen=True, slots=True)
 class ParsedReading:
-    """One recorded value; `response` is None exactly when `absent_cause` says why."""
+    """One recorded value; `response` is None exactly when `absent_cause` says why.
+
+    `internal_standard` is the response of the internal standard in the same reading, where there is one.
+    """
 
     sample: str
     role: Role
@@ -60,6 +63,7 @@ class ParsedReading:
     position: str | None
     at: datetime | None
     place: Place
+    internal_standard: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -123,7 +127,9 @@ def content_fingerprint(run: ParsedRun) -> str:
 
 
 def _reading_facts(reading: ParsedReading) -> dict[str, object]:
-    return {
+    # Left out where there is none, so that fingerprints of files without one stay what they were.
+    internal = {} if reading.internal_standard is None else {"internal_standard": reading.internal_standard}
+    return internal | {
         "sample": reading.sample,
         "role": reading.role.value,
         "concentration": _plain(reading.concentration),

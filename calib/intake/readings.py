@@ -27,7 +27,7 @@ from calib.intake.understood import count, number_style
 P = ParamSpec("P")
 T = TypeVar("T")
 
-_NUMBER_FIELDS = ("concentration", "response", "dilution", "replicate")
+_NUMBER_FIELDS = ("concentration", "response", "dilution", "replicate", "internal_standard")
 
 
 @dataclass(frozen=True, slots=True)
@@ -152,6 +152,9 @@ class _Table:
         replicate = self.attempt(row, "replicate", parse_replicate, self.cell(row, "replicate"), self.sign)
         dilution = self.attempt(row, "dilution", parse_dilution, self.cell(row, "dilution"), self.sign)
         at = self.attempt(row, "time", parse_moment_or_none, self.cell(row, "time"))
+        internal = self.attempt(
+            row, "internal_standard", parse_response, self.cell(row, "internal_standard"), self.sign
+        )
         if role is None or response is None or dilution is None or len(self.problems.found) > found:
             return None
         self.attempt(row, "concentration", check_level, role, level)
@@ -168,6 +171,7 @@ class _Table:
             position=self.text(row, "position"),
             at=at,
             place=self.place(row, "response"),
+            internal_standard=None if internal is None else internal.value,
         )
 
     def earliest(self, readings: list[ParsedReading]) -> datetime | None:

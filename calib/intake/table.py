@@ -30,6 +30,7 @@ _FIELD_OF_HEADING = {
     "lot": "lot",
     "standard lot": "lot",
     "operator": "operator",
+    "internal standard": "internal_standard",
 }
 _EXAMPLES = {"concentration": "concentration [ug/L]", "response": "response [1] (1 for a bare ratio)"}
 _WITH_UNIT = re.compile(r"(?P<name>.*?) ?(?:\[(?P<square>[^\[\]]*)\]|\((?P<round>[^()]*)\))")

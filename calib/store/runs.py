@@ -86,7 +86,10 @@ class RunVoid(Base):
 
 
 class Reading(Base):
-    """One recorded response, or the cause of its absence; the text is as in the file."""
+    """One recorded response, or the cause of its absence; the text is as in the file.
+
+    ``internal_standard`` is the response of the internal standard in the same reading.
+    """
 
     __tablename__ = "reading"
     __table_args__ = evidence(
@@ -112,6 +115,7 @@ class Reading(Base):
     sheet: Mapped[str | None]
     row: Mapped[int | None]
     column: Mapped[str | None]
+    internal_standard: Mapped[float | None]
     supersedes: Mapped[int | None] = superseded_row("reading")
 
 
