@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from calib.errors import CalibError
     from calib.models import RESPONSE_MODELS, custom_model
     from calib.quantification.budget import Component
+    from calib.quantification.detection import blank_limits, line_limits, method_detection_limit
     from calib.quantification.influence import Influence, influence
     from calib.quantification.inverse import Quantity
     from calib.quantification.range import precision_profile, working_range
@@ -39,11 +40,14 @@ _HOME = {
     "Quantity": "calib.quantification.inverse",
     "RESPONSE_MODELS": "calib.models",
     "assumed_noise": "calib.curves.noise",
+    "blank_limits": "calib.quantification.detection",
     "bootstrap": "calib.curves.bootstrap",
     "custom_model": "calib.models",
     "fit": "calib.curves.fit",
     "fit_stack": "calib.curves.stack",
     "influence": "calib.quantification.influence",
+    "line_limits": "calib.quantification.detection",
+    "method_detection_limit": "calib.quantification.detection",
     "Laboratory": "calib.bench.laboratory",
     "open_store": "calib.bench.laboratory",
     "pool_noise": "calib.curves.pooling",
@@ -65,11 +69,14 @@ __all__ = [
     "NoiseModel",
     "Quantity",
     "assumed_noise",
+    "blank_limits",
     "bootstrap",
     "custom_model",
     "fit",
     "fit_stack",
     "influence",
+    "line_limits",
+    "method_detection_limit",
     "open_store",
     "pool_noise",
     "precision_profile",

@@ -78,7 +78,7 @@ def show(ctx: click.Context, name: str, version: int | None, as_json: bool) -> N
         echo_json({"schema": SCHEMA, "methods": [method_json(record)]})
         return
     from calib.cli.screen import print_table, say
-    from calib.report.limit_wording import limit_text
+    from calib.report.limit_wording import limit_text, settings_in_words
     from calib.report.wording import number
 
     definition = record.definition
@@ -90,6 +90,8 @@ def show(ctx: click.Context, name: str, version: int | None, as_json: bool) -> N
         f"  model {definition.model}, preset {definition.preset}, "
         f"a curve is valid for {number(definition.valid_hours)} h"
     )
+    for line in settings_in_words(definition):
+        say(f"  {line}")
     print_table(
         ("Limit", ">Value", "Source", "Checked"),
         [

@@ -109,6 +109,11 @@ def method_json(record: MethodRecord) -> dict[str, Any]:
         "model": definition.model,
         "preset": definition.preset,
         "limits": {k: plain(v) for k, v in definition.limits.items()},
+        "exclusion": plain(definition.exclusion),
+        "results": plain(definition.results),
+        "checks": plain(definition.checks),
+        "specification": plain(definition.specification),
+        "needs_check_after": list(definition.needs_check_after),
         "text": record.text,
     }
 
