@@ -20,6 +20,7 @@ if TYPE_CHECKING:
     from calib.errors import CalibError
     from calib.models import RESPONSE_MODELS, custom_model
     from calib.quantification.budget import Component
+    from calib.quantification.curve_limits import CurveLimits, curve_limits
     from calib.quantification.detection import blank_limits, line_limits, method_detection_limit
     from calib.quantification.influence import Influence, influence
     from calib.quantification.inverse import Quantity
@@ -33,6 +34,7 @@ _HOME = {
     "CalibError": "calib.errors",
     "Component": "calib.quantification.budget",
     "Curve": "calib.curves.curve",
+    "CurveLimits": "calib.quantification.curve_limits",
     "CurveStack": "calib.curves.stack",
     "Finding": "calib.curves.diagnostics",
     "Influence": "calib.quantification.influence",
@@ -43,6 +45,7 @@ _HOME = {
     "blank_limits": "calib.quantification.detection",
     "bootstrap": "calib.curves.bootstrap",
     "custom_model": "calib.models",
+    "curve_limits": "calib.quantification.curve_limits",
     "fit": "calib.curves.fit",
     "fit_stack": "calib.curves.stack",
     "influence": "calib.quantification.influence",
@@ -62,6 +65,7 @@ __all__ = [
     "CalibError",
     "Component",
     "Curve",
+    "CurveLimits",
     "CurveStack",
     "Finding",
     "Influence",
@@ -71,6 +75,7 @@ __all__ = [
     "assumed_noise",
     "blank_limits",
     "bootstrap",
+    "curve_limits",
     "custom_model",
     "fit",
     "fit_stack",
