@@ -21,7 +21,7 @@ def show_list(records: Sequence[SampleRecord]) -> None:
         say("no samples")
         return
     counts = Counter(record.state for record in records)
-    say("; ".join(f"{counts[state]} {IN_WORDS[state]}" for state in STATES if counts[state]), "bold")
+    say("; ".join(f"{IN_WORDS[state]}: {counts[state]}" for state in STATES if counts[state]), "bold")
     print_table(
         ("Sample", "Method", "Measured", "State", "Result", "Why"),
         [
