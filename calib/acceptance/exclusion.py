@@ -112,6 +112,8 @@ def exclude_failing(fit: Fit, limits: Mapping[str, Limit], rule: ExclusionRule) 
     steps: list[ExclusionStep] = []
     evidence = fit(frozenset())
     while True:
+        if not evidence.converged:
+            return ExclusionOutcome(tuple(steps), "the fit did not converge, so no standard can be judged")
         worst = _most_deviant(evidence, limits)
         if worst is None:
             return ExclusionOutcome(tuple(steps), "all remaining standards pass")

@@ -122,6 +122,12 @@ def test_an_exclusion_by_a_person_before_the_fit_counts_in_the_original_number()
     assert outcome.stopped == "6 of the original 8 standards must remain"
 
 
+def test_nothing_is_left_out_of_a_fit_that_did_not_converge():
+    lost = evidence([standard(x, float("nan"), key=x) for x in range(1, 11)], converged=False)
+    outcome = exclude_failing(lambda excluded: lost, LIMITS, RULE)
+    assert (outcome.steps, outcome.stopped) == ((), "the fit did not converge, so no standard can be judged")
+
+
 def test_the_method_may_allow_fewer_steps():
     x = np.arange(1.0, 13.0)
     y = 2 * x
