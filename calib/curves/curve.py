@@ -135,8 +135,8 @@ class Curve:
 
     def fit_variance(self, x: ArrayLike) -> Array:
         """Variance of the curve itself at ``x``: J cov J'."""
-        j = self.response_model.gradient(np.asarray(x, dtype=np.float64), self.values)
-        return np.asarray(np.einsum("...i,ij,...j->...", j, self.covariance, j))
+        derivatives = self.response_model.derivatives(np.asarray(x, dtype=np.float64), self.values)
+        return _quadratic_form(derivatives, self.covariance)
 
     def reading_variance(self, x: ArrayLike) -> Array:
         """Variance of a single reading at ``x``: scale² · G."""
@@ -191,3 +191,14 @@ class Curve:
             components=components,
             seed=seed,
         )
+
+
+def _quadratic_form(derivatives: Sequence[Array], covariance: Array) -> Array:
+    """Sum of derivatives[i]·covariance[i, j]·derivatives[j] over all i and j."""
+    total: Array | float = 0.0
+    for i, one in enumerate(derivatives):
+        row = covariance[i, i] * one
+        for j in range(i + 1, len(derivatives)):
+            row = row + 2.0 * covariance[i, j] * derivatives[j]
+        total = total + row * one
+    return np.asarray(total)

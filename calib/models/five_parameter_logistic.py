@@ -79,11 +79,9 @@ class FiveParameterLogistic(ResponseModel):
 
     def slope(self, x: ArrayLike, p: Parameters) -> Array:
         """Derivative in the concentration; infinite at x = 0 when slope < 1."""
-        zero, infinite, _, slope, asymmetry = p
-        x = as_array(x)
-        _, rest, log_f = self._steps(np.where(x > 0, x, 1e-300), p)
-        fall = (infinite - zero) * asymmetry * np.exp(asymmetry * log_f) * rest * slope
-        return as_array(fall / np.where(x > 0, x, 1e-300))
+        above = np.where(as_array(x) > 0, x, 1e-300)
+        # A function of x/midpoint alone: what one gains the other loses.
+        return as_array(self.derivatives(above, p)[2] * (-p[2] / above))
 
     def inverse(self, y: ArrayLike, p: Parameters) -> Array:
         """Exact inverse; nan on or beyond either plateau."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike
+from scipy.special import expit
 
 from calib.models.five_parameter_logistic import FiveParameterLogistic, _lattice, _logit_start, _midpoints
 from calib.models.response_model import Array, Parameter, Parameters, as_array
@@ -27,7 +28,7 @@ class FourParameterLogistic(FiveParameterLogistic):
     def response(self, x: ArrayLike, p: Parameters) -> Array:
         """Response at concentrations ``x`` >= 0; exactly ``zero`` at x = 0."""
         zero, infinite = p[0], p[1]
-        return as_array(zero + (infinite - zero) * self._steps(x, p)[1])
+        return as_array(zero + (infinite - zero) * expit(self._distance(x, p)[1]))
 
     def derivatives(self, x: ArrayLike, p: Parameters) -> tuple[Array, ...]:
         """Derivatives in zero, infinite, midpoint and slope."""
@@ -39,10 +40,6 @@ class FourParameterLogistic(FiveParameterLogistic):
         rest = power * share
         fall = (zero - infinite) * share * rest
         return share, rest, fall * (slope / midpoint), -fall * distance
-
-    def slope(self, x: ArrayLike, p: Parameters) -> Array:
-        """Derivative in the concentration; infinite at x = 0 when slope < 1."""
-        return super().slope(x, (*p, 1.0))
 
     def inverse(self, y: ArrayLike, p: Parameters) -> Array:
         """Exact inverse; nan on or beyond either plateau."""

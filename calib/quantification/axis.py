@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from calib.curves.curve import Curve
 from calib.models import CustomModel
+from calib.quantification.roots import bracketed_roots
 
 Array = NDArray[np.float64]
 
@@ -16,6 +17,7 @@ Array = NDArray[np.float64]
 # ten spans on the plain one.
 REACH = 10.0
 LOG_STEP = 0.1
+PLACES = ("inside", "above", "below")
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,26 +65,29 @@ class Axis:
         with np.errstate(divide="ignore", invalid="ignore"):
             return np.asarray(np.log(x))
 
-    def steps(self, t: Array, direction: int) -> Array:
-        """Grid (m, steps) from each t outwards to the end of the axis.
+    def steps(self) -> Array:
+        """Positions (s,) from one end of the axis to the other at which the band is looked at.
 
-        Steps are 0.1 in ln x; on the plain axis a fiftieth of the span of the
-        standards, growing once outside.
+        Steps are 0.1 in ln x; on the plain axis a fiftieth of the span of the standards, growing
+        outside twice that span.
         """
         if self.logarithmic:
-            offsets = np.arange(0.0, self.high - self.low + LOG_STEP, LOG_STEP)
-        else:
-            span = self.curve.standards.highest - float(self.curve.standards.concentration.min())
-            near = np.linspace(0.0, 2.0, 101)
-            far = np.geomspace(2.0, 2.0 * REACH + 2.0, 101)[1:]
-            offsets = np.concatenate([near, far]) * (span if span > 0 else 1.0)
-        return np.clip(t[:, None] + direction * offsets, self.low, self.high)
+            count = int(np.ceil((self.high - self.low) / LOG_STEP)) + 1
+            return np.linspace(self.low, self.high, count)
+        first = float(self.curve.standards.concentration.min())
+        last = self.curve.standards.highest
+        span = last - first if last > first else 1.0
+        outwards = span * np.geomspace(2.0, REACH, 70)
+        near = np.linspace(first - 2.0 * span, last + 2.0 * span, 251)
+        at = np.concatenate([first - outwards[:0:-1], near, last + outwards[1:]])
+        inside = at[(at > self.low) & (at < self.high)]
+        return np.concatenate([[self.low], inside, [self.high]])
 
     def inverse(self, y: Array) -> Array:
         """Concentration of each response on the branch of the standards; nan where none."""
         model = self.curve.response_model
         if isinstance(model, CustomModel):
-            return np.array([self._root(float(v)) for v in y])
+            return self._roots(y)
         x = model.inverse(y, self.curve.values)
         return x if self.logarithmic else self._on_branch(x)
 
@@ -95,30 +100,34 @@ class Axis:
                 x = np.where(x > self.high, 2.0 * self.high - x, x)
         return x
 
-    def _root(self, y: float) -> float:
-        from scipy.optimize import brentq
-
-        def miss(x: float) -> float:
-            return float(self.curve.predict(x)) - y
-
-        low, high = miss(self.low), miss(self.high)
-        if not low * high <= 0:
-            return np.nan
-        return float(
-            brentq(miss, self.low, self.high, xtol=1e-14 * max(abs(self.low), abs(self.high)), rtol=1e-14)
+    def _roots(self, y: Array) -> Array:
+        """Roots of any formula on its branch."""
+        at_low, at_high = (float(v) for v in self.curve.predict(np.array([self.low, self.high])))
+        sign = 1.0 if at_high >= at_low else -1.0
+        reached = ((at_low - y) * (at_high - y) <= 0) & (at_low != at_high)
+        root = bracketed_roots(
+            lambda x: sign * (self.curve.predict(x) - y),
+            np.full(y.shape, self.low),
+            np.full(y.shape, self.high),
         )
+        # At the end of the branch itself the bracket is a point.
+        root = np.where(y == at_high, self.high, np.where(y == at_low, self.low, root))
+        return np.where(reached, root, np.nan)
 
-    def positions(self, value: Array, y: Array) -> tuple[str, ...]:
-        """'inside', 'above' or 'below' the calibrated range.
+    def places(self, value: Array, y: Array) -> NDArray[np.int8]:
+        """Place of each unknown beside the calibrated range, as a number in `PLACES`.
 
         Where no value exists, a response beyond that of an end standard decides.
         """
         low, high = self.curve.standards.lowest, self.curve.standards.highest
-        bottom, top = (float(v) for v in self.curve.predict(np.array([low, high])))
         with np.errstate(invalid="ignore"):
-            above = np.where(np.isfinite(value), value > high, self.direction * (y - top) > 0)
-            below = np.where(np.isfinite(value), value < low, self.direction * (y - bottom) < 0)
-        return tuple(np.select([above, below], ["above", "below"], "inside").tolist())
+            place = (value > high) + 2 * (value < low).astype(np.int8)
+        missing = np.flatnonzero(~np.isfinite(value))
+        if missing.size:
+            bottom, top = self.curve.predict(np.array([low, high]))
+            above, below = self.direction * (y[missing] - top) > 0, self.direction * (y[missing] - bottom) < 0
+            place[missing] = np.select([above, below], [1, 2], 0)
+        return np.asarray(place, dtype=np.int8)
 
 
 def axis_of(curve: Curve) -> Axis:

@@ -16,18 +16,25 @@ from numpy.typing import ArrayLike, NDArray
 
 from calib.curves.chance import SEED
 from calib.curves.curve import Curve
-from calib.curves.quantiles import two_sided
 from calib.errors import InputError, ModelError
-from calib.quantification.axis import Axis, axis_of
-from calib.quantification.budget import Component, effective_freedom
+from calib.quantification.axis import PLACES, axis_of
+from calib.quantification.band import Band, Estimate, Limits
+from calib.quantification.budget import Component
 from calib.quantification.monte_carlo import TRIALS, drawn_limits
+from calib.quantification.states import (
+    ASYMMETRIC,
+    NO_ESTIMATE,
+    OFF,
+    OK,
+    PIECE,
+    STATES,
+    inverted_states,
+    states,
+    words,
+)
 
 Array = NDArray[np.float64]
 INTERVALS = ("inversion", "delta", "monte-carlo")
-
-# The longer side may exceed the shorter by this factor before ± is suppressed.
-LOPSIDED = 1.25
-CHUNK = 256
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,13 +143,20 @@ def invert(
     (2.477, ('ok',))
     """
     y, m = _checked(curve, responses, replicates, confidence, interval)
-    axis = axis_of(curve)
-    search = _Search(curve, axis, y, m, confidence, tuple(components))
+    band = Band(axis_of(curve), confidence, tuple(components))
     # Undefined values are expected on the way and end as states, not as warnings.
     with np.errstate(all="ignore"):
-        if interval == "monte-carlo":
-            return search.monte_carlo(SEED if seed is None else seed, trials)
-        return search.delta() if interval == "delta" else search.inversion()
+        if interval == "delta":
+            return _delta(band, y, m)
+        read = band.estimate(y, m)
+        limits = band.limits(y, m, read)
+        if interval == "inversion":
+            return _quantity(band, y, m, read, limits)
+        seed = SEED if seed is None else seed
+        lower, upper = drawn_limits(band.axis, y, m, confidence, band.components, trials, seed)
+        # Only a second region is still told by the inversion.
+        drawn = _quantity(band, y, m, read, replace(limits, lower=lower, upper=upper))
+        return replace(drawn, seed=int(seed), trials=trials)
 
 
 def _checked(
@@ -170,176 +184,46 @@ def _checked(
     return y, np.broadcast_to(m, y.shape).copy()
 
 
-@dataclass(frozen=True, slots=True)
-class _Search:
-    """One inversion problem: responses y of m replicates each on one axis."""
+def _delta(band: Band, y: Array, m: Array) -> Quantity:
+    """Limits value ± q·u; the state and k are those of the inversion, which says whether they hold."""
+    codes, second = inverted_states(band, y, m)
+    value, curve_u, nu, lower, upper, k = (np.empty(y.size) for _ in range(6))
+    u = np.empty(y.size) if band.extra else curve_u
+    place = np.empty(y.size, dtype=np.int8)
+    for i in range(0, y.size, PIECE):
+        part = slice(i, i + PIECE)
+        read = band.estimate(y[part], m[part])
+        value[part], curve_u[part], nu[part] = read.value, read.u, read.degrees_of_freedom
+        u[part] = _widened(band, read)
+        half = read.q * u[part]
+        np.subtract(read.value, half, out=lower[part])
+        np.add(read.value, half, out=upper[part])
+        k[part] = np.where(codes[part] == OK, read.q, np.nan)
+        place[part] = band.axis.places(read.value, y[part])
+    return Quantity(
+        value, u, lower, upper, k, nu, words(codes, STATES), words(place, PLACES), second, curve_u
+    )
 
-    curve: Curve
-    axis: Axis
-    y: Array
-    replicates: Array
-    confidence: float
-    components: tuple[Component, ...]
 
-    @property
-    def extra(self) -> float:
-        """Sum of the squared relative uncertainties of the further components."""
-        return float(sum(c.relative_u**2 for c in self.components))
+def _widened(band: Band, read: Estimate) -> Array:
+    """Standard uncertainty with the further components."""
+    return np.sqrt(read.u**2 + read.value**2 * band.extra) if band.extra else read.u
 
-    def variance(self, t: Array, replicates: Array) -> Array:
-        """Variance of the mean of a new reading about the curve at axis positions t."""
-        x = self.axis.concentration(t)
-        own = self.curve.reading_variance(x) / replicates + self.curve.fit_variance(x)
-        if self.extra:
-            own = own + (x * self.curve.response_model.slope(x, self.curve.values)) ** 2 * self.extra
-        return own
 
-    def estimate(self) -> tuple[Array, Array, Array]:
-        """Value, u from reading and curve, and degrees of freedom at each response."""
-        value = self.axis.inverse(self.y)
-        known = np.isfinite(value) & ((value > 0) | (not self.axis.logarithmic))
-        x = np.where(known, value, 1.0)
-        slope = np.abs(self.curve.response_model.slope(x, self.curve.values))
-        variance = self.curve.reading_variance(x) / self.replicates + self.curve.fit_variance(x)
-        with np.errstate(divide="ignore", invalid="ignore"):
-            u = np.where(known, np.sqrt(variance) / slope, np.nan)
-            relative = (u / np.abs(value)) ** 2
-        freedom = self.curve.coverage_freedom
-        nu = (
-            effective_freedom(relative, freedom, self.components)
-            if self.components
-            else np.full_like(u, freedom)
-        )
-        return value, u, nu
-
-    def delta(self) -> Quantity:
-        """Limits value ± q·u; the state and k are those of the inversion, which says whether they hold."""
-        inverted = self.inversion()
-        value, curve_u, nu = self.estimate()
-        u = np.sqrt(curve_u**2 + value**2 * self.extra)
-        half = two_sided(nu, self.confidence) * u
-        return replace(inverted, value=value, u=u, curve_u=curve_u, lower=value - half, upper=value + half)
-
-    def inversion(self) -> Quantity:
-        """Interval by inversion of the prediction band."""
-        return self.stated(*self.limits())
-
-    def monte_carlo(self, seed: int, trials: int) -> Quantity:
-        """Interval between ranked draws; only a second region is still told by the inversion."""
-        lower, upper = drawn_limits(
-            self.axis, self.y, self.replicates, self.confidence, self.components, trials, seed
-        )
-        return replace(self.stated(lower, upper, self.limits()[2]), seed=int(seed), trials=trials)
-
-    def stated(self, lower: Array, upper: Array, second: NDArray[np.bool_]) -> Quantity:
-        """What limits say about each unknown: its state, and what may be reported with it."""
-        value, curve_u, nu = self.estimate()
-        q = two_sided(nu, self.confidence)
-        side, off = self.beyond(q)
-        # Nearly all draws beyond one and the same end say that the response is not on the curve.
-        off = off | (lower == np.inf) | (upper == self.axis.open_low)
-        lower, upper = np.where(off, np.nan, lower), np.where(off, np.nan, upper)
-        open_below = lower <= (0.0 if self.axis.logarithmic else -np.inf)
-        open_above = np.isinf(upper)
-        gone = (side != 0) | (open_below & open_above)
-        t, low, high = (self.axis.position(v) for v in (value, lower, upper))
-        with np.errstate(invalid="ignore"):
-            short, long = np.minimum(t - low, high - t), np.maximum(t - low, high - t)
-            symmetric = long <= LOPSIDED * short
-        state = np.select(
-            [off, gone, open_above, open_below, symmetric],
-            ["off-curve", "no-estimate", "open-above", "open-below", "ok"],
-            "asymmetric",
-        )
-        value = np.where(gone, np.nan, value)
-        closed = (state == "ok") | (state == "asymmetric")
-        u = np.where(closed, np.sqrt(curve_u**2 + value**2 * self.extra), np.nan)
-        k = np.where(state == "ok", q, np.nan)
-        return self.quantity(value, u, lower, upper, k, nu, state, second, np.where(closed, curve_u, np.nan))
-
-    def beyond(self, q: Array) -> tuple[Array, NDArray[np.bool_]]:
-        """Which end of the curve a response lies beyond, and whether outside the band there.
-
-        The side is −1 for the low end, +1 for the far end, 0 for neither.
-        """
-        side = np.zeros(self.y.size)
-        off = np.zeros(self.y.size, dtype=bool)
-        sign = self.axis.direction
-        for end, which in ((self.axis.low_limit, -1), (self.axis.high_limit, 1)):
-            if end is None:
-                continue
-            past = which * sign * (self.y - end.response) >= 0
-            g = self.curve.noise.variance(np.array([end.response]), np.array([end.concentration]))[0]
-            own = end.gradient @ self.curve.covariance @ end.gradient
-            se = np.sqrt(self.curve.scale**2 * g / self.replicates + own)
-            side = np.where(past, which, side)
-            with np.errstate(invalid="ignore"):
-                off = off | (past & (np.abs(self.y - end.response) > q * se))
-        return side, off
-
-    def limits(self) -> tuple[Array, Array, NDArray[np.bool_]]:
-        """First crossings on either side of each estimate, in chunks of unknowns."""
-        value, _, nu = self.estimate()
-        q = two_sided(nu, self.confidence)
-        parts = [self._limits(value, q, slice(i, i + CHUNK)) for i in range(0, self.y.size, CHUNK)]
-        lower, upper, second = (np.concatenate(p) for p in zip(*parts, strict=True))
-        return lower, upper, second.astype(bool)
-
-    def _limits(self, value: Array, q: Array, part: slice) -> tuple[Array, Array, NDArray[np.bool_]]:
-        y, m, q = self.y[part], self.replicates[part], q[part]
-        low, high = self.axis.low, self.axis.high
-        side = self.beyond(np.full(self.y.size, np.inf))[0][part]
-        t = np.where(side < 0, low, np.where(side > 0, high, self.axis.position(value[part])))
-        t = np.clip(np.where(np.isnan(t), low, t), low, high)
-        down, again_down = self._walk(t, y, m, q, -1)
-        up, again_up = self._walk(t, y, m, q, +1)
-        lower = np.where(np.isinf(down), self.axis.open_low, self.axis.concentration(down))
-        upper = np.where(np.isinf(up), np.inf, self.axis.concentration(np.where(np.isinf(up), 0.0, up)))
-        # An estimate beyond the end of the axis leaves that end open.
-        estimate = self.axis.position(value[part])
-        lower = np.where(estimate < low, self.axis.open_low, lower)
-        upper = np.where(estimate > high, np.inf, upper)
-        return lower, upper, np.asarray(again_down | again_up)
-
-    def _walk(
-        self, t: Array, y: Array, m: Array, q: Array, direction: int
-    ) -> tuple[Array, NDArray[np.bool_]]:
-        """First crossing from t outwards, ±inf when the end of the axis is reached inside."""
-        grid = self.axis.steps(t, direction)
-        # Where the curve is undefined nothing agrees with the response.
-        outside = ~(self._excess(grid, y[:, None], m[:, None], q[:, None]) <= 0)
-        crossed = outside[:, 1:].any(axis=1)
-        first = np.where(crossed, outside[:, 1:].argmax(axis=1) + 1, 1)
-        rows = np.arange(t.size)
-        inner, outer = grid[rows, first - 1], grid[rows, first]
-        for _ in range(60):
-            middle = 0.5 * (inner + outer)
-            is_out = ~(self._excess(middle, y, m, q) <= 0)
-            inner, outer = np.where(is_out, inner, middle), np.where(is_out, middle, outer)
-        beyond = np.arange(grid.shape[1])[None, :] > first[:, None]
-        again = np.asarray(crossed & (~outside & beyond).any(axis=1))
-        return np.where(crossed, 0.5 * (inner + outer), direction * np.inf), again
-
-    def _excess(self, t: Array, y: Array, m: Array, q: Array) -> Array:
-        """|y − f| minus the half width of the band: above zero outside the interval."""
-        distance = np.abs(y - self.curve.predict(self.axis.concentration(t)))
-        with np.errstate(invalid="ignore"):
-            half = np.where(np.isinf(q), np.inf, q * np.sqrt(self.variance(t, m)))
-        return np.asarray(distance - half)
-
-    def quantity(
-        self,
-        value: Array,
-        u: Array,
-        lower: Array,
-        upper: Array,
-        k: Array,
-        nu: Array,
-        state: Array,
-        second: NDArray[np.bool_],
-        curve_u: Array,
-    ) -> Quantity:
-        """Assemble the result with the position of each unknown."""
+def _quantity(band: Band, y: Array, m: Array, read: Estimate, limits: Limits) -> Quantity:
+    """What may be reported with limits: no value where both ends are open, no ± where one is far longer."""
+    codes = states(band, y, m, read, limits)
+    off, closed = codes == OFF, (codes == OK) | (codes == ASYMMETRIC)
+    return Quantity(
+        value=np.where(codes == NO_ESTIMATE, np.nan, read.value),
+        u=np.where(closed, _widened(band, read), np.nan),
+        lower=np.where(off, np.nan, limits.lower),
+        upper=np.where(off, np.nan, limits.upper),
+        k=np.where(codes == OK, read.q, np.nan),
+        degrees_of_freedom=read.degrees_of_freedom,
+        state=words(codes, STATES),
         # From the estimate itself, also where none is reported because both ends are open.
-        position = self.axis.positions(self.axis.inverse(self.y), self.y)
-        return Quantity(value, u, lower, upper, k, nu, tuple(state.tolist()), position, second, curve_u)
+        position=words(band.axis.places(read.value, y), PLACES),
+        second_region=limits.second,
+        curve_u=np.where(closed, read.u, np.nan),
+    )
