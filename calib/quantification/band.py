@@ -16,9 +16,9 @@ from calib.quantification.roots import bracketed_roots
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-# Unknowns whose walk along the axis is held at once, and crossings that are solved at once.
-CHUNK = 256
-ROOTS = 8192
+# Unknowns that are solved at once, and whose walk along the axis is held at once.
+CHUNK = 4096
+WALK = 256
 
 
 @dataclass(frozen=True, slots=True)
@@ -138,20 +138,27 @@ class Band:
         return side, off
 
     def limits(self, y: Array, replicates: Array, read: Estimate) -> Limits:
-        """First crossings on either side of each estimate."""
+        """First crossings on either side of each estimate, in chunks of unknowns."""
+        steps = self._steps()
+        found = Limits(np.empty(y.size), np.empty(y.size), np.empty(y.size, dtype=bool))
+        for i in range(0, y.size, CHUNK):
+            part = slice(i, i + CHUNK)
+            found.lower[part], found.upper[part], found.second[part] = self._limits(
+                steps, y[part], replicates[part], read.q[part], read.value[part]
+            )
+        return found
+
+    def _limits(self, steps: _Steps, y: Array, m: Array, q: Array, value: Array) -> tuple[Array, Array, Mask]:
         axis = self.axis
-        estimate = axis.position(read.value)
-        side = self.beyond(y, replicates, np.full(y.size, np.inf))[0]
+        estimate = axis.position(value)
+        side = self.beyond(y, m, np.full(y.size, np.inf))[0]
         start = np.where(side < 0, axis.low, np.where(side > 0, axis.high, estimate))
         start = np.clip(np.where(np.isnan(start), axis.low, start), axis.low, axis.high)
-        brackets = self._brackets(y, replicates, read.q, start)
-        down, up = self._roots(brackets, y, replicates, read.q)
+        brackets = _brackets(steps, y, m, q, start)
+        down, up = self._roots(brackets, y, m, q)
         open_down, open_up = np.isnan(down) | (estimate < axis.low), np.isnan(up) | (estimate > axis.high)
-        return Limits(
-            np.where(open_down, axis.open_low, axis.concentration(down)),
-            np.where(open_up, np.inf, axis.concentration(up)),
-            brackets.second,
-        )
+        lower = np.where(open_down, axis.open_low, axis.concentration(down))
+        return lower, np.where(open_up, np.inf, axis.concentration(up)), brackets.second
 
     def _steps(self) -> _Steps:
         at = self.axis.steps()
@@ -167,29 +174,15 @@ class Band:
             own = own + (x * curve.response_model.slope(x, curve.values)) ** 2 * self.extra
         return own
 
-    def _brackets(self, y: Array, m: Array, q: Array, start: Array) -> _Brackets:
-        """Walk from each start outwards, in chunks of unknowns."""
-        steps = self._steps()
-        found = _Brackets(np.empty((2, y.size)), np.empty((2, y.size)), np.empty(y.size, dtype=bool))
-        for i in range(0, y.size, CHUNK):
-            part = slice(i, i + CHUNK)
-            inside = _inside(steps, y[part], m[part], q[part])
-            found.inner[:, part], found.outer[:, part], found.second[part] = _walk(
-                steps.at, inside, start[part]
-            )
-        return found
-
     def _roots(self, brackets: _Brackets, y: Array, m: Array, q: Array) -> Array:
         """Axis positions (2, m) of the crossings down and up; nan where there is none."""
         roots = np.full(brackets.outer.shape, np.nan)
         ways, unknowns = np.nonzero(np.isfinite(brackets.outer))
-        for i in range(0, ways.size, ROOTS):
-            way, which = ways[i : i + ROOTS], unknowns[i : i + ROOTS]
-            roots[way, which] = bracketed_roots(
-                partial(self._excess, y=y[which], m=m[which], q=q[which]),
-                brackets.inner[way, which],
-                brackets.outer[way, which],
-            )
+        roots[ways, unknowns] = bracketed_roots(
+            partial(self._excess, y=y[unknowns], m=m[unknowns], q=q[unknowns]),
+            brackets.inner[ways, unknowns],
+            brackets.outer[ways, unknowns],
+        )
         return roots
 
     def _excess(self, t: Array, y: Array, m: Array, q: Array) -> Array:
@@ -198,6 +191,16 @@ class Band:
         mean = curve.predict(x)
         reading = curve.scale**2 * curve.noise.variance(mean, x)
         return np.abs(y - mean) - _half(q, reading / m + self._own(x))
+
+
+def _brackets(steps: _Steps, y: Array, m: Array, q: Array, start: Array) -> _Brackets:
+    """Walk from each start outwards, a few unknowns at once."""
+    found = _Brackets(np.empty((2, y.size)), np.empty((2, y.size)), np.empty(y.size, dtype=bool))
+    for i in range(0, y.size, WALK):
+        part = slice(i, i + WALK)
+        inside = _inside(steps, y[part], m[part], q[part])
+        found.inner[:, part], found.outer[:, part], found.second[part] = _walk(steps.at, inside, start[part])
+    return found
 
 
 def _inside(steps: _Steps, y: Array, m: Array, q: Array) -> Mask:

@@ -181,7 +181,7 @@ def _checked(
     m = np.asarray(replicates, dtype=np.float64)
     if m.shape not in ((), y.shape) or np.any(m < 1) or np.any(m != np.floor(m)):
         raise InputError("replicates must be a whole number of at least 1, or one for each response")
-    return y, np.broadcast_to(m, y.shape).copy()
+    return y, np.broadcast_to(m, y.shape)
 
 
 def _delta(band: Band, y: Array, m: Array) -> Quantity:

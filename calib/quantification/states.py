@@ -9,6 +9,7 @@ in one of those are inverted one by one.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import chain
 
 import numpy as np
 from numpy.typing import NDArray
@@ -63,11 +64,8 @@ def states(band: Band, y: Array, replicates: Array, read: Estimate, limits: Limi
 def words(codes: Codes, names: tuple[str, ...]) -> tuple[str, ...]:
     """Names of numbers."""
     known = np.array(names, dtype=object)
-    found: list[str] = []
-    for i in range(0, codes.size, PIECE):
-        part = codes[i : i + PIECE]
-        found += [names[part[0]]] * part.size if (part == part[0]).all() else known[part].tolist()
-    return tuple(found)
+    parts = (codes[i : i + PIECE] for i in range(0, codes.size, PIECE))
+    return tuple(chain.from_iterable(known[part].tolist() for part in parts))
 
 
 @dataclass(frozen=True, slots=True)
