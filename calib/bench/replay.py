@@ -45,7 +45,7 @@ from calib.errors import InputError, MethodError, NotFound, UnknownUnit
 from calib.quantification.range import working_range
 
 # Curves fitted and held at once: enough for a stack to pay, few enough for flat memory.
-BATCH = 128
+BATCH = 256
 NOTHING = Span(None, None)
 
 Progress = Callable[[int, int], None]

@@ -52,8 +52,9 @@ def working_range(curve: Curve, coefficient_of_variation: float = 0.2, replicate
     if not (np.isfinite(low) and low > 0 and high > low and np.all(np.isfinite(curve.values))):
         return WorkingRange(np.nan, np.nan, coefficient_of_variation)
     x = np.geomspace(low, high, 801)
-    good = precision_profile(curve, x, replicates) <= coefficient_of_variation
-    best = int(np.nanargmin(np.where(good, precision_profile(curve, x, replicates), np.inf)))
+    profile = precision_profile(curve, x, replicates)
+    good = profile <= coefficient_of_variation
+    best = int(np.argmin(np.where(good, profile, np.inf)))
     if not good[best]:
         return WorkingRange(np.nan, np.nan, coefficient_of_variation)
     bad = np.flatnonzero(~good)
