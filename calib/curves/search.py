@@ -104,8 +104,8 @@ def improved(stack: Stack, first: Found) -> Found:
     """Solve doubtful runs again from several starts and keep the best."""
     if not stack.model.amplitude:
         return first
-    doubtful = np.flatnonzero(_doubtful(stack, first))
-    return _improved(stack, first, doubtful) if doubtful.size else first
+    again = np.flatnonzero(doubtful(stack, first))
+    return _improved(stack, first, again) if again.size else first
 
 
 def _inside(stack: Stack, starts: Array) -> Array:
@@ -127,7 +127,8 @@ def _found(stack: Stack, solution: StackSolution) -> Found:
     return Found(solution.parameters, total, solution.tangent, converged)
 
 
-def _doubtful(stack: Stack, found: Found) -> Mask:
+def doubtful(stack: Stack, found: Found) -> Mask:
+    """Runs (R,) whose solution may not be the best there is."""
     if _asymmetry_free(stack):
         return np.ones(stack.runs, dtype=bool)
     weight = stack.root_weight**2 * np.ones_like(stack.y)

@@ -53,7 +53,7 @@ FIRST_DAY = datetime(2020, 1, 1, 6, tzinfo=UTC)
 PARTS = (
     ("reading", replay, ("archived_runs", "measured_of_runs", "curves_in_force", "reported_in_force")),
     ("fitting", evaluate_many, ("_curves",)),
-    ("judging and quantifying", evaluate_many, ("assemble",)),
+    ("judging and quantifying", evaluate_many, ("settle",)),
     ("working ranges", replay, ("working_range",)),
 )
 
