@@ -16,6 +16,7 @@ from calib.bench.records import Amendment
 def amendments_of(session: Session, run: tables.Run) -> tuple[Amendment, ...]:
     """Every later decision about a run, and what it changed from and to."""
     found = [
+        *_overrides(session, run),
         *_exclusions(session, run),
         *_changed_facts(session, run),
         *_changed_readings(session, run),
@@ -26,6 +27,11 @@ def amendments_of(session: Session, run: tables.Run) -> tuple[Amendment, ...]:
     if void:
         found.append(Amendment(void.at, void.by, "declared void", void.reason))
     return tuple(sorted(found, key=lambda a: a.at))
+
+
+def _overrides(session: Session, run: tables.Run) -> list[Amendment]:
+    rows = session.scalars(select(tables.RuleOverride).where(tables.RuleOverride.run_id == run.id))
+    return [Amendment(o.at, o.by, f"overrode a rule: {o.what}", o.reason) for o in rows]
 
 
 def _exclusions(session: Session, run: tables.Run) -> list[Amendment]:

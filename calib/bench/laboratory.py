@@ -50,9 +50,16 @@ class Laboratory:
         lot: str | None = None,
         layout: str | None = None,
         exclusions: Sequence[tuple[str, str]] = (),
+        lot_override: str | None = None,
     ) -> tuple[RunRecord, ...]:
-        """Log a file of standards: fit, judge, quantify; ``exclusions`` are (reading, cause) known before."""
-        options = LogOptions(self.by, instrument, tuple(methods), at, lot, layout, tuple(exclusions))
+        """Log a file of standards: fit, judge, quantify.
+
+        ``exclusions`` are (reading, cause) known before the fit; ``lot_override`` is the reason to use an
+        expired or unknown lot.
+        """
+        options = LogOptions(
+            self.by, instrument, tuple(methods), at, lot, layout, tuple(exclusions), lot_override
+        )
         return log_plan(self.store, evaluate_plan(plan_file(self.store, path, options)))
 
     def quantify(

@@ -15,7 +15,7 @@ from calib.bench.keeping import add_evaluation, add_first_quantities, versions
 from calib.bench.noise_history import refuse_changed_history
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.records import Evaluation, RunHeading, RunRecord
-from calib.bench.show_run import attempts_on_day, local, lot_facts
+from calib.bench.show_run import attempts_on_day, local, lot_facts, show_run
 from calib.errors import InputError
 from calib.intake import READER_VERSION, ParsedFile
 
@@ -68,6 +68,8 @@ def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, 
             for run, evaluation in zip(plan.runs, evaluated.evaluations, strict=True)
         ]
         attempts = [attempts_on_day(session, run.instrument.id, run.method.name, run.at) for run in plan.runs]
+    if any(run.overrides or any(m.excluded is not None for m in run.measured) for run in plan.runs):
+        return tuple(show_run(store, number) for number, _ in written)  # decisions belong to the record
     head = store.head()
     return tuple(
         _logged_record(plan, run, evaluation, name, numbers, tries, head)
@@ -163,6 +165,10 @@ def _write(
         )
         for reading in run.measured
         if reading.excluded is not None
+    )
+    session.add_all(
+        tables.RuleOverride(run_id=run_id, what=o.what, reason=o.reason, by=plan.by, at=now)
+        for o in run.overrides
     )
     curve_id = add_evaluation(session, run_id, evaluation, reading_ids, by=plan.by, at=now)
     add_first_quantities(session, run_id, curve_id, evaluation.quantities)

@@ -14,6 +14,7 @@ from calib import store as tables
 from calib.bench.find import instrument_named, lot_named, method_named
 from calib.bench.find_readings import with_exclusions
 from calib.bench.keeping import definition_of, is_saturated
+from calib.bench.lot_rules import Override, usable_lot
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.noise_history import history_before
 from calib.bench.records import Measured, NoiseHistory
@@ -35,7 +36,8 @@ SMALLEST, LARGEST = 1e-100, 1e100  # numbers beyond only overflow in a fit
 class LogOptions:
     """What a person says beside the file; what the file says itself need not be repeated.
 
-    ``exclusions`` names readings left out for an assignable cause before any fit, each with the cause.
+    ``exclusions`` names readings left out for an assignable cause before any fit, each with the cause;
+    ``lot_override`` is why a lot that is unknown or expired is used all the same.
     """
 
     by: str
@@ -45,6 +47,7 @@ class LogOptions:
     lot: str | None = None
     layout: str | None = None
     exclusions: tuple[tuple[str, str], ...] = ()
+    lot_override: str | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,6 +70,7 @@ class PlannedRun:
     content_fingerprint: str
     history: NoiseHistory | None = None
     notes: tuple[str, ...] = field(default=())
+    overrides: tuple[Override, ...] = ()
 
     @property
     def has_standards(self) -> bool:
@@ -189,7 +193,7 @@ def _plan(
     at = _moment(file, run, instrument, options.at)
     _refuse_future(file, at, now)
     lot_name = _agreed(file, "lot", options.lot, run.lot) if options.lot or run.lot else None
-    lot = lot_named(session, lot_name) if lot_name else None
+    lot, overrides = _lot(session, run, lot_name, at, options.lot_override)
     factor = _unit_factor(file, run, definition)
     _require_response_unit(file, run, definition)
     for reading in run.readings:
@@ -209,7 +213,17 @@ def _plan(
         content_fingerprint=content_fingerprint(_resolved(run, instrument.name, definition.analyte, at)),
         history=history_before(session, instrument.name, definition, at) if standards else None,
         notes=(*_notes(run, definition, factor), *_lot_notes(lot, at)),
+        overrides=overrides,
     )
+
+
+def _lot(
+    session: Session, run: ParsedRun, name: str | None, at: datetime, override: str | None
+) -> tuple[tables.StandardLot | None, tuple[Override, ...]]:
+    """The lot of the standards; unknowns alone use none, so its date does not matter for them."""
+    if any(reading.role == "standard" for reading in run.readings):
+        return usable_lot(session, name, at, override)
+    return (lot_named(session, name) if name else None), ()
 
 
 def _resolved(run: ParsedRun, instrument: str, analyte: str, at: datetime) -> ParsedRun:

@@ -38,6 +38,12 @@ def file_options(command: Any) -> Any:
     metavar="READING=CAUSE",
     help="Leave a reading out before the fit, for a cause known apart from it (a spill, the wrong well).",
 )
+@click.option(
+    "--override-lot",
+    "lot_override",
+    metavar="REASON",
+    help="Use a standard lot that is expired or not registered all the same, with the reason.",
+)
 @click.pass_context
 def log(ctx: click.Context, /, file: Path, dry_run: bool, as_json: bool, **said: Any) -> int:
     """Log FILE: show what was understood, fit, judge and quantify in one go."""
@@ -79,6 +85,7 @@ def _options(said: dict[str, Any]) -> Any:
         lot=said["lot"],
         layout=said["layout"],
         exclusions=tuple(_cause(text) for text in said.get("exclusions", ())),
+        lot_override=said.get("lot_override"),
     )
 
 

@@ -16,7 +16,7 @@ from calib.store.methods import Method
 from calib.store.opening import default_store_path, open_store, store_path
 from calib.store.originals import Original
 from calib.store.quantities import QuantityRow
-from calib.store.runs import Exclusion, Reading, Run, RunFacts, RunVoid
+from calib.store.runs import Exclusion, Reading, RuleOverride, Run, RunFacts, RunVoid
 from calib.store.session import Store
 
 if TYPE_CHECKING:
@@ -49,6 +49,7 @@ __all__ = [
     "Original",
     "QuantityRow",
     "Reading",
+    "RuleOverride",
     "Run",
     "RunFacts",
     "RunVoid",

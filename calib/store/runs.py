@@ -133,3 +133,17 @@ class Exclusion(Base):
     by: Mapped[str]
     at: Mapped[datetime]
     supersedes: Mapped[int | None] = superseded_row("exclusion")
+
+
+class RuleOverride(Base):
+    """A decision to log a run against a rule, with what the rule found and the reason."""
+
+    __tablename__ = "rule_override"
+    __table_args__ = evidence()
+
+    id: Mapped[int] = mapped_column(primary_key=True)
+    run_id: Mapped[int] = refers_to("run")
+    what: Mapped[str]
+    reason: Mapped[str]
+    by: Mapped[str]
+    at: Mapped[datetime]

@@ -19,6 +19,7 @@ EVIDENCE_TABLES = (
     "run",
     "run_facts",
     "run_void",
+    "rule_override",
     "reading",
     "exclusion",
     "curve",
