@@ -38,7 +38,8 @@ class Levels:
     @property
     def filled(self) -> Array:
         """Mean responses with 0 where there are none."""
-        return np.where(self.count > 0, self.mean, 0.0)
+        present = self.count > 0
+        return self.mean if present.all() else np.where(present, self.mean, 0.0)
 
     def take(self, which: NDArray[np.intp]) -> Levels:
         """Some of the runs."""

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from calib.curves.levels import Levels
 from calib.curves.noise import NoiseModel
 from calib.curves.search import Found, improved, search, solve_from, weighted_stack
-from calib.curves.stack_solver import Stack
+from calib.curves.stack_problem import Stack
 
 Array = NDArray[np.float64]
 

@@ -16,7 +16,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calib.curves.levels import Levels
-from calib.curves.stack_solver import Stack, StackSolution, solve_stack
+from calib.curves.stack_problem import Stack, StackSolution
+from calib.curves.stack_solver import solve_stack
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -59,16 +60,18 @@ class Found:
 
 def weighted_stack(stack: Stack, levels: Levels, variance: Array) -> Stack:
     """The same runs with weights count/variance."""
+    absent = levels.count == 0
     with np.errstate(divide="ignore", invalid="ignore"):
         root = np.sqrt(levels.count / variance)
-    root = np.where(levels.count > 0, root, 0.0)
-    pure = np.sum(np.where(levels.count > 0, levels.pure / variance, 0.0), axis=0)
+        pure = levels.pure / variance
+    if absent.any():
+        root, pure = np.where(absent, 0.0, root), np.where(absent, 0.0, pure)
     return Stack(
         stack.model,
         levels.x,
         levels.filled,
         root,
-        pure,
+        pure.sum(axis=0),
         stack.template,
         stack.free,
         stack.lower,

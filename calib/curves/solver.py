@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calib.curves.search import OFFSET_LIMIT, ROUNDING
-from calib.curves.stack_solver import Stack
+from calib.curves.stack_problem import Stack
 from calib.errors import ModelError
 from calib.models import ResponseModel
 

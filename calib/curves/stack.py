@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -19,7 +20,7 @@ from calib.curves.reweight import Settled, solve_with_noise
 from calib.curves.search import on_bound
 from calib.curves.solver import Problem, Solution, stack_of_one
 from calib.curves.stack_covariance import inverses
-from calib.curves.stack_solver import Stack
+from calib.curves.stack_problem import Stack
 from calib.curves.standards import Standards, extreme, frozen, refuse_extreme
 from calib.errors import InputError
 from calib.models import CustomModel, ResponseModel, response_model
@@ -281,28 +282,34 @@ def _assembled(
     status: tuple[str, ...],
 ) -> CurveStack:
     found = settled.found
-    runs, k, free = y.shape[1], problem.free.size, int(problem.free.sum())
+    runs, free = y.shape[1], int(problem.free.sum())
     nu = np.maximum(np.isfinite(y).sum(axis=0) - free, 0)
-    parameters = np.full((runs, k), np.nan)
-    parameters[:, ~problem.free] = problem.template[~problem.free]
-    parameters[usable] = found.parameters.T
-    total = np.full(runs, np.nan)
-    total[usable] = found.total
-    covariance = np.full((runs, k, k), np.nan)
     inverse = inverses(problem, levels, bound, found)
     scale, _ = bound.scale(found.total, nu[usable])
-    covariance[usable] = inverse * scale[:, None, None] ** 2
-    converged, stable = np.zeros(runs, dtype=bool), np.zeros(runs, dtype=bool)
-    converged[usable], stable[usable] = found.converged & settled.stable, settled.stable
-    at_bound = np.zeros(runs, dtype=bool)
-    at_bound[usable] = on_bound(stack, found.parameters)
-    tangent = np.full(runs, np.nan)
-    tangent[usable] = found.tangent
+    inverse *= scale[:, None, None] ** 2
+    fixed = np.where(problem.free, np.nan, problem.template)
+    parameters = _among(found.parameters.T, usable, np.broadcast_to(fixed, (runs, fixed.size)))
+    covariance = _among(inverse, usable, np.full((runs, *inverse.shape[1:]), np.nan))
+    total = _among(found.total, usable, np.full(runs, np.nan))
+    tangent = _among(found.tangent, usable, np.full(runs, np.nan))
+    never = np.zeros(runs, dtype=bool)
+    converged = _among(found.converged & settled.stable, usable, never)
+    stable = _among(settled.stable, usable, never)
+    at_bound = _among(on_bound(stack, found.parameters), usable, never)
     second = {int(usable[i]): p for i, p in found.second.items()}
     return CurveStack(
         problem.model.names, parameters, covariance, total, nu, converged, at_bound, status,
         problem, requested, x, y, stable, tangent, second, {},
     )  # fmt: skip
+
+
+def _among(values: NDArray[Any], usable: NDArray[np.intp], others: NDArray[Any]) -> NDArray[Any]:
+    """Values (usable runs, ...) in their places among all runs."""
+    if usable.size == others.shape[0]:
+        return values
+    filled = np.array(others)
+    filled[usable] = values
+    return filled
 
 
 def _one_by_one(

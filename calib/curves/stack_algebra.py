@@ -22,6 +22,40 @@ def dot(a: Array, b: Array) -> Array:
     return product
 
 
+def inner_products(columns: Array) -> Array:
+    """Upper triangle of the inner products (c, c, R) of columns (c, n, R); zero below."""
+    gram = np.zeros((columns.shape[0], columns.shape[0], columns.shape[2]))
+    for i in range(columns.shape[0]):
+        np.einsum("nr,jnr->jr", columns[i], columns[i:], out=gram[i, i:])
+    return gram
+
+
+def diagonal(gram: Array) -> Array:
+    """Diagonals (c, R) of matrices (c, c, R), copied."""
+    return np.array(np.einsum("ccr->cr", gram))
+
+
+def sweep(gram: Array, count: int) -> list[Array]:
+    """Eliminate the first columns from an upper triangle, in place; rows of the unit triangle."""
+    upper = []
+    for i in range(count):
+        row = gram[i, i + 1 :] / gram[i, i]
+        gram[i + 1 :, i + 1 :] -= gram[i, i + 1 : gram.shape[0], None] * row
+        upper.append(row)
+    return upper
+
+
+def substituted(upper: Sequence[Array], like: Array) -> Array:
+    """Solution (q, R) of swept systems whose right-hand side was the last column."""
+    solved = np.empty_like(like)
+    for i in reversed(range(len(upper))):
+        value = upper[i][-1]
+        for j in range(i + 1, len(upper)):
+            value = value - upper[i][j - i - 1] * solved[j]
+        solved[i] = value
+    return solved
+
+
 def orthogonalise(basis: Sequence[Array]) -> tuple[list[Array], list[list[Array]]]:
     """Modified Gram–Schmidt, twice where three columns can lean on each other."""
     orthogonal: list[Array] = []
@@ -60,54 +94,61 @@ def project_out(v: Array, orthogonal: Sequence[Array]) -> Array:
     return v
 
 
-def held_at_bound(theta: Array, slope: Array, low: Array, high: Array) -> Mask:
-    """Coordinates on a bound that the steepest descent would push across."""
-    return ((theta <= low) & (slope < 0)) | ((theta >= high) & (slope > 0))
+def held_at_bound(theta: Array, slope: Array, low: Array, high: Array) -> Mask | None:
+    """Coordinates on a bound that the steepest descent would push across; None where there are none."""
+    below, above = theta <= low, theta >= high
+    if not (below | above).any():
+        return None
+    return (below & (slope < 0)) | (above & (slope > 0))
 
 
-def damped_step(normal: Array, slope: Array, damping: Array, held: Mask) -> tuple[Array, Array]:
-    """Damped Gauss–Newton step and the decrease of the sum it predicts."""
-    m = slope.shape[0]
-    if m == 0:
-        return slope, np.zeros(damping.size)
-    matrix, right = normal.copy(), slope
-    if held.any():
-        right = np.where(held, 0.0, slope)
-        matrix = np.where(held[:, None] | held[None, :], 0.0, matrix)
-    for i in range(m):
-        diagonal = matrix[i, i]
-        matrix[i, i] = np.where(diagonal > 0, diagonal * (1.0 + damping), 1.0)
-    step = solve_small(matrix, right)
-    along = np.einsum("ir,ir->r", step, right)
-    if not damping.any():
-        return step, np.where(np.isfinite(along), along, 0.0)
-    predicted = 2.0 * along - np.einsum("ir,ijr,jr->r", step, normal, step)
-    return step, np.where(np.isfinite(predicted), predicted, 0.0)
+def damped_step(curvature: Array, slope: Array, damping: Array, held: Mask | None) -> tuple[Array, Array]:
+    """Damped step and the decrease of the sum it predicts; nan where the curvature is not positive.
 
-
-def solve_small(matrix: Array, right: Array) -> Array:
-    """Solve m × m systems along the last axis by elimination without pivoting.
-
-    The matrices are positive (semi)definite after damping, where no pivoting is needed.
+    Elimination without pivoting, from upper triangles.
     """
-    m = right.shape[0]
-    a, b = matrix.copy(), right.copy()
-    for i in range(m):
-        for j in range(i + 1, m):
-            factor = a[j, i] / a[i, i]
-            a[j, i:] -= factor * a[i, i:]
-            b[j] -= factor * b[i]
-    for i in reversed(range(m)):
-        for j in range(i + 1, m):
-            b[i] -= a[i, j] * b[j]
-        b[i] = b[i] / a[i, i]
-    return np.where(np.isfinite(b), b, 0.0)
+    m = slope.shape[0]
+    system = np.concatenate([curvature, slope[:, None]], axis=1)
+    if held is not None:
+        system[:, :m][held[:, None] | held[None, :]] = 0.0
+        system[:, m][held] = 0.0
+    right = system[:, m].copy()
+    pivots = np.einsum("iir->ir", system[:, :m])
+    raised = pivots * damping
+    pivots += raised
+    # A coordinate that is held, or that nothing depends on, stays.
+    idle = pivots == 0.0
+    if idle.any():
+        pivots[idle & (right == 0.0)] = 1.0
+    step = substituted(sweep(system, m), slope)
+    predicted = np.einsum("ir,ir->r", step, right + raised * step)
+    positive = (pivots > 0.0).all(axis=0)
+    return step, predicted if positive.all() else np.where(positive, predicted, np.nan)
 
 
-def reach(theta: Array, step: Array, low: Array, high: Array) -> Array:
-    """Share of the whole step that stays inside the bounds (R,)."""
-    if step.shape[0] == 0:
-        return np.ones(step.shape[1])
-    room = np.where(step > 0, high - theta, low - theta)
-    share = np.where(step != 0, room / np.where(step != 0, step, 1.0), np.inf)
-    return np.asarray(np.minimum(1.0, np.maximum(share.min(axis=0), 0.0)))
+def reach(theta: Array, step: Array, low: Array, high: Array) -> tuple[Array, Mask]:
+    """Where the steps lead, shortened as a whole to stay inside the bounds, and which are whole (R,)."""
+    trial = theta + step
+    across: Mask = np.any((trial < low) | (trial > high), axis=0)
+    if not across.any():
+        return trial, ~across
+    bound = np.where(step > 0, high, low)
+    share = np.where(step != 0, (bound - theta) / np.where(step != 0, step, 1.0), np.inf)
+    shortest = np.minimum(1.0, np.maximum(share.min(axis=0), 0.0))
+    # Rounding must not leave a coordinate just short of the bound that stopped it.
+    return np.where(share <= shortest, bound, theta + shortest * step), np.asarray(shortest == 1.0)
+
+
+def secant_update(second: Array, moved: Array, change: Array, normal: Array, usable: Mask) -> Array:
+    """Second-order part (m, m, R) that explains how the gradient changed over a step (m, R).
+
+    Symmetric rank one (Broyden 1967), as a complement to Gauss–Newton (Dennis, Gay and Welsch
+    1981, ACM Transactions on Mathematical Software 7, 348–368). ``change`` is J'r before the step
+    less J'r after it; zero where the step is not ``usable``.
+    """
+    left = change - np.einsum("ijr,jr->ir", normal + second, moved)
+    along = np.einsum("ir,ir->r", left, moved)
+    size = np.sqrt(np.einsum("ir,ir->r", left, left) * np.einsum("ir,ir->r", moved, moved))
+    told = usable & (np.abs(along) > 1e-8 * size)
+    scaled = left / np.where(told, along, np.inf)
+    return np.where(usable, second + scaled[:, None] * left, 0.0)

@@ -10,12 +10,12 @@ from calib.curves.noise import NoiseModel
 from calib.curves.reweight import some_noise
 from calib.curves.search import Found
 from calib.curves.solver import Problem
-from calib.curves.stack_algebra import dot
+from calib.curves.stack_algebra import diagonal, inner_products
 
 Array = NDArray[np.float64]
 
 # Inverted in blocks, so that memory stays flat.
-BLOCK = 4096
+BLOCK = 2048
 # A pivot this small of a matrix with unit diagonal is rounding.
 VANISHING = 1e-13
 
@@ -34,47 +34,46 @@ def inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) 
 
 def _inverse_block(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> Array:
     model, free = problem.model, np.flatnonzero(problem.free)
+    full = np.zeros((problem.free.size, problem.free.size, levels.runs))
     with np.errstate(all="ignore"):
         # Only a noise model that follows the fit asks for the fitted means.
-        mean = model.response(levels.x, list(p)) if noise.follows_fit else levels.x
-        mean = np.broadcast_to(mean, levels.mean.shape)
+        mean = model.response(levels.x, list(p)) if noise.follows_fit else levels.mean
+        mean = mean if mean.shape == levels.mean.shape else np.broadcast_to(mean, levels.mean.shape)
         variance = noise.at_standards(mean, np.broadcast_to(levels.x, mean.shape))
         root = np.sqrt(np.where(levels.count > 0, levels.count / variance, 0.0))
         each = model.derivatives(levels.x, list(p))
-        columns = [np.broadcast_to(root * each[i], mean.shape) for i in free]
-        scaled = np.empty((free.size, free.size, levels.runs))
-        length = [np.sqrt(dot(a, a)) for a in columns]
-        for i, a in enumerate(columns):
-            for j in range(i, free.size):
-                scaled[i, j] = scaled[j, i] = dot(a, columns[j]) / (length[i] * length[j])
-        inner = _inverse_of_scaled(scaled)
-        full = np.zeros((levels.runs, problem.free.size, problem.free.size))
-        for i, row in enumerate(free):
-            for j, column in enumerate(free):
-                full[:, row, column] = inner[i, j] / (length[i] * length[j])
-    return full
+        columns = np.empty((free.size, *mean.shape))
+        for row, i in enumerate(free):
+            np.multiply(root, each[i], out=columns[row])
+        gram = inner_products(columns)
+        length = np.sqrt(diagonal(gram))
+        full[np.ix_(free, free)] = _inverse_of_scaled(gram / (length[:, None] * length)) / (
+            length[:, None] * length
+        )
+    return np.moveaxis(full, 2, 0)
 
 
-def _inverse_of_scaled(scaled: Array) -> Array:
-    """Inverse of symmetric matrices (k, k, R) with unit diagonal, by elimination for all runs at once.
+def _inverse_of_scaled(upper: Array) -> Array:
+    """Inverse of symmetric matrices (k, k, R) with unit diagonal, given by their upper triangle.
 
-    A pseudo-inverse takes the place where a pivot vanishes, nan where a matrix is not finite.
+    Elimination in place for all runs at once (Gauss and Jordan). A pseudo-inverse takes the place
+    where a pivot vanishes, nan where a matrix is not finite.
     """
-    k, runs = scaled.shape[0], scaled.shape[2]
+    scaled = upper + np.swapaxes(np.triu(np.ones(upper.shape[:2]), 1)[:, :, None] * upper, 0, 1)
     a = scaled.copy()
-    inverse = np.repeat(np.eye(k)[:, :, None], runs, axis=2)
-    smallest = np.full(runs, np.inf)
-    for i in range(k):
+    smallest = np.full(a.shape[2], np.inf)
+    for i in range(a.shape[0]):
         pivot = a[i, i].copy()
         smallest = np.fmin(smallest, np.abs(pivot))
-        a[i], inverse[i] = a[i] / pivot, inverse[i] / pivot
-        for j in range(k):
-            if j != i:
-                factor = a[j, i].copy()
-                a[j] -= factor * a[i]
-                inverse[j] -= factor * inverse[i]
-    finite = np.all(np.isfinite(scaled), axis=(0, 1))
-    inverse[:, :, ~finite] = np.nan
-    for r in np.flatnonzero(finite & ~(smallest > VANISHING)):
-        inverse[:, :, r] = np.linalg.pinv(scaled[:, :, r], hermitian=True)
-    return inverse
+        row, column = a[i] / pivot, a[:, i].copy()
+        a -= column[:, None] * row
+        a[:, i] = -column / pivot
+        a[i] = row
+        a[i, i] = 1.0 / pivot
+    sound = smallest > VANISHING
+    if not sound.all():
+        finite = np.all(np.isfinite(scaled), axis=(0, 1))
+        a[:, :, ~finite] = np.nan
+        for r in np.flatnonzero(finite & ~sound):
+            a[:, :, r] = np.linalg.pinv(scaled[:, :, r], hermitian=True)
+    return a

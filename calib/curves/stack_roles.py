@@ -8,6 +8,11 @@ from functools import lru_cache
 
 from calib.models import ResponseModel
 
+# Elimination from inner products is trusted while this share of every squared length is left.
+SOUND = 1e-8
+# And a sum of squares while this share of it is left.
+EXACT = 1e-4
+
 
 @dataclass(frozen=True, slots=True)
 class Rules:
@@ -24,13 +29,16 @@ class Rules:
         The same for noise-free data, as a share of the weighted squares of the responses.
     close : float
         Below this share a decrease of the sum is lost in its rounding.
+    near : float
+        A step of so small a share of the sum lies where the gradient tells second derivatives.
     first_damping, most_damping, no_damping : float
     """
 
     steps: int = 250
-    enough: float = 1e-17
+    enough: float = 1e-14
     floor: float = 1e-26
     close: float = 1e-13
+    near: float = 1e-2
     first_damping: float = 1e-3
     most_damping: float = 1e12
     no_damping: float = 1e-7

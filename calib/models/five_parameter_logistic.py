@@ -45,11 +45,11 @@ class FiveParameterLogistic(ResponseModel):
         """Ln x − ln midpoint, and slope times that (−inf at x = 0)."""
         x = as_array(x)
         above = x > 0
-        if np.all(above):
+        if above.all():
             distance = np.log(x) - np.log(p[2])
-            return as_array(distance), as_array(p[3] * distance)
+            return distance, distance * p[3]
         distance = np.log(np.where(above, x, 1.0)) - np.log(p[2])
-        return as_array(distance), as_array(np.where(above, p[3] * distance, -np.inf))
+        return distance, np.where(above, distance * p[3], -np.inf)
 
     def _steps(self, x: ArrayLike, p: Parameters) -> tuple[Array, Array, Array]:
         """(ln x − ln midpoint), 1 − F and ln F with F = 1/(1 + (x/midpoint)^slope)."""

@@ -38,8 +38,8 @@ class FourParameterLogistic(FiveParameterLogistic):
         power = np.exp(np.minimum(exponent, 700.0))
         share = 1.0 / (1.0 + power)
         rest = power * share
-        fall = (zero - infinite) * share * rest
-        return share, rest, fall * (slope / midpoint), -fall * distance
+        fall = (share * rest) * (zero - infinite)
+        return share, rest, fall * (slope / midpoint), fall * -distance
 
     def inverse(self, y: ArrayLike, p: Parameters) -> Array:
         """Exact inverse; nan on or beyond either plateau."""
