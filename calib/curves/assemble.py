@@ -10,6 +10,7 @@ from scipy.special import chdtrc
 
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding, Information, findings_of, information
+from calib.curves.estimate_noise import ONE_RUN
 from calib.curves.history_noise import ENOUGH_RUNS, HistoryNoise
 from calib.curves.noise import NoiseModel, UniformNoise
 from calib.curves.solver import Problem, Solution
@@ -19,7 +20,6 @@ Array = NDArray[np.float64]
 
 # One honest run in a thousand contradicts its own standard uncertainties.
 CONTRADICTED = 1e-3
-ONE_RUN = "estimated from this run"
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,11 +8,12 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from calib.curves.assemble import ONE_RUN, Fitted, curve_from, unfitted_curve
+from calib.curves.assemble import Fitted, curve_from, unfitted_curve
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import information
+from calib.curves.estimate_noise import FIRST, ONE_RUN, STANDS_STILL, solve_estimating_noise
 from calib.curves.levels import collapsed, uncollapsed
-from calib.curves.noise import GivenNoise, NoiseModel, PowerOfMeanNoise, given_noise
+from calib.curves.noise import GivenNoise, NoiseModel, given_noise, of_run
 from calib.curves.requests import Bounds, problem_of, requested_noise
 from calib.curves.reweight import PASSES, SETTLED, solve_with_noise
 from calib.curves.solver import SOLVERS, Problem, Solution, solve, stack_of_one
@@ -86,7 +87,9 @@ def fit(
         return unfitted_curve(problem, standards, requested, solver)
     if solver not in SOLVERS:
         raise ModelError(f"unknown solver '{solver}'; known are {', '.join(SOLVERS)}")
-    if isinstance(requested, str):
+    if problem.separable and solver == "least-squares":
+        fitted = _fit_through_stack(problem, requested, start or {})
+    elif isinstance(requested, str):
         fitted = _fit_estimating_noise(problem, requested, start or {}, solver)
     else:
         fitted = _fit_with_noise(problem, requested.bound_to(problem.y), start or {}, solver)
@@ -123,8 +126,6 @@ def _starts(problem: Problem, start: Mapping[str, float]) -> list[Array]:
 
 def _fit_with_noise(problem: Problem, noise: NoiseModel, start: Mapping[str, float], solver: str) -> Fitted:
     """Solve one run under a noise model that is bound to its responses."""
-    if problem.separable and solver == "least-squares":
-        return _fit_through_stack(problem, noise, start)
     starts = _starts(problem, start)
     if noise.follows_fit:
         first = solve(problem, starts, solver)
@@ -133,18 +134,23 @@ def _fit_with_noise(problem: Problem, noise: NoiseModel, start: Mapping[str, flo
     return Fitted(solve(weighted, starts, solver), noise, weighted, stable=True)
 
 
-def _fit_through_stack(problem: Problem, noise: NoiseModel, start: Mapping[str, float]) -> Fitted:
+def _fit_through_stack(problem: Problem, requested: str | NoiseModel, start: Mapping[str, float]) -> Fitted:
     """One run is a stack of one."""
     stack = stack_of_one(problem)
     column = problem.y[:, None]
     # Standard deviations given reading by reading forbid collapsing.
-    levels = uncollapsed(problem.x, column) if isinstance(noise, GivenNoise) else collapsed(problem.x, column)
-    sorted_noise = _sorted(noise, problem.x)
+    given_sd = isinstance(requested, GivenNoise)
+    levels = uncollapsed(problem.x, column) if given_sd else collapsed(problem.x, column)
     given = _given(problem, start)
     starts: Array | dict[int, Array] = given
     if len(given) == int(problem.free.sum()):
         starts = _full_start(problem, given)
-    settled = solve_with_noise(stack, levels, sorted_noise, starts)
+    if isinstance(requested, str):
+        estimated = solve_estimating_noise(problem, stack, levels, requested, starts)
+        settled, noise = estimated.settled, of_run(estimated.noise, 0)
+    else:
+        noise = requested.bound_to(problem.y)
+        settled = solve_with_noise(stack, levels, _sorted(noise, problem.x), starts)
     found = settled.found
     parameters = found.parameters[:, 0]
     mean = problem.model.response(problem.x, parameters)
@@ -172,7 +178,7 @@ def _sorted(noise: NoiseModel, x: Array) -> NoiseModel:
 
 def _fit_estimating_noise(problem: Problem, family: str, start: Mapping[str, float], solver: str) -> Fitted:
     """Alternate between the curve and its variance function until both stand still."""
-    noise: NoiseModel = PowerOfMeanNoise(1.4, ONE_RUN).bound_to(problem.y)
+    noise = FIRST.bound_to(problem.y)
     fitted = _fit_with_noise(problem, noise, start, solver)
     for _ in range(PASSES):
         before = noise.variance(problem.y, problem.x)
@@ -183,7 +189,7 @@ def _fit_estimating_noise(problem: Problem, family: str, start: Mapping[str, flo
         after = noise.variance(problem.y, problem.x)
         # Only the shape counts: a common factor is taken up by the scale.
         shape = np.log(after / before)
-        if np.ptp(shape) < 1e-6:
+        if np.ptp(shape) < STANDS_STILL:
             return fitted
     return replace(fitted, stable=False)
 

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from typing import Any, ClassVar
 
 import numpy as np
@@ -114,10 +114,10 @@ class UniformNoise(NoiseModel):
 class PowerOfMeanNoise(NoiseModel):
     """Variance proportional to |mean|^exponent; exponent 2 is a constant CV.
 
-    In a stack the floor is an array, one for each run.
+    In a stack exponent and floor may be arrays, one value for each run.
     """
 
-    exponent: float
+    exponent: float | Array
     origin: str = "assumed"
     floor: float | Array | None = None
     kind: ClassVar[str] = "power-of-mean"
@@ -146,9 +146,12 @@ class PowerOfMeanNoise(NoiseModel):
 
 @dataclass(frozen=True, slots=True)
 class AdditiveRelativeNoise(NoiseModel):
-    """Variance proportional to ratio² + mean²: a constant and a relative part."""
+    """Variance proportional to ratio² + mean²: a constant and a relative part.
 
-    ratio: float
+    In a stack the ratio may be an array, one value for each run.
+    """
+
+    ratio: float | Array
     origin: str = "assumed"
     kind: ClassVar[str] = "additive-relative"
 
@@ -250,6 +253,30 @@ class GivenNoise(NoiseModel):
     def to_dict(self) -> dict[str, Any]:
         """Plain form."""
         return {"kind": self.kind, "sd": list(self.sd), "known": self.known, "mean": list(self.mean)}
+
+
+def of_runs(noise: NoiseModel, which: NDArray[np.intp]) -> NoiseModel:
+    """The noise model of some runs of a stack; what all runs share stays as it is."""
+    return replace(noise, **{name: values[..., which] for name, values in _by_run(noise).items()})  # type: ignore[type-var]
+
+
+def of_run(noise: NoiseModel, run: int) -> NoiseModel:
+    """The noise model of one run of a stack by itself."""
+    return replace(noise, **{name: float(values[run]) for name, values in _by_run(noise).items()})  # type: ignore[type-var]
+
+
+def with_runs(noise: NoiseModel, which: NDArray[np.intp], theirs: NoiseModel) -> NoiseModel:
+    """The noise model of a stack in which some runs get another one of the same family."""
+    changed = {name: values.copy() for name, values in _by_run(noise).items()}
+    for name, values in _by_run(theirs).items():
+        changed[name][..., which] = values
+    return replace(noise, **changed)  # type: ignore[type-var]
+
+
+def _by_run(noise: NoiseModel) -> dict[str, NDArray[Any]]:
+    """Fields that differ from run to run: arrays with the runs along the last axis."""
+    values = {f.name: getattr(noise, f.name) for f in fields(noise)}  # type: ignore[arg-type]
+    return {n: v for n, v in values.items() if isinstance(v, np.ndarray) and (v.ndim == 1 or v.shape[-1] > 1)}
 
 
 def response_floor(response: Array) -> float | Array:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calib.curves.levels import Levels
-from calib.curves.noise import NoiseModel
+from calib.curves.noise import NoiseModel, of_runs
 from calib.curves.search import Found, improved, search, solve_from, weighted_stack
 from calib.curves.stack_problem import Stack
 
@@ -79,7 +79,7 @@ def _follow(stack: Stack, levels: Levels, noise: NoiseModel, first: Found, searc
             # The weights may have made another valley the deepest one.
             again = improved(weighted, again)
             found.second.update(again.second)
-        _write(found, index, again)
+        write(found, index, again)
         fitted = _mean(some, part, again.parameters)
         with np.errstate(invalid="ignore"):
             moving = np.max(np.abs(fitted - mean) * (part.count > 0), axis=0) > SETTLED * size[index]
@@ -88,7 +88,7 @@ def _follow(stack: Stack, levels: Levels, noise: NoiseModel, first: Found, searc
         if keep.size == 0:
             break
         index, mean, part = index[keep], fitted[:, keep], part.take(keep)
-        now, some = some_noise(now, keep), _some_bounds(some, keep)
+        now, some = of_runs(now, keep), some_bounds(some, keep)
     return Settled(found, stable)
 
 
@@ -98,22 +98,16 @@ def _mean(stack: Stack, levels: Levels, parameters: Array) -> Array:
     return np.where(np.isfinite(mean), mean, 0.0) * np.ones_like(levels.mean)
 
 
-def _write(found: Found, index: NDArray[np.intp], again: Found) -> None:
+def write(found: Found, index: NDArray[np.intp], again: Found) -> None:
+    """Put the solutions of some runs in their places."""
     found.parameters[:, index] = again.parameters
     found.total[index] = again.total
     found.tangent[index] = again.tangent
     found.converged[index] = again.converged
 
 
-def some_noise(noise: NoiseModel, keep: NDArray[np.intp]) -> NoiseModel:
-    """The noise model of some of the runs."""
-    floor = getattr(noise, "floor", None)
-    if not isinstance(floor, np.ndarray) or floor.ndim == 0:
-        return noise
-    return replace(noise, floor=floor[keep])  # type: ignore[type-var]
-
-
-def _some_bounds(stack: Stack, keep: NDArray[np.intp]) -> Stack:
+def some_bounds(stack: Stack, keep: NDArray[np.intp]) -> Stack:
+    """The stack with the bounds of some of its runs."""
     lower = stack.lower if stack.lower.shape[1] == 1 else stack.lower[:, keep]
     upper = stack.upper if stack.upper.shape[1] == 1 else stack.upper[:, keep]
     return replace(stack, lower=lower, upper=upper)

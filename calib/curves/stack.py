@@ -12,9 +12,10 @@ from numpy.typing import ArrayLike, NDArray
 from calib.curves.assemble import Fitted, curve_from, unfitted_curve
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding
+from calib.curves.estimate_noise import solve_estimating_noise
 from calib.curves.fit import fit, weighted_problem
 from calib.curves.levels import Levels, collapsed, uncollapsed
-from calib.curves.noise import GivenNoise, NoiseModel, given_noise
+from calib.curves.noise import GivenNoise, NoiseModel, UniformNoise, given_noise, of_run, of_runs
 from calib.curves.requests import Bounds, problem_of, requested_noise
 from calib.curves.reweight import Settled, solve_with_noise
 from calib.curves.search import on_bound
@@ -64,7 +65,8 @@ class CurveStack(Sequence[Curve]):
     at_bound: Mask
     status: tuple[str, ...]
     _problem: Problem
-    _noise: str | NoiseModel
+    _requested: str | NoiseModel
+    _noise: NoiseModel
     _concentration: Array
     _response: Array
     _stable: Mask
@@ -100,9 +102,9 @@ class CurveStack(Sequence[Curve]):
                 NOT_FINITE,
                 "a response of this run is infinite or beyond what can be computed; leave it out (nan) or correct it",
             )
-            return unfitted_curve(problem, standards, self._noise, "least-squares", finding)
+            return unfitted_curve(problem, standards, self._requested, "least-squares", finding)
         if self.status[i] != OK:
-            return unfitted_curve(problem, standards, self._noise, "least-squares")
+            return unfitted_curve(problem, standards, self._requested, "least-squares")
         return self._curve(i, problem, standards)
 
     def _standards(self, i: int) -> Standards:
@@ -112,11 +114,10 @@ class CurveStack(Sequence[Curve]):
         return Standards(frozen(x[present]), frozen(y[present]))
 
     def _curve(self, i: int, problem: Problem, standards: Standards) -> Curve:
-        assert isinstance(self._noise, NoiseModel)
         noise = self._noise
         if isinstance(noise, GivenNoise):
             noise = replace(noise, sd=tuple(np.asarray(noise.sd)[np.isfinite(self._response[:, i])]))
-        noise = noise.bound_to(standards.response)
+        noise = of_run(noise, i).bound_to(standards.response)
         parameters = self.parameters[i]
         total = float(self.residual_sum[i])
         offset = float(self._tangent[i] / np.sqrt(total)) if total > 0 else 0.0
@@ -179,18 +180,27 @@ def fit_stack(
     problem = problem_of(chosen, template, fixed or {}, bounds or {}, scalar)
     status = _statuses(x, y, int(problem.free.sum()))
     usable = np.flatnonzero([s == OK for s in status])
-    if isinstance(requested, str) or isinstance(chosen, CustomModel) or not usable.size:
+    if isinstance(chosen, CustomModel) or not usable.size:
         return _one_by_one(problem, x, y, requested, usable, status, fixed, bounds, starts)
     kept = np.where(np.isinf(y), np.nan, y)
-    levels, bound = _levels(x, kept[:, usable], requested)
+    levels = _levels(x, kept[:, usable], requested)
     stack = stack_of_one(problem)
     if x.ndim == 2:
         stack = _own_bounds(stack, problem, x[:, usable])
     given = {
         problem.model.index(n): v[usable] for n, v in starts.items() if problem.free[problem.model.index(n)]
     }
-    settled = solve_with_noise(stack, levels, bound, _starts(problem, given, usable.size))
-    return _assembled(problem, stack, requested, x, kept, levels, bound, settled, usable, status)
+    begin = _starts(problem, given, usable.size)
+    if isinstance(requested, str):
+        estimated = solve_estimating_noise(problem, stack, levels, requested, begin)
+        settled, bound = estimated.settled, estimated.noise
+        place = np.zeros(y.shape[1], dtype=np.intp)
+        place[usable] = np.arange(usable.size)
+        used = of_runs(bound, place)
+    else:
+        used, bound = requested, _bound(requested, x, kept[:, usable])
+        settled = solve_with_noise(stack, levels, bound, begin)
+    return _assembled(problem, stack, requested, used, x, kept, levels, bound, settled, usable, status)
 
 
 def _arrays(concentration: ArrayLike, response: ArrayLike, model: ResponseModel) -> tuple[Array, Array]:
@@ -238,14 +248,18 @@ def _statuses(x: Array, y: Array, needed: int) -> tuple[str, ...]:
     return tuple(np.select([infinite, few], [NOT_FINITE, TOO_FEW_LEVELS], OK).tolist())
 
 
-def _levels(x: Array, y: Array, noise: NoiseModel) -> tuple[Levels, NoiseModel]:
-    """Levels of the runs and the noise model bound to them."""
-    if isinstance(noise, GivenNoise):
-        order = np.argsort(x, axis=0, kind="stable")
-        sd = np.asarray(noise.sd)[order]
-        return uncollapsed(x, y), replace(noise, sd=sd if sd.ndim == 2 else sd[:, None])
-    levels = collapsed(x, y) if x.ndim == 1 else uncollapsed(x, y)
-    return levels, noise.bound_to(y)
+def _levels(x: Array, y: Array, noise: str | NoiseModel) -> Levels:
+    # Standard deviations given reading by reading forbid collapsing.
+    alike = x.ndim == 1 and not isinstance(noise, GivenNoise)
+    return collapsed(x, y) if alike else uncollapsed(x, y)
+
+
+def _bound(noise: NoiseModel, x: Array, y: Array) -> NoiseModel:
+    """The noise model with what it needs of the runs, in the order of their levels."""
+    if not isinstance(noise, GivenNoise):
+        return noise.bound_to(y)
+    sd = np.asarray(noise.sd)[np.argsort(x, axis=0, kind="stable")]
+    return replace(noise, sd=sd if sd.ndim == 2 else sd[:, None])
 
 
 def _own_bounds(stack: Stack, problem: Problem, x: Array) -> Stack:
@@ -272,7 +286,8 @@ def _starts(problem: Problem, given: dict[int, Array], runs: int) -> Array | dic
 def _assembled(
     problem: Problem,
     stack: Stack,
-    requested: NoiseModel,
+    requested: str | NoiseModel,
+    noise: NoiseModel,
     x: Array,
     y: Array,
     levels: Levels,
@@ -299,7 +314,7 @@ def _assembled(
     second = {int(usable[i]): p for i, p in found.second.items()}
     return CurveStack(
         problem.model.names, parameters, covariance, total, nu, converged, at_bound, status,
-        problem, requested, x, y, stable, tangent, second, {},
+        problem, requested, noise, x, y, stable, tangent, second, {},
     )  # fmt: skip
 
 
@@ -323,7 +338,7 @@ def _one_by_one(
     bounds: Bounds | None,
     starts: Mapping[str, Array],
 ) -> CurveStack:
-    """Formulas of the user, and variance functions estimated from each run, are fitted run by run."""
+    """Formulas of the user are fitted run by run: they may not take the parameters of many runs at once."""
     runs, k = y.shape[1], problem.free.size
     curves: dict[int, Curve] = {}
     for i in usable:
@@ -350,5 +365,5 @@ def _one_by_one(
         at_bound[i] = not bool(np.all(curve.determined))
     return CurveStack(
         problem.model.names, parameters, covariance, total, nu, converged, at_bound, status,
-        problem, requested, x, y, converged, tangent, {}, curves,
+        problem, requested, UniformNoise(), x, y, converged, tangent, {}, curves,
     )  # fmt: skip

@@ -6,8 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from calib.curves.levels import Levels
-from calib.curves.noise import NoiseModel
-from calib.curves.reweight import some_noise
+from calib.curves.noise import NoiseModel, of_runs
 from calib.curves.search import Found
 from calib.curves.solver import Problem
 from calib.curves.stack_algebra import diagonal, inner_products
@@ -27,30 +26,54 @@ def inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) 
     for i in range(0, levels.runs, BLOCK):
         part = np.arange(i, min(i + BLOCK, levels.runs))
         inverse[part] = _inverse_block(
-            problem, levels.take(part), some_noise(noise, part), found.parameters[:, part]
+            problem, levels.take(part), of_runs(noise, part), found.parameters[:, part]
         )
     return inverse
 
 
+def leverages(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) -> Array:
+    """Leverage of one reading at each level (n, R): the diagonal of the hat matrix."""
+    leverage = np.empty_like(levels.mean)
+    for i in range(0, levels.runs, BLOCK):
+        part = np.arange(i, min(i + BLOCK, levels.runs))
+        some, own, p = levels.take(part), of_runs(noise, part), found.parameters[:, part]
+        with np.errstate(all="ignore"):
+            columns, count = _weighted_columns(problem, some, own, p)
+            inverse = _inverse(columns)
+            leverage[:, part] = np.einsum("inr,ijr,jnr->nr", columns, inverse, columns) / count
+    return leverage
+
+
 def _inverse_block(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> Array:
-    model, free = problem.model, np.flatnonzero(problem.free)
+    free = np.flatnonzero(problem.free)
     full = np.zeros((problem.free.size, problem.free.size, levels.runs))
     with np.errstate(all="ignore"):
-        # Only a noise model that follows the fit asks for the fitted means.
-        mean = model.response(levels.x, list(p)) if noise.follows_fit else levels.mean
-        mean = mean if mean.shape == levels.mean.shape else np.broadcast_to(mean, levels.mean.shape)
-        variance = noise.at_standards(mean, np.broadcast_to(levels.x, mean.shape))
-        root = np.sqrt(np.where(levels.count > 0, levels.count / variance, 0.0))
-        each = model.derivatives(levels.x, list(p))
-        columns = np.empty((free.size, *mean.shape))
-        for row, i in enumerate(free):
-            np.multiply(root, each[i], out=columns[row])
-        gram = inner_products(columns)
-        length = np.sqrt(diagonal(gram))
-        full[np.ix_(free, free)] = _inverse_of_scaled(gram / (length[:, None] * length)) / (
-            length[:, None] * length
-        )
-    return np.moveaxis(full, 2, 0)
+        full[np.ix_(free, free)] = _inverse(_weighted_columns(problem, levels, noise, p)[0])
+    return np.asarray(np.moveaxis(full, 2, 0))
+
+
+def _weighted_columns(problem: Problem, levels: Levels, noise: NoiseModel, p: Array) -> tuple[Array, Array]:
+    """Derivatives in the free parameters times root weights (free, n, R), and readings a level."""
+    model = problem.model
+    # Only a noise model that follows the fit asks for the fitted means.
+    mean = model.response(levels.x, list(p)) if noise.follows_fit else levels.mean
+    mean = mean if mean.shape == levels.mean.shape else np.broadcast_to(mean, levels.mean.shape)
+    variance = noise.at_standards(mean, np.broadcast_to(levels.x, mean.shape))
+    root = np.sqrt(np.where(levels.count > 0, levels.count / variance, 0.0))
+    each = model.derivatives(levels.x, list(p))
+    free = np.flatnonzero(problem.free)
+    columns = np.empty((free.size, *mean.shape))
+    for row, i in enumerate(free):
+        np.multiply(root, each[i], out=columns[row])
+    return columns, np.maximum(levels.count, 1.0)
+
+
+def _inverse(columns: Array) -> Array:
+    """Inverse (k, k, R) of the inner products of columns (k, n, R)."""
+    gram = inner_products(columns)
+    length = np.sqrt(diagonal(gram))
+    size = length[:, None] * length
+    return np.asarray(_inverse_of_scaled(gram / size) / size)
 
 
 def _inverse_of_scaled(upper: Array) -> Array:

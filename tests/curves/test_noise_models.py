@@ -5,9 +5,11 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from made_standards import LEVELS, RISING, assay_standards, codes
+from scipy.optimize import minimize_scalar
 
 import calib
-from calib.curves.noise import NoiseModel, noise_from_dict
+from calib.curves.noise import AdditiveRelativeNoise, NoiseModel, PowerOfMeanNoise, noise_from_dict, of_run
+from calib.curves.variance_function import Scatter, estimate_variance_functions, pseudo_likelihood
 from calib.errors import InputError, MethodError
 from calib.models import response_model
 
@@ -62,6 +64,28 @@ def test_the_constant_and_relative_parts_are_found_with_many_readings() -> None:
     curve = calib.fit(*many_readings(lambda mean: np.hypot(0.008, 0.04 * mean)), noise="additive-relative")
     assert curve.noise.ratio == pytest.approx(0.2, rel=0.3)
     assert curve.scale == pytest.approx(0.04, rel=0.1)
+
+
+@pytest.mark.parametrize("family", ["power-of-mean", "additive-relative"])
+def test_the_pseudo_likelihood_is_lowest_at_the_estimate(family: str) -> None:
+    """The same minimum as a general scalar minimiser finds (scipy.optimize.minimize_scalar), run by run."""
+    rng = np.random.default_rng(3)
+    mean = np.geomspace(0.05, 2.5, 40)[:, None] * np.ones(5)
+    residual = 0.04 * np.hypot(0.1, mean**0.8) * rng.standard_normal(mean.shape)
+    scatter = Scatter(residual**2, np.ones((40, 1)), mean, np.full(mean.shape, 0.1))
+    noise = estimate_variance_functions(family, scatter, "here")
+    for i in range(5):
+
+        def value(t: float, run: int = i) -> float:
+            own = PowerOfMeanNoise(2 * t) if family == "power-of-mean" else AdditiveRelativeNoise(np.exp(t))
+            return pseudo_likelihood(own, residual[:, run], mean[:, run], np.full(40, 0.1))
+
+        bounds = (-0.2, 2.0) if family == "power-of-mean" else np.log(2.45 * np.array([1e-4, 1e3]))
+        expected = minimize_scalar(value, bounds=bounds, method="bounded", options={"xatol": 1e-9})
+        own = of_run(noise, i)
+        found = own.exponent / 2 if family == "power-of-mean" else np.log(own.ratio)
+        assert found == pytest.approx(expected.x, abs=1e-5)
+        assert value(found) <= expected.fun + 1e-10
 
 
 @pytest.mark.parametrize("family", ["power-of-mean", "additive-relative"])

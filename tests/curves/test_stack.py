@@ -105,6 +105,14 @@ def test_every_run_may_have_its_own_concentrations(name: str, noise: str) -> Non
     assert_agree(own, y, model=name, **noise_settings(noise, x))
 
 
+@pytest.mark.parametrize("noise", ["power-of-mean", "additive-relative"])
+@pytest.mark.parametrize("name", ["line", "quadratic", "saturation", "4PL"])
+def test_every_run_may_have_its_own_variance_function(name: str, noise: str) -> None:
+    x, y = simulated(name)
+    y[1, ::5] = np.nan
+    assert_agree(x, y, model=name, noise=noise)
+
+
 @pytest.mark.parametrize("noise", ["uniform", "relative"])
 @pytest.mark.parametrize("name", TRUTHS)
 def test_given_starts_serve_a_row_and_the_run_alone(name: str, noise: str) -> None:
