@@ -100,6 +100,14 @@ def findings_of(
     found: list[Finding] = []
     if not solution.converged or not stable:
         found.append(_not_converged(solution, stable))
+    if solution.rescued:
+        found.append(
+            Finding(
+                "simplex-needed",
+                "least squares did not settle; the curve comes from a search without derivatives (simplex): "
+                "check the formula for kinks and the start values",
+            )
+        )
     found.extend(_bounds_hit(problem, solution.parameters))
     if info.reciprocal < SINGULAR:
         found.append(

@@ -31,7 +31,7 @@ def general_least_squares(problem: Problem, start: Array) -> Array:
             max_nfev=4000,
         ).x
         if within(problem, free_run):
-            return _polish(problem, free_run)
+            return polish(problem, free_run)
     bounded = least_squares(
         problem.residual,
         start,
@@ -44,10 +44,10 @@ def general_least_squares(problem: Problem, start: Array) -> Array:
         gtol=1e-15,
         max_nfev=2000,
     ).x
-    return _polish(problem, bounded)
+    return polish(problem, bounded)
 
 
-def _polish(problem: Problem, coordinates: Array) -> Array:
+def polish(problem: Problem, coordinates: Array) -> Array:
     """Gauss–Newton steps inside the bounds while they do not make the sum larger."""
     here = coordinates
     r = problem.residual(here)

@@ -8,9 +8,15 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calib.curves.general_solver import polish
 from calib.curves.solver import Problem
 
 Array = NDArray[np.float64]
+
+
+def polished_simplex(problem: Problem, start: Array) -> Array:
+    """Solver coordinates the simplex ends at, with the last digits from Gauss–Newton steps."""
+    return polish(problem, simplex(problem, start))
 
 
 def simplex(problem: Problem, start: Array) -> Array:

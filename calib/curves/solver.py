@@ -7,7 +7,7 @@ logarithm, and residuals are scaled to order one.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,6 +21,8 @@ Array = NDArray[np.float64]
 SOLVERS = ("least-squares", "simplex")
 
 HUGE = 1e120
+# A search without derivatives takes the place of least squares where it lowers the sum by this share.
+WORTH_RESCUING = 1e-6
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,12 +117,15 @@ class Solution:
         The residual is orthogonal to the tangent plane, within `OFFSET_LIMIT`.
     offset : float
         Share of the residual left in the tangent plane.
+    rescued : bool
+        Least squares did not settle, and the derivative-free simplex found a lower sum.
     """
 
     parameters: Array
     weighted_sum: float
     converged: bool
     offset: float
+    rescued: bool = False
 
 
 def solve(problem: Problem, starts: list[Array], solver: str) -> Solution:
@@ -140,17 +145,23 @@ def solve(problem: Problem, starts: list[Array], solver: str) -> Solution:
     """
     if solver not in SOLVERS:
         raise ModelError(f"unknown solver '{solver}'; known are {', '.join(SOLVERS)}")
+    from calib.curves.general_solver import general_least_squares
+    from calib.curves.simplex import polished_simplex
+
     inside = [_inside(problem, s) for s in starts]
     if solver == "simplex":
-        from calib.curves.simplex import simplex
+        return _best([_described(problem, polished_simplex(problem, c)) for c in inside])
+    best = _best([_described(problem, general_least_squares(problem, c)) for c in inside])
+    if best.converged:
+        return best
+    # Without derivatives, where they led nowhere: a formula with kinks, or a start on the flat.
+    without = _described(problem, polished_simplex(problem, _inside(problem, best.parameters)))
+    lower = without.weighted_sum < best.weighted_sum * (1.0 - WORTH_RESCUING)
+    return replace(without, rescued=True) if lower else best
 
-        found = [simplex(problem, c) for c in inside]
-    else:
-        from calib.curves.general_solver import general_least_squares
 
-        found = [general_least_squares(problem, c) for c in inside]
-    described = [_described(problem, c) for c in found]
-    return min(described, key=lambda s: (not np.isfinite(s.weighted_sum), s.weighted_sum))
+def _best(solutions: list[Solution]) -> Solution:
+    return min(solutions, key=lambda s: (not np.isfinite(s.weighted_sum), s.weighted_sum))
 
 
 def stack_of_one(problem: Problem) -> Stack:

@@ -119,3 +119,23 @@ def test_a_curve_is_frozen() -> None:
 def test_the_fit_is_reproducible_to_the_bit() -> None:
     x, y = assay_standards(RISING, seed=3)
     np.testing.assert_array_equal(calib.fit(x, y).values, calib.fit(x, y).values)
+
+
+def test_a_search_without_derivatives_takes_over_where_derivatives_lead_nowhere() -> None:
+    """A gradient with the wrong sign sends least squares uphill; the sum is that of the right gradient."""
+    x, y = assay_standards()
+    names = ("offset", "capacity", "half")
+
+    def saturation(x, offset, capacity, half):  # type: ignore[no-untyped-def]
+        return offset + capacity * x / (half + x)
+
+    def wrong(x, offset, capacity, half):  # type: ignore[no-untyped-def]
+        share = x / (half + x)
+        return np.stack([np.ones_like(x), -share, capacity * share / (half + x)], axis=-1)
+
+    start = {"offset": 0.1, "capacity": 1.0, "half": 30.0}
+    misled = calib.fit(x, y, calib.custom_model("misled", names, saturation, wrong), start=start)
+    right = calib.fit(x, y, calib.custom_model("right", names, saturation), start=start)
+    assert "simplex-needed" in codes(misled)
+    assert "simplex-needed" not in codes(right)
+    assert misled.residual_sum == pytest.approx(right.residual_sum, rel=1e-6)
