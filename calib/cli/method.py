@@ -9,6 +9,7 @@ import click
 from calib.cli.options import acting, by_option, echo_json, json_option, opened
 
 SCHEMA = "calib-methods-1"
+DETECTION = "calib-detection-1"
 
 
 @click.group()
@@ -99,3 +100,39 @@ def show(ctx: click.Context, name: str, version: int | None, as_json: bool) -> N
             for key, v in definition.limits.items()
         ],
     )
+
+
+@method.command()
+@click.argument("name")
+@click.option("--instrument", required=True, metavar="NAME", help="The instrument it runs on.")
+@click.option("--spikes", metavar="BEGINNING", help="How the names of the spiked samples begin.")
+@click.option(
+    "--replicates", type=click.IntRange(min=1), default=1, show_default=True, help="Readings a sample."
+)
+@click.option(
+    "--runs", type=click.IntRange(min=1), default=20, show_default=True, help="Latest accepted runs."
+)
+@json_option
+@click.pass_context
+def detection(
+    ctx: click.Context,
+    name: str,
+    instrument: str,
+    spikes: str | None,
+    replicates: int,
+    runs: int,
+    as_json: bool,
+) -> None:
+    """Decision, detection and quantification limits of method NAME, by named procedures."""
+    from calib.bench.detection_limits import detection_limits
+
+    with opened(ctx) as store:
+        record = detection_limits(store, instrument, name, spikes=spikes, replicates=replicates, runs=runs)
+    if as_json:
+        from calib.report.as_json import plain
+
+        echo_json({"schema": DETECTION, **plain(record)})
+        return
+    from calib.cli.detection_screen import show_detection
+
+    show_detection(record)
