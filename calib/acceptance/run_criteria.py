@@ -15,6 +15,7 @@ UNUSABLE_FINDINGS = (
     "at-bound",
     "no-residual-freedom",
     "no-scatter",
+    "run-not-acceptable",
     "flat",
 )
 """Findings of a curve that no limit of a method can outweigh."""

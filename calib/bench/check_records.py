@@ -9,8 +9,8 @@ import numpy as np
 from sqlalchemy import select
 
 from calib import store as tables
-from calib.bench.evaluate import evaluate
 from calib.bench.keeping import versions
+from calib.bench.outlying_readings import evaluate_and_check
 from calib.bench.records import RunRecord, StandardRecord
 from calib.bench.show_run import load_run
 from calib.errors import CalibError
@@ -98,7 +98,7 @@ def _refit(store: tables.Store, number: int) -> RecordFinding | None:
         with store.reading() as session:
             record = load_run(session, number, (0, ""))
             row = session.get_one(tables.Curve, record.curve_id)
-        again = evaluate(record.definition, record.readings, record.evaluation.history)
+        again = evaluate_and_check(record.definition, record.readings, record.evaluation.history)
     except CalibError as cause:
         return RecordFinding("curve-unreadable", place, str(cause))
     difference = _difference(record, again.standards)

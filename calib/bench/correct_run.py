@@ -10,11 +10,17 @@ from datetime import datetime, timedelta, timezone
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.bench.evaluate import evaluate
 from calib.bench.find import current_curve, facts_of, instrument_named, lot_named, run_numbered, void_of
 from calib.bench.find_readings import find_readings
 from calib.bench.formed_results import CurveRun, curve_run
-from calib.bench.keeping import add_evaluation, add_quantities, current_readings, exclusions_in_force
+from calib.bench.keeping import (
+    OUTLYING,
+    add_evaluation,
+    add_quantities,
+    current_readings,
+    exclusions_in_force,
+)
+from calib.bench.outlying_readings import evaluate_and_check, refuse_outlying, stays_noisy
 from calib.bench.quantify import QUANTIFIED_ROLES, dependent_runs
 from calib.bench.quantities import quantities_of
 from calib.bench.records import Evaluation, Measured, QuantityRecord, RunRecord
@@ -79,7 +85,7 @@ def refit_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunR
     """Fit and judge a run again with the readings and exclusions in force."""
     _require_reason(reason)
     record = _correctable(store, number)
-    evaluation = evaluate(record.definition, record.readings, record.evaluation.history)
+    evaluation = evaluate_and_check(record.definition, record.readings, record.evaluation.history)
     now = store.now()
     with store.change(action="refit run", by=by, reason=reason) as session:
         _refuse_changed(session, record)
@@ -149,30 +155,61 @@ def _decide(
     record = _correctable(store, number)
     chosen = [r for name in which for r in find_readings(record.readings, name)]
     _refuse_undecidable(chosen, decision)
+    if outlying := decision == "exclude" and reason_class == OUTLYING:
+        refuse_outlying(record, chosen)
     keys = {r.key for r in chosen}
-    excluded = reason if decision == "exclude" else None
-    readings = [replace(r, excluded=excluded) if r.key in keys else r for r in record.readings]
-    evaluation = evaluate(record.definition, readings, record.evaluation.history)
+    out, as_outlying = (reason if decision == "exclude" else None), ("excluded" if outlying else None)
+    readings = [
+        replace(r, excluded=out, outlying=as_outlying) if r.key in keys else r for r in record.readings
+    ]
+    evaluation = evaluate_and_check(record.definition, readings, record.evaluation.history)
+    back = _all_back(record, keys) if outlying and stays_noisy(evaluation) else None
     now = store.now()
     with store.change(action=f"{decision} readings", by=by, reason=reason) as session:
         _refuse_changed(session, record)
-        before = exclusions_in_force(session, number)
-        for row in current_readings(session, number):
-            if row.ordinal in keys:
-                session.add(
-                    tables.Exclusion(
-                        reading_id=row.id,
-                        decision=decision,
-                        reason_class=reason_class,
-                        reason=reason,
-                        by=by,
-                        at=now,
-                        supersedes=before[row.ordinal].id if row.ordinal in before else None,
-                    )
-                )
-        session.flush()
-        _supersede(session, record, evaluation, by=by, at=now, reason=reason)
+        made = _Decision(decision, reason_class, reason, by, now)
+        _decide_on(session, number, keys, made)
+        curve_id = _supersede(session, record, evaluation, by=by, at=now, reason=reason)
+        if back is not None:
+            why = "the run scatters more than its history without it too: not acceptable"
+            _decide_on(session, number, keys, replace(made, decision="restore", reason=why))
+            _supersede(session, replace(record, curve_id=curve_id), back, by=by, at=now, reason=why)
     return show_run(store, number)
+
+
+def _all_back(record: RunRecord, keys: set[int]) -> Evaluation:
+    """The run with all its readings after it stayed noisy without the outlying one: not acceptable."""
+    readings = [replace(r, outlying="restored") if r.key in keys else r for r in record.readings]
+    return evaluate_and_check(record.definition, readings, record.evaluation.history)
+
+
+@dataclass(frozen=True, slots=True)
+class _Decision:
+    """What is decided about readings, why, by whom and when."""
+
+    decision: str
+    reason_class: str
+    reason: str
+    by: str
+    at: datetime
+
+
+def _decide_on(session: Session, number: int, keys: set[int], made: _Decision) -> None:
+    before = exclusions_in_force(session, number)
+    for row in current_readings(session, number):
+        if row.ordinal in keys:
+            session.add(
+                tables.Exclusion(
+                    reading_id=row.id,
+                    decision=made.decision,
+                    reason_class=made.reason_class,
+                    reason=made.reason,
+                    by=made.by,
+                    at=made.at,
+                    supersedes=before[row.ordinal].id if row.ordinal in before else None,
+                )
+            )
+    session.flush()
 
 
 def _refuse_undecidable(chosen: Sequence[Measured], decision: str) -> None:
@@ -210,8 +247,8 @@ def _refuse_changed(session: Session, record: RunRecord) -> None:
 
 def _supersede(
     session: Session, record: RunRecord, evaluation: Evaluation, *, by: str, at: datetime, reason: str
-) -> None:
-    """Write the new curve over the old one, with all quantities that rest on it."""
+) -> int:
+    """Write the new curve over the old one, with all quantities that rest on it; its number."""
     number = record.heading.id or 0
     ids = {r.ordinal: r.id for r in current_readings(session, number)}
     curve_id = add_evaluation(
@@ -221,12 +258,13 @@ def _supersede(
     for dependent in dependent_runs(session, number):
         session.flush()
         _requantify(session, dependent)
+    return curve_id
 
 
 def _judge_again(session: Session, number: int, by: str, now: datetime, reason: str) -> None:
     """Evaluate a run anew: another instrument has another detector ceiling."""
     record = load_run(session, number, (0, ""))
-    evaluation = evaluate(record.definition, record.readings, record.evaluation.history)
+    evaluation = evaluate_and_check(record.definition, record.readings, record.evaluation.history)
     _supersede(session, record, evaluation, by=by, at=now, reason=reason)
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -22,6 +23,7 @@ from calib.bench.records import (
     VerdictRecord,
 )
 from calib.curves.curve import Curve
+from calib.curves.diagnostics import Finding
 from calib.curves.fit import fit
 from calib.curves.history_noise import HistoryNoise
 from calib.curves.own_noise import fit_with_own_noise
@@ -29,6 +31,7 @@ from calib.errors import InputError
 
 STANDARD_ROLES = ("standard", "anchor")
 BLANK_ROLES = ("blank", "zero", "carry-over")
+NOT_ACCEPTABLE = "run-not-acceptable"
 CHECK_ROLES = ("check", "first-check")
 
 
@@ -78,6 +81,7 @@ def settle(
     history: NoiseHistory | None = None,
 ) -> Evaluation:
     """Judge and quantify on the first curve, or on what the method's exclusion rule makes of it."""
+    curve = _as_decided(curve, readings)
     if definition.exclusion is None:
         return assemble(definition, readings, curve, history)[0]
     return evaluate_with_exclusions(
@@ -87,6 +91,19 @@ def settle(
         lambda kept: fitted_curve(definition, fitted_readings(definition, kept), history),
         lambda kept, found: assemble(definition, kept, found, history),
     )
+
+
+def _as_decided(curve: Curve, readings: Sequence[Measured]) -> Curve:
+    """The curve of a run that stayed noisy without its outlying reading is not acceptable."""
+    back = [r.where for r in readings if r.outlying == "restored"]
+    if not back:
+        return curve
+    finding = Finding(
+        NOT_ACCEPTABLE,
+        f"run not acceptable: without {', '.join(back)}, left out as outlying, it still scattered more than its "
+        "history; all readings are back in the fit: find the cause and measure again",
+    )
+    return replace(curve, findings=(*curve.findings, finding))
 
 
 def fitted_readings(definition: MethodDefinition, readings: Iterable[Measured]) -> list[Measured]:

@@ -20,19 +20,17 @@ from calib.bench.method_definition import MethodDefinition, read_definition
 from calib.bench.records import (
     Evaluation,
     Measured,
-    NoiseHistory,
-    PastRun,
     QuantityRecord,
     StandardRecord,
     VerdictRecord,
 )
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding
-from calib.curves.history_noise import HistoryNoise
 from calib.curves.noise import noise_from_dict
 from calib.curves.standards import Standards, frozen
 from calib.models import response_model
 
+OUTLYING = "outlying"
 WITHDRAWN = "withdrawn"
 
 
@@ -163,6 +161,7 @@ def _measured(
         position=row.position,
         excluded=exclusion.reason if out and exclusion is not None else None,
         saturated=is_saturated(row.response, row.absent_cause, ceiling),
+        outlying=_outlying(exclusion),
         place=", ".join(
             f"{word} {value}"
             for word, value in (("sheet", row.sheet), ("row", row.row), ("column", row.column))
@@ -170,6 +169,12 @@ def _measured(
         ),
         internal_standard=row.internal_standard,
     )
+
+
+def _outlying(exclusion: tables.Exclusion | None) -> str | None:
+    if exclusion is None or exclusion.reason_class != OUTLYING:
+        return None
+    return "excluded" if exclusion.decision == "exclude" else "restored"
 
 
 def is_saturated(response: float | None, absent_cause: str | None, ceiling: float | None) -> bool:
@@ -210,14 +215,6 @@ def curve_of(row: tables.Curve, standards: Sequence[Measured]) -> Curve:
         findings=tuple(Finding(f["code"], f["message"]) for f in row.findings),
         solver=row.solver,
     )
-
-
-def history_of(row: tables.Curve) -> NoiseHistory | None:
-    """What the noise model of a curve was pooled over, where it was."""
-    noise = noise_from_dict(row.noise)
-    if not isinstance(noise, HistoryNoise):
-        return None
-    return NoiseHistory(noise, tuple(PastRun(**past) for past in row.noise_from or ()))
 
 
 def standard_records(
@@ -290,6 +287,7 @@ def _curve_row(run_id: int, evaluation: Evaluation, by: str, at: datetime) -> ta
         fixed=curve.fixed,
         bounds={n: [finite(float(low)), finite(float(high))] for n, low, high in pairs},
         noise=curve.noise.to_dict(),
+        outlying=None if evaluation.outlying is None else asdict(evaluation.outlying),
         noise_from=None if history is None else [asdict(past) for past in history.past],
         parameters={n: finite(v) for n, v in curve.parameters.items()},
         covariance=[[finite(float(v)) for v in line] for line in curve.covariance],

@@ -10,9 +10,9 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.bench.evaluate import evaluate
 from calib.bench.keeping import add_evaluation, add_first_quantities, versions
 from calib.bench.noise_history import refuse_changed_history
+from calib.bench.outlying_readings import evaluate_and_check
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.records import Evaluation, RunHeading, RunRecord
 from calib.bench.show_run import attempts_on_day, local, lot_facts, show_run
@@ -42,7 +42,9 @@ def evaluate_plan(plan: LogPlan) -> EvaluatedPlan:
                 f"{plan.file.name}: no standards in it; unknowns alone belong to calib quantify, "
                 "which reads them on the curve in force"
             )
-    return EvaluatedPlan(plan, tuple(evaluate(r.definition, r.measured, r.history) for r in plan.runs))
+    return EvaluatedPlan(
+        plan, tuple(evaluate_and_check(r.definition, r.measured, r.history) for r in plan.runs)
+    )
 
 
 def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, ...]:

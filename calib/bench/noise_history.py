@@ -16,7 +16,8 @@ from calib.bench.keeping import curve_of, definition_of
 from calib.bench.method_definition import HISTORY, MethodDefinition
 from calib.bench.records import NoiseHistory, PastRun
 from calib.curves.curve import Curve
-from calib.curves.history_noise import ENOUGH_RUNS
+from calib.curves.history_noise import ENOUGH_RUNS, HistoryNoise
+from calib.curves.noise import noise_from_dict
 from calib.curves.pooling import MOST_RUNS, pool_noise
 from calib.curves.standards import Standards, frozen
 from calib.errors import InputError
@@ -53,6 +54,14 @@ def history_before(
         # Past runs without scatter tell nothing; the curve says that it rests on one run.
         return None
     return NoiseHistory(noise, found) if noise.runs >= ENOUGH_RUNS else None
+
+
+def history_of(row: tables.Curve) -> NoiseHistory | None:
+    """What the noise model of a curve was pooled over, where it was."""
+    noise = noise_from_dict(row.noise)
+    if not isinstance(noise, HistoryNoise):
+        return None
+    return NoiseHistory(noise, tuple(PastRun(**past) for past in row.noise_from or ()))
 
 
 def past_runs(

@@ -18,6 +18,8 @@ class Measured:
 
     ``concentration`` is nominal, in the method's unit. ``excluded`` holds the reason
     when the reading is left out of the fit. ``place`` says where in the file it stands.
+    ``outlying`` is 'excluded' where it was left out as outlying, 'restored' where that was undone
+    because the run stayed noisy without it.
     """
 
     key: int
@@ -32,6 +34,7 @@ class Measured:
     saturated: bool
     place: str = ""
     internal_standard: float | None = None
+    outlying: str | None = None
 
     @property
     def where(self) -> str:
@@ -151,11 +154,62 @@ class NoiseHistory:
 
 
 @dataclass(frozen=True, slots=True)
+class ConcentrationEffect:
+    """What a level or control reads with and without one reading; None where nothing is read.
+
+    ``kind`` is 'level' (at its own response on the curve) or 'control'; ``name`` is that of a control.
+    """
+
+    kind: str
+    name: str
+    before: float | None
+    after: float | None
+
+    @property
+    def relative_change(self) -> float | None:
+        """Without over with the reading, minus 1."""
+        if self.before is None or self.after is None or self.before == 0:
+            return None
+        return self.after / self.before - 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class OutlyingProposal:
+    """A reading that does not belong to its run, proposed to a person who may leave it out.
+
+    Attributes
+    ----------
+    key, where, level
+        Ordinal in the file, name and nominal concentration of the reading.
+    studentised, limit : float
+        Residual over its standard deviation, and the size it may have.
+    against : str
+        Whose scatter it was compared with.
+    last_of_end_level : bool
+        The only reading of an end level, which may not be left out.
+    still_noisy : bool
+        Whether the run scatters more than its history without it too: then it is not acceptable.
+    effects : tuple of ConcentrationEffect
+    """
+
+    key: int
+    where: str
+    level: float
+    studentised: float
+    limit: float
+    against: str
+    last_of_end_level: bool
+    still_noisy: bool
+    effects: tuple[ConcentrationEffect, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Evaluation:
     """A run evaluated: nothing is stored yet.
 
     ``before`` holds the earlier curves where the method's exclusion rule left out standards, oldest first.
-    ``history`` is what the noise model of the curve was pooled over, where it was.
+    ``history`` is what the noise model of the curve was pooled over, where it was; ``outlying`` a
+    reading that is proposed to be left out.
     """
 
     curve: Curve
@@ -165,6 +219,7 @@ class Evaluation:
     quantities: tuple[QuantityRecord, ...]
     before: tuple[Evaluation, ...] = ()
     history: NoiseHistory | None = None
+    outlying: OutlyingProposal | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -27,13 +27,14 @@ from calib.bench.keeping import (
     curve_of,
     definition_of,
     exclusions_in_force,
-    history_of,
     measured_of,
     quantity_record,
     standard_records,
     verdict_record,
 )
 from calib.bench.method_definition import MethodDefinition
+from calib.bench.noise_history import history_of
+from calib.bench.outlying_readings import outlying_of
 from calib.bench.records import Evaluation, LotFacts, Measured, RunHeading, RunRecord
 from calib.intake import conversion_factor
 
@@ -230,7 +231,13 @@ def stored_evaluation(
     )
     blanks = blank_records(curve, own)
     return Evaluation(
-        curve, standards, blanks, verdict_record(verdict), quantities, history=history_of(curve_row)
+        curve,
+        standards,
+        blanks,
+        verdict_record(verdict),
+        quantities,
+        history=history_of(curve_row),
+        outlying=outlying_of(curve_row),
     )
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
-from calib.cli.run_screen import show_verdict_line
+from calib.cli.run_screen import show_outlying, show_verdict_line
 from calib.cli.screen import say
 from calib.report.run_rows import excluded_readings, rule_rows
 
@@ -28,6 +28,7 @@ def show_rules(record: RunRecord) -> None:
     kept = [r for r in rows if not (r.failed or r.warns)]
     _lines("Kept", [r for r in kept if not r.idle], "✓")
     _lines("Nothing to judge", [r for r in kept if r.idle], "–")
+    show_outlying(record.evaluation)
     excluded = excluded_readings(record)
     if excluded:
         say("Left out of the fit", "bold")

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 from calib.bench.flags import in_words
 from calib.bench.records import lowest_reported
 from calib.cli.screen import print_table, say
-from calib.report.curve_wording import history_text, interval_scale_text
+from calib.report.curve_wording import effects_text, history_text, interval_scale_text, outlying_text
 from calib.report.wording import LARGEST_PLAIN, SMALLEST_PLAIN, number, percent, result_text, rounded
 
 if TYPE_CHECKING:
@@ -142,6 +142,14 @@ def show_curve(evaluation: Evaluation) -> None:
         say(f"  intervals rest on SD {interval_scale_text(evaluation)}")
     for finding in curve.findings:
         say(f"  ! {finding.message}")
+    show_outlying(evaluation)
+
+
+def show_outlying(evaluation: Evaluation) -> None:
+    """The reading proposed to be left out, and what that would change."""
+    if evaluation.outlying is not None:
+        say(f"  ! {outlying_text(evaluation.outlying)}")
+        say(f"    {effects_text(evaluation.outlying)}")
 
 
 def _with_u(name: str, value: float, u: float) -> str:

@@ -20,6 +20,7 @@ if TYPE_CHECKING:
         BlankRecord,
         Evaluation,
         NoiseHistory,
+        OutlyingProposal,
         QuantityRecord,
         RunHeading,
         RunRecord,
@@ -48,6 +49,7 @@ def run_json(record: RunRecord) -> dict[str, Any]:
     return {
         "run": _heading(record.heading) | {"curve_run": record.curve_run},
         "curve": _curve(record.curve_id, evaluation),
+        "outlying_reading": _outlying(evaluation.outlying),
         "standards": [_standard(s) for s in evaluation.standards],
         "blanks": [_blank(b) for b in evaluation.blanks],
         "verdict": _verdict(evaluation, record.definition.concentration_unit),
@@ -85,6 +87,7 @@ def preview_json(evaluated: EvaluatedPlan) -> dict[str, Any]:
                 "lot": run.lot.name if run.lot else None,
                 "notes": list(run.notes),
                 "curve": _curve(None, evaluation),
+                "outlying_reading": _outlying(evaluation.outlying),
                 "standards": [_standard(s) for s in evaluation.standards],
                 "verdict": _verdict(evaluation, run.definition.concentration_unit),
                 "quantities": [quantity_json(q) for q in evaluation.quantities],
@@ -302,6 +305,16 @@ def _noise_history(history: NoiseHistory | None) -> dict[str, Any] | None:
         "residual_sd": noise.spread.sd,
         "weight": noise.spread.weight,
         "degrees_of_freedom": noise.spread.degrees_of_freedom,
+    }
+
+
+def _outlying(outlying: OutlyingProposal | None) -> dict[str, Any] | None:
+    if outlying is None:
+        return None
+    effects = [plain(e) | {"relative_change": e.relative_change} for e in outlying.effects]
+    return {k: v for k, v in plain(outlying).items() if k != "key"} | {
+        "reading": f"#{outlying.key}",
+        "effects": effects,
     }
 
 

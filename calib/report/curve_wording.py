@@ -6,10 +6,11 @@ import math
 from collections.abc import Iterable
 from typing import TYPE_CHECKING
 
-from calib.report.wording import MISSING, number, percent, rounded, with_unit
+from calib.acceptance.wording import signed_percent
+from calib.report.wording import LEVEL_DIGITS, MISSING, number, percent, rounded, significant, with_unit
 
 if TYPE_CHECKING:
-    from calib.bench.records import Evaluation, NoiseHistory
+    from calib.bench.records import Evaluation, NoiseHistory, OutlyingProposal
     from calib.curves.curve import Curve
 
 
@@ -104,6 +105,42 @@ def interval_scale_text(evaluation: Evaluation) -> str:
     return (
         f"{text}: this run's {number(curve.residual_sd)} moderated by its history ({number(spread.sd)}, "
         f"which counts as {spread.weight:.0f} of {spread.degrees_of_freedom:.0f} degrees of freedom)"
+    )
+
+
+def outlying_text(outlying: OutlyingProposal) -> str:
+    """Propose a reading to be left out, and say what a person has to decide."""
+    found = (
+        f"{outlying.where} at level {number(outlying.level, LEVEL_DIGITS)} does not belong to the run: studentised "
+        f"residual {outlying.studentised:+.1f}, limit {outlying.limit:.2f}, against {outlying.against}"
+    )
+    if outlying.last_of_end_level:
+        return f"{found}; it is the last reading of an end level and stays in: measure the level again"
+    if outlying.still_noisy:
+        return f"{found}; without it the run still scatters more than its history: not acceptable, find the cause"
+    return (
+        f"{found}; proposed to be left out, by a person with a reason (calib run exclude … --cause outlying)"
+    )
+
+
+def effect_rows(outlying: OutlyingProposal) -> tuple[tuple[str, str, str, str], ...]:
+    """What is read with and without the reading: level or control, with, without, change."""
+    return tuple(
+        (
+            f"{e.kind} {e.name or number(e.before)}",
+            significant(e.before),
+            significant(e.after),
+            MISSING if e.relative_change is None else signed_percent(e.relative_change, math.inf),
+        )
+        for e in outlying.effects
+    )
+
+
+def effects_text(outlying: OutlyingProposal) -> str:
+    """Say in one line what leaving the reading out would change."""
+    changes = [f"{what} {change}" for what, _, _, change in effect_rows(outlying)]
+    return (
+        f"without it: {', '.join(changes)}" if changes else "without it no level or control is read otherwise"
     )
 
 

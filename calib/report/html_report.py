@@ -82,6 +82,10 @@ def _view(record: RunRecord) -> dict[str, Any]:
         "equation": curve_wording.equation(curve),
         "parameters": curve_wording.parameter_rows(curve, *units),
         "residual_sd": curve_wording.residual_sd_text(curve, *units),
+        "outlying": record.evaluation.outlying and curve_wording.outlying_text(record.evaluation.outlying),
+        "effects": curve_wording.effect_rows(record.evaluation.outlying)
+        if record.evaluation.outlying
+        else (),
         "interval_scale": curve_wording.interval_scale_text(record.evaluation),
         "history": curve_wording.history_text(record.evaluation.history)
         if record.evaluation.history

@@ -17,7 +17,8 @@ class Curve(Base):
     ``parameters`` maps names to values, ``covariance`` is a list of rows in the
     same order; a cell that is undefined is null. ``undetermined`` names parameters
     without a standard error. ``noise_from`` lists run and curve of each past run
-    a noise model was pooled over. ``lowest`` and ``highest`` are
+    a noise model was pooled over, ``outlying`` is the reading proposed to be left out,
+    with the effect it would have. ``lowest`` and ``highest`` are
     the calibrated range in the run's concentration unit.
     """
 
@@ -31,6 +32,7 @@ class Curve(Base):
     bounds: Mapped[dict[str, Any]]
     noise: Mapped[dict[str, Any]]
     noise_from: Mapped[list[Any] | None]
+    outlying: Mapped[dict[str, Any] | None]
     parameters: Mapped[dict[str, Any]]
     covariance: Mapped[list[Any]]
     undetermined: Mapped[list[Any]]

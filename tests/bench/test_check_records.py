@@ -99,7 +99,7 @@ def test_another_verdict_than_the_stored_one_is_found(bench, monkeypatch):
         found = evaluate(definition, readings, history)
         return replace(found, verdict=replace(found.verdict, decision="rejected"))
 
-    monkeypatch.setattr(check_records, "evaluate", stricter)
+    monkeypatch.setattr(check_records, "evaluate_and_check", stricter)
     assert codes(bench) == [("curve-differs", "run 1")]
 
 

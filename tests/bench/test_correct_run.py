@@ -290,14 +290,14 @@ def test_a_run_that_does_not_exist_is_named(bench, number):
 
 def test_a_correction_made_meanwhile_is_noticed(bench, monkeypatch):
     bench.log(SPOILED)
-    real = correct_run.evaluate
+    real = correct_run.evaluate_and_check
 
     def slow(definition, readings, history):
-        monkeypatch.setattr(correct_run, "evaluate", real)
+        monkeypatch.setattr(correct_run, "evaluate_and_check", real)
         bench.laboratory.exclude(1, ["#4"], reason="someone else")
         return real(definition, readings, history)
 
-    monkeypatch.setattr(correct_run, "evaluate", slow)
+    monkeypatch.setattr(correct_run, "evaluate_and_check", slow)
     with pytest.raises(InputError, match="run 1 was corrected by someone else meanwhile"):
         bench.laboratory.exclude(1, ["#3"], reason="drop fell in")
     assert [s.key for s in bench.laboratory.run(1).evaluation.standards if s.excluded] == [4]

@@ -1,10 +1,10 @@
 """noise = "history" in a method: which runs are pooled, what is kept, and what is never pooled again."""
 
-from datetime import datetime, timedelta
+from datetime import timedelta
 
-import numpy as np
 import pytest
-from small_laboratory import METHOD, Line, header_block, signal, state_of, unknown
+from noisy_days import FIRST, day, log_day
+from small_laboratory import METHOD, header_block, state_of
 
 from calib.bench.log_run import evaluate_plan, log_plan
 from calib.bench.plan_run import LogOptions, plan_file
@@ -12,34 +12,6 @@ from calib.bench.register import add_method
 from calib.bench.replay import ReplayRequest
 from calib.curves.history_noise import HistoryNoise
 from calib.errors import InputError
-
-FIRST = datetime.fromisoformat("2026-03-02T08:00:00+02:00")
-LEVELS = (1.0, 2.0, 4.0, 6.0, 8.0, 10.0)
-
-
-def day(number: int, sd: float = 0.01, odd: float = 0.0) -> list[Line]:
-    """Standards that scatter by a share of their response; ``odd`` is added to the last reading."""
-    rng = np.random.default_rng(number)
-    lines = [
-        Line(f"S{n}", "standard", level, signal(level) * (1 + sd * rng.standard_normal()))
-        for n, level in enumerate(LEVELS * 2, start=1)
-    ]
-    lines[-3] = Line(lines[-3].sample, "standard", lines[-3].level, lines[-3].response + odd)
-    return [*lines, unknown("U1", 3.0), unknown("U1", 3.02)]
-
-
-@pytest.fixture
-def asking(bench):
-    """The bench with a second version of its method, which takes its noise from the history."""
-    text = METHOD.format(name="line-a", analyte="alpha").replace('"uniform"', '"history"')
-    file = bench.file("history.toml", text.replace("residual_sd = 0.2", "relative_error = 0.2"))
-    add_method(bench.store, file, by="KM")
-    return bench
-
-
-def log_day(bench, number: int, **settings):
-    started = (FIRST + timedelta(days=number)).isoformat()
-    return bench.log(day(number, **settings), name=f"day-{number}.csv", started=started)
 
 
 def codes(record) -> set[str]:
