@@ -9,7 +9,13 @@ from typing import TYPE_CHECKING
 from calib.bench.flags import in_words
 from calib.bench.records import lowest_reported
 from calib.cli.screen import print_table, say
-from calib.report.curve_wording import effects_text, history_text, interval_scale_text, outlying_text
+from calib.report.curve_wording import (
+    NOT_IDENTIFIED,
+    effects_text,
+    history_text,
+    interval_scale_text,
+    outlying_text,
+)
 from calib.report.wording import LARGEST_PLAIN, SMALLEST_PLAIN, number, percent, result_text, rounded
 
 if TYPE_CHECKING:
@@ -132,7 +138,10 @@ def show_curve(evaluation: Evaluation) -> None:
         f"{name} {number(value)} (fixed)" if name in curve.fixed else _with_u(name, value, errors[name])
         for name, value in curve.parameters.items()
     ]
-    say(f"  {curve.model}: {', '.join(parts)}")
+    if curve.identified:
+        say(f"  {curve.model}: {', '.join(parts)}")
+    else:
+        say(f"  {curve.model}: parameters {NOT_IDENTIFIED}; values inside the standards stand")
     say(
         f"  residual SD {number(curve.residual_sd)} with {curve.degrees_of_freedom} degrees of freedom; "
         f"noise {curve.noise.label}"

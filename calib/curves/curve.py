@@ -22,6 +22,10 @@ if TYPE_CHECKING:
 Array = NDArray[np.float64]
 
 
+# Findings under which the parameters are no properties of what was measured.
+NOT_IDENTIFIED = ("asymptote-not-reached", "not-identifiable")
+
+
 @dataclass(frozen=True, slots=True)
 class BackCalculation:
     """Standards read back on their own curve.
@@ -109,6 +113,11 @@ class Curve:
         """Standard uncertainty of each parameter; 0 for a fixed one, nan for one not determined."""
         u = np.where(self.determined, np.sqrt(np.diag(self.covariance)), np.nan)
         return {n: float(v) for n, v in zip(self.response_model.names, u, strict=True)}
+
+    @property
+    def identified(self) -> bool:
+        """Whether the parameters mean anything; values read inside the standards stand in either case."""
+        return all(f.code not in NOT_IDENTIFIED for f in self.findings)
 
     @property
     def fixed(self) -> dict[str, float]:

@@ -280,6 +280,7 @@ def _curve(number: int | None, evaluation: Evaluation) -> dict[str, Any]:
             name: {"value": plain(value), "u": plain(errors[name])}
             for name, value in curve.parameters.items()
         },
+        "parameters_identified": curve.identified,
         "fixed": sorted(curve.fixed),
         "residual_sd": plain(curve.residual_sd),
         "degrees_of_freedom": curve.degrees_of_freedom,

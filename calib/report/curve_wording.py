@@ -14,6 +14,9 @@ if TYPE_CHECKING:
     from calib.curves.curve import Curve
 
 
+NOT_IDENTIFIED = "not identified"
+
+
 def equation(curve: Curve) -> str:
     """Formula of the model, response y against concentration x."""
     return f"y = {curve.response_model.formula}"
@@ -42,7 +45,10 @@ def parameter_rows(
     rows = []
     for parameter in curve.response_model.parameters:
         value, u = curve.parameters[parameter.name], errors[parameter.name]
-        shown, uncertainty = (number(value), "held") if parameter.name in fixed else _with_u(value, u)
+        if parameter.name in fixed:
+            shown, uncertainty = number(value), "held"
+        else:
+            shown, uncertainty = _with_u(value, u) if curve.identified else (NOT_IDENTIFIED, MISSING)
         unit = unit_words(parameter.unit_of, concentration_unit, response_unit)
         rows.append((parameter.name, parameter.meaning, shown, uncertainty, unit))
     return tuple(rows)
