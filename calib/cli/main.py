@@ -23,6 +23,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "sample": ("sample:sample", "What can be released, what waits, and why."),
     "drift": ("drift:drift", "Review an instrument over time."),
     "replay": ("replay:replay", "Evaluate past runs under another method version; nothing is written."),
+    "prove": ("prove:prove", "Simulate a method as it is: do its intervals cover, what do its rules notice."),
     "report": ("report:report", "Write the report of a run to a file."),
     "plot": ("report:plot", "Draw the curve of a run to a file."),
     "store": ("store:store", "Check, back up and upgrade the store."),

@@ -59,6 +59,17 @@ def write_figure(figure: Figure, path: str | Path) -> Path:
     return _write(path, picture(figure, _suffix(path, PICTURES).removeprefix(".")))
 
 
+def check_picture(path: str | Path) -> None:
+    """Refuse a name that ends in no kind of picture, before the work is done.
+
+    Raises
+    ------
+    InputError
+        For another suffix than .svg or .png.
+    """
+    _suffix(Path(path), PICTURES)
+
+
 def picture(figure: Figure, kind: str) -> bytes:
     """Draw a figure as 'svg' or 'png'; the same figure gives the same bytes."""
     from matplotlib import rc_context
