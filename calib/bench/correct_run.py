@@ -10,7 +10,15 @@ from datetime import datetime, timedelta, timezone
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.bench.find import current_curve, facts_of, instrument_named, lot_named, run_numbered, void_of
+from calib.bench.find import (
+    current_curve,
+    facts_of,
+    instrument_named,
+    preparation_of,
+    run_numbered,
+    solution_named,
+    void_of,
+)
 from calib.bench.find_readings import find_readings
 from calib.bench.formed_results import CurveRun, curve_run
 from calib.bench.keeping import (
@@ -300,22 +308,36 @@ def _amend_facts(session: Session, number: int, change: Change, reason: str, by:
     """New facts with the reason, also where only readings change: they have no reason of their own."""
     old = facts_of(session, number)
     instrument = instrument_named(session, change.instrument) if change.instrument else None
-    lot = lot_named(session, change.lot) if change.lot else None
     at, offset = _amended_time(old, change.at)
-    session.add(
-        tables.RunFacts(
-            run_id=number,
-            instrument_id=instrument.id if instrument else old.instrument_id,
-            lot_id=lot.id if lot else old.lot_id,
-            at=at,
-            offset_minutes=offset,
-            operator=change.operator or old.operator,
-            supersedes=old.id,
-            reason=reason,
-            by=by,
-            recorded_at=now,
-        )
+    lot_id, prepared = _amended_material(session, old, change.lot)
+    facts = tables.RunFacts(
+        run_id=number,
+        instrument_id=instrument.id if instrument else old.instrument_id,
+        lot_id=lot_id,
+        at=at,
+        offset_minutes=offset,
+        operator=change.operator or old.operator,
+        supersedes=old.id,
+        reason=reason,
+        by=by,
+        recorded_at=now,
     )
+    session.add(facts)
+    if prepared is not None:
+        session.flush()
+        session.add(tables.RunSolution(facts_id=facts.id, preparation_id=prepared.id))
+
+
+def _amended_material(
+    session: Session, old: tables.RunFacts, name: str | None
+) -> tuple[int | None, tables.Preparation | None]:
+    """Number of the lot, and the prepared solution where one was used."""
+    if name is None:
+        return old.lot_id, preparation_of(session, old)
+    named = solution_named(session, name)
+    if isinstance(named, tables.Preparation):
+        return named.lot_id, named
+    return named.id, None
 
 
 def _amended_time(old: tables.RunFacts, at: datetime | None) -> tuple[datetime, int]:

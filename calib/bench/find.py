@@ -8,7 +8,7 @@ from sqlalchemy import func, select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.errors import NotFound
+from calib.errors import InputError, NotFound
 
 LARGEST_KEY = 2**63 - 1  # what a database holds
 
@@ -47,19 +47,38 @@ def method_named(session: Session, name: str, version: int | None = None) -> tab
     return row
 
 
-def lot_named(session: Session, name: str) -> tables.StandardLot:
-    """Standard lot of that name.
+def refuse_taken_name(session: Session, name: str) -> None:
+    """Refuse a name for a lot or a prepared solution that one of them has.
+
+    Raises
+    ------
+    InputError
+        Saying which of the two it is.
+    """
+    for table, what in ((tables.StandardLot, "standard lot"), (tables.Preparation, "prepared solution")):
+        if session.scalar(select(table.id).where(table.name == name)) is not None:
+            raise InputError(f"{what} '{name}' is registered already; choose another name")
+
+
+def solution_named(session: Session, name: str) -> tables.StandardLot | tables.Preparation:
+    """Standard lot or prepared solution of that name.
 
     Raises
     ------
     NotFound
-        Naming the lots there are.
+        Naming those there are.
     """
-    row = session.scalar(select(tables.StandardLot).where(tables.StandardLot.name == name))
-    if row is None:
-        known = session.scalars(select(tables.StandardLot.name).order_by(tables.StandardLot.name)).all()
-        raise NotFound(f"unknown standard lot '{name}'; {_known(known, 'calib lot add')}")
-    return row
+    lot = session.scalar(select(tables.StandardLot).where(tables.StandardLot.name == name))
+    if lot is not None:
+        return lot
+    prepared = session.scalar(select(tables.Preparation).where(tables.Preparation.name == name))
+    if prepared is not None:
+        return prepared
+    known = [
+        *session.scalars(select(tables.StandardLot.name).order_by(tables.StandardLot.name)),
+        *session.scalars(select(tables.Preparation.name).order_by(tables.Preparation.name)),
+    ]
+    raise NotFound(f"unknown standard lot '{name}'; {_known(known, 'calib lot add')}")
 
 
 def run_numbered(session: Session, number: int) -> tables.Run:
@@ -83,6 +102,15 @@ def facts_of(session: Session, run_id: int) -> tables.RunFacts:
     return session.scalars(
         select(tables.RunFacts).where(tables.RunFacts.run_id == run_id, tables.is_current(tables.RunFacts))
     ).one()
+
+
+def preparation_of(session: Session, facts: tables.RunFacts) -> tables.Preparation | None:
+    """The prepared solution the standards of a run were made from, if one was named."""
+    return session.scalar(
+        select(tables.Preparation)
+        .join(tables.RunSolution, tables.RunSolution.preparation_id == tables.Preparation.id)
+        .where(tables.RunSolution.facts_id == facts.id)
+    )
 
 
 def void_of(session: Session, run_id: int) -> tables.RunVoid | None:

@@ -9,7 +9,7 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session, aliased
 
 from calib import store as tables
-from calib.bench.find import void_of
+from calib.bench.find import preparation_of, void_of
 from calib.bench.records import Amendment
 
 
@@ -66,13 +66,20 @@ def _changed_facts(session: Session, run: tables.Run) -> list[Amendment]:
 def _differences(session: Session, before: tables.RunFacts, after: tables.RunFacts) -> str:
     facts: tuple[tuple[str, Callable[[tables.RunFacts], str]], ...] = (
         ("instrument", lambda f: session.get_one(tables.Instrument, f.instrument_id).name),
-        ("lot", lambda f: session.get_one(tables.StandardLot, f.lot_id).name if f.lot_id else "none"),
+        ("lot", lambda f: _material(session, f)),
         ("time", lambda f: f"{_on_its_clock(f.at, f.offset_minutes):%Y-%m-%d %H:%M:%S %z}"),
         ("operator", lambda f: f.operator),
     )
     return ", ".join(
         f"{name} from {say(before)} to {say(after)}" for name, say in facts if say(before) != say(after)
     )
+
+
+def _material(session: Session, facts: tables.RunFacts) -> str:
+    prepared = preparation_of(session, facts)
+    if prepared is not None:
+        return prepared.name
+    return session.get_one(tables.StandardLot, facts.lot_id).name if facts.lot_id else "none"
 
 
 def _on_its_clock(at: datetime, offset_minutes: int) -> datetime:

@@ -105,7 +105,7 @@ def _logged_record(
         curves_before=len(evaluation.before),
         attempts_that_day=attempts,
         versions=versions(),
-        lot=lot_facts(run.lot) if run.lot else None,
+        lot=lot_facts(run.lot, run.prepared) if run.lot else None,
         chain_sequence=head[0],
         chain_head=head[1],
     )
@@ -124,7 +124,7 @@ def _logged_heading(plan: LogPlan, run: PlannedRun, run_id: int, file: str) -> R
         at=local(run.at, run.offset_minutes),
         operator=run.operator,
         by=plan.by,
-        lot=run.lot.name if run.lot else None,
+        lot=run.material,
         file=file,
         fingerprint=plan.file.fingerprint,
         layout=plan.file.layout,
@@ -201,18 +201,20 @@ def add_run(
     )
     session.add(row)
     session.flush()
-    session.add(
-        tables.RunFacts(
-            run_id=row.id,
-            instrument_id=run.instrument.id,
-            lot_id=run.lot.id if run.lot else None,
-            at=run.at,
-            offset_minutes=run.offset_minutes,
-            operator=run.operator,
-            by=plan.by,
-            recorded_at=now,
-        )
+    facts = tables.RunFacts(
+        run_id=row.id,
+        instrument_id=run.instrument.id,
+        lot_id=run.lot.id if run.lot else None,
+        at=run.at,
+        offset_minutes=run.offset_minutes,
+        operator=run.operator,
+        by=plan.by,
+        recorded_at=now,
     )
+    session.add(facts)
+    if run.prepared:
+        session.flush()
+        session.add(tables.RunSolution(facts_id=facts.id, preparation_id=run.prepared.id))
     return row.id
 
 

@@ -8,7 +8,7 @@ from datetime import datetime
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.bench.find import lot_named
+from calib.bench.find import solution_named
 from calib.errors import InputError, NotFound
 
 HOW = "or log it all the same with --override-lot and the reason"
@@ -24,8 +24,8 @@ class Override:
 
 def usable_lot(
     session: Session, name: str | None, at: datetime, reason: str | None
-) -> tuple[tables.StandardLot | None, tuple[Override, ...]]:
-    """Find the standard lot of that name, and refuse one that is unknown or expired.
+) -> tuple[tables.StandardLot | tables.Preparation | None, tuple[Override, ...]]:
+    """Find the standard lot or prepared solution of that name, and refuse one that is unknown or expired.
 
     Parameters
     ----------
@@ -47,14 +47,15 @@ def usable_lot(
     if name is None:
         return None, ()
     try:
-        lot = lot_named(session, name)
+        lot = solution_named(session, name)
     except NotFound as unknown:
         if reason is None:
             raise NotFound(f"{unknown}; {HOW}") from unknown
         return None, (Override(f"standard lot {name} is not registered", reason),)
     if lot.expiry is None or at.date() <= lot.expiry:
         return lot, ()
-    what = f"standard lot {name} expired on {lot.expiry.isoformat()}, before this run"
+    kind = "prepared solution" if isinstance(lot, tables.Preparation) else "standard lot"
+    what = f"{kind} {name} expired on {lot.expiry.isoformat()}, before this run"
     if reason is None:
         raise InputError(f"{what}; calibrate with one in date, {HOW}")
     return lot, (Override(what, reason),)

@@ -11,7 +11,7 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
-from calib.bench.find import instrument_named, lot_named, method_named
+from calib.bench.find import instrument_named, method_named, solution_named
 from calib.bench.find_readings import with_exclusions
 from calib.bench.keeping import definition_of, is_saturated
 from calib.bench.lot_rules import Override, usable_lot
@@ -54,6 +54,7 @@ class LogOptions:
 class PlannedRun:
     """One run of a file with everything resolved.
 
+    ``prepared`` is the solution the standards were made from, ``lot`` the lot at its root.
     ``history`` is what the noise model was pooled over, where the method asks for it; ``notes`` says
     in words what was decided, such as a conversion of units.
     """
@@ -71,6 +72,12 @@ class PlannedRun:
     history: NoiseHistory | None = None
     notes: tuple[str, ...] = field(default=())
     overrides: tuple[Override, ...] = ()
+    prepared: tables.Preparation | None = None
+
+    @property
+    def material(self) -> str | None:
+        """Name of the prepared solution or lot the standards were made from."""
+        return self.prepared.name if self.prepared else self.lot.name if self.lot else None
 
     @property
     def has_standards(self) -> bool:
@@ -193,7 +200,10 @@ def _plan(
     at = _moment(file, run, instrument, options.at)
     _refuse_future(file, at, now)
     lot_name = _agreed(file, "lot", options.lot, run.lot) if options.lot or run.lot else None
-    lot, overrides = _lot(session, run, lot_name, at, options.lot_override)
+    named, overrides = _lot(session, run, lot_name, at, options.lot_override)
+    prepared = named if isinstance(named, tables.Preparation) else None
+    lot = session.get_one(tables.StandardLot, prepared.lot_id) if prepared else named
+    assert not isinstance(lot, tables.Preparation)
     factor = _unit_factor(file, run, definition)
     _require_response_unit(file, run, definition)
     for reading in run.readings:
@@ -212,18 +222,19 @@ def _plan(
         measured=measured,
         content_fingerprint=content_fingerprint(_resolved(run, instrument.name, definition.analyte, at)),
         history=history_before(session, instrument.name, definition, at) if standards else None,
-        notes=(*_notes(run, definition, factor), *_lot_notes(lot, at)),
+        notes=(*_notes(run, definition, factor), *_lot_notes(named, at)),
+        prepared=prepared,
         overrides=overrides,
     )
 
 
 def _lot(
     session: Session, run: ParsedRun, name: str | None, at: datetime, override: str | None
-) -> tuple[tables.StandardLot | None, tuple[Override, ...]]:
+) -> tuple[tables.StandardLot | tables.Preparation | None, tuple[Override, ...]]:
     """The lot of the standards; unknowns alone use none, so its date does not matter for them."""
     if any(reading.role == "standard" for reading in run.readings):
         return usable_lot(session, name, at, override)
-    return (lot_named(session, name) if name else None), ()
+    return (solution_named(session, name) if name else None), ()
 
 
 def _resolved(run: ParsedRun, instrument: str, analyte: str, at: datetime) -> ParsedRun:
@@ -285,10 +296,17 @@ def _refuse_future(file: ParsedFile, at: datetime, now: datetime) -> None:
         )
 
 
-def _lot_notes(lot: tables.StandardLot | None, at: datetime) -> tuple[str, ...]:
-    if lot is None or lot.expiry is None or at.date() <= lot.expiry:
+def _lot_notes(lot: tables.StandardLot | tables.Preparation | None, at: datetime) -> tuple[str, ...]:
+    if lot is None:
         return ()
-    return (f"standard lot {lot.name} expired on {lot.expiry.isoformat()}, before this run",)
+    prepared = isinstance(lot, tables.Preparation)
+    what = f"{'prepared solution' if prepared else 'standard lot'} {lot.name}"
+    notes = []
+    if lot.expiry is not None and at.date() > lot.expiry:
+        notes.append(f"{what} expired on {lot.expiry.isoformat()}, before this run")
+    if isinstance(lot, tables.Preparation) and at.date() < lot.prepared_on:
+        notes.append(f"{what} was prepared on {lot.prepared_on.isoformat()}, after this run")
+    return tuple(notes)
 
 
 def _first_reading_time(readings: Sequence[ParsedReading]) -> datetime | None:

@@ -261,7 +261,7 @@ class Amendment:
 
 @dataclass(frozen=True, slots=True)
 class LotFacts:
-    """What the certificate of a standard lot says."""
+    """What the certificate of a standard lot says; ``prepared`` names the solution made from it that was used."""
 
     name: str
     material: str
@@ -271,6 +271,12 @@ class LotFacts:
     coverage_factor: float | None
     expiry: date | None
     certificate: str | None
+    prepared: str | None = None
+
+    @property
+    def used(self) -> str:
+        """Name of what the standards were made from."""
+        return self.prepared or self.name
 
 
 @dataclass(frozen=True, slots=True)

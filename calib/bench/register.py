@@ -13,7 +13,7 @@ from sqlalchemy import func, select
 
 from calib import store as tables
 from calib.bench.acceptance_settings import limits_without_unit, preset_of
-from calib.bench.find import instrument_named, method_named
+from calib.bench.find import instrument_named, method_named, refuse_taken_name
 from calib.bench.keeping import definition_of
 from calib.bench.method_definition import MethodDefinition, read_definition
 from calib.bench.names import plain_name
@@ -78,6 +78,7 @@ class LotRecord:
     supplier: str | None
     certificate: str | None
     traceability: str | None
+    degrees_of_freedom: float | None = None
 
 
 def add_instrument(
@@ -313,8 +314,7 @@ def add_lot(store: tables.Store, lot: LotRecord, *, by: str) -> None:
     """
     _check_lot(lot)
     with store.change(action="add standard lot", by=by) as session:
-        if session.scalar(select(tables.StandardLot.id).where(tables.StandardLot.name == lot.name)):
-            raise InputError(f"standard lot '{lot.name}' is registered already; choose another name")
+        refuse_taken_name(session, lot.name)
         session.add(
             tables.StandardLot(
                 name=lot.name,
@@ -327,6 +327,7 @@ def add_lot(store: tables.Store, lot: LotRecord, *, by: str) -> None:
                 supplier=lot.supplier,
                 certificate=lot.certificate,
                 traceability=lot.traceability,
+                degrees_of_freedom=lot.degrees_of_freedom,
                 added_at=store.now(),
                 added_by=by,
             )
@@ -340,9 +341,16 @@ def _check_lot(lot: LotRecord) -> None:
         raise InputError(f"lot '{lot.name}': a certified value needs its unit")
     if lot.expanded_uncertainty is not None and lot.coverage_factor is None:
         raise InputError(f"lot '{lot.name}': an expanded uncertainty needs its coverage factor k")
-    numbers: Sequence[float | None] = (lot.certified_value, lot.expanded_uncertainty, lot.coverage_factor)
+    if lot.degrees_of_freedom is not None and lot.expanded_uncertainty is None:
+        raise InputError(f"lot '{lot.name}': degrees of freedom belong to an expanded uncertainty; give both")
+    numbers: Sequence[float | None] = (
+        lot.certified_value,
+        lot.expanded_uncertainty,
+        lot.coverage_factor,
+        lot.degrees_of_freedom,
+    )
     if any(v is not None and not v > 0 for v in numbers):
-        raise InputError(f"lot '{lot.name}': certified value, U and k must be above 0")
+        raise InputError(f"lot '{lot.name}': certified value, U, k and degrees of freedom must be above 0")
 
 
 def list_lots(store: tables.Store) -> tuple[LotRecord, ...]:
@@ -361,6 +369,7 @@ def list_lots(store: tables.Store) -> tuple[LotRecord, ...]:
             r.supplier,
             r.certificate,
             r.traceability,
+            r.degrees_of_freedom,
         )
         for r in rows
     )

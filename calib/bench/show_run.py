@@ -16,6 +16,7 @@ from calib.bench.find import (
     facts_of,
     instrument_named,
     method_named,
+    preparation_of,
     run_numbered,
     void_of,
 )
@@ -172,7 +173,7 @@ def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
             session, facts.instrument_id, method.name, local(facts.at, facts.offset_minutes)
         ),
         versions=dict(curve_row.versions),
-        lot=lot_facts(session.get_one(tables.StandardLot, facts.lot_id)) if facts.lot_id else None,
+        lot=_lot_facts_of(session, facts),
         chain_sequence=head[0],
         chain_head=head[1],
     )
@@ -246,7 +247,7 @@ def heading_of(session: Session, run: tables.Run, method: tables.Method) -> RunH
     facts = facts_of(session, run.id)
     instrument = session.get_one(tables.Instrument, facts.instrument_id)
     original = session.get_one(tables.Original, run.original_id)
-    lot = session.get_one(tables.StandardLot, facts.lot_id) if facts.lot_id else None
+    lot = _lot_facts_of(session, facts)
     void = void_of(session, run.id)
     return RunHeading(
         id=run.id,
@@ -260,7 +261,7 @@ def heading_of(session: Session, run: tables.Run, method: tables.Method) -> RunH
         at=local(facts.at, facts.offset_minutes),
         operator=facts.operator,
         by=run.logged_by,
-        lot=lot.name if lot else None,
+        lot=lot.used if lot else None,
         file=original.name,
         fingerprint=original.fingerprint,
         layout=run.layout,
@@ -301,8 +302,14 @@ def dependents_of(session: Session, run_id: int) -> tuple[int, ...]:
     return tuple(session.scalars(query))
 
 
-def lot_facts(lot: tables.StandardLot) -> LotFacts:
-    """What the certificate of a lot says."""
+def _lot_facts_of(session: Session, facts: tables.RunFacts) -> LotFacts | None:
+    if facts.lot_id is None:
+        return None
+    return lot_facts(session.get_one(tables.StandardLot, facts.lot_id), preparation_of(session, facts))
+
+
+def lot_facts(lot: tables.StandardLot, prepared: tables.Preparation | None = None) -> LotFacts:
+    """What the certificate of a lot says, and which solution prepared from it was used."""
     return LotFacts(
         lot.name,
         lot.material,
@@ -310,8 +317,9 @@ def lot_facts(lot: tables.StandardLot) -> LotFacts:
         lot.unit,
         lot.expanded_uncertainty,
         lot.coverage_factor,
-        lot.expiry,
+        prepared.expiry if prepared else lot.expiry,
         lot.certificate,
+        prepared.name if prepared else None,
     )
 
 

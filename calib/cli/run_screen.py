@@ -33,7 +33,7 @@ def show_plan(plan: LogPlan) -> None:
     for sentence in plan.file.understood:
         say(f"  · {sentence}")
     for run in plan.runs:
-        lot = f", lot {run.lot.name}" if run.lot else ""
+        lot = f", lot {run.material}" if run.material else ""
         say(
             f"  · instrument {run.instrument.name}, method {run.method.name} version {run.method.version}, "
             f"measured {run.at:%Y-%m-%d %H:%M %z} by {run.operator}{lot}"

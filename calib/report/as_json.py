@@ -84,7 +84,7 @@ def preview_json(evaluated: EvaluatedPlan) -> dict[str, Any]:
                 "method_version": run.method.version,
                 "at": run.at.isoformat(),
                 "operator": run.operator,
-                "lot": run.lot.name if run.lot else None,
+                "lot": run.material,
                 "notes": list(run.notes),
                 "curve": _curve(None, evaluation),
                 "outlying_reading": _outlying(evaluation.outlying),

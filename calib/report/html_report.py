@@ -139,7 +139,7 @@ def lot_in_words(record: RunRecord) -> str:
     lot = record.lot
     if lot is None:
         return "not named"
-    parts = [lot.name]
+    parts = [f"{lot.prepared}, prepared from {lot.name}" if lot.prepared else lot.name]
     if lot.certified_value is not None:
         value = number(lot.certified_value)
         if lot.expanded_uncertainty is not None:

@@ -11,7 +11,7 @@ from calib.store.chain import GENESIS, ChainEntry
 from calib.store.current import is_current
 from calib.store.curves import Curve, CurveStandard, VerdictRow
 from calib.store.instruments import Event, Instrument
-from calib.store.lots import StandardLot
+from calib.store.lots import Preparation, PreparationCheck, RunSolution, StandardLot
 from calib.store.methods import Method
 from calib.store.opening import default_store_path, open_store, store_path
 from calib.store.originals import Original
@@ -47,11 +47,14 @@ __all__ = [
     "Instrument",
     "Method",
     "Original",
+    "Preparation",
+    "PreparationCheck",
     "QuantityRow",
     "Reading",
     "RuleOverride",
     "Run",
     "RunFacts",
+    "RunSolution",
     "RunVoid",
     "StandardLot",
     "Store",
