@@ -79,7 +79,7 @@ def check_records(
     numbers = _calibration_runs(store) if check.sound else []
     if not all_curves and len(numbers) > SAMPLE:
         numbers = [numbers[int(i)] for i in np.linspace(0, len(numbers) - 1, SAMPLE)]
-    findings.extend(f for n in numbers if (f := _refit(store, n)) is not None)
+    findings.extend(f for n in numbers if (f := refit_again(store, n)) is not None)
     return RecordCheck(
         tuple(findings), check.entries, check.rows, len(numbers), check.head_sequence, check.head_hash
     )
@@ -91,7 +91,7 @@ def _calibration_runs(store: tables.Store) -> list[int]:
         return list(session.scalars(query))
 
 
-def _refit(store: tables.Store, number: int) -> RecordFinding | None:
+def refit_again(store: tables.Store, number: int) -> RecordFinding | None:
     """Why the curve of a run does not come out again, or None when it does."""
     place = f"run {number}"
     try:

@@ -206,15 +206,17 @@ def _decide_on(session: Session, number: int, keys: set[int], made: _Decision) -
     before = exclusions_in_force(session, number)
     for row in current_readings(session, number):
         if row.ordinal in keys:
+            earlier = before.get(row.ordinal)
             session.add(
                 tables.Exclusion(
-                    reading_id=row.id,
+                    # A reading that was amended since keeps one line of decisions.
+                    reading_id=earlier.reading_id if earlier else row.id,
                     decision=made.decision,
                     reason_class=made.reason_class,
                     reason=made.reason,
                     by=made.by,
                     at=made.at,
-                    supersedes=before[row.ordinal].id if row.ordinal in before else None,
+                    supersedes=earlier.id if earlier else None,
                 )
             )
     session.flush()

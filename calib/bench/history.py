@@ -11,6 +11,7 @@ from sqlalchemy.orm import Session, aliased
 from calib import store as tables
 from calib.bench.find import preparation_of, void_of
 from calib.bench.records import Amendment
+from calib.store.entries import entry_of, recorded_rows
 
 
 def amendments_of(session: Session, run: tables.Run) -> tuple[Amendment, ...]:
@@ -87,29 +88,24 @@ def _on_its_clock(at: datetime, offset_minutes: int) -> datetime:
 
 
 def _changed_readings(session: Session, run: tables.Run) -> list[Amendment]:
-    """Renamed samples and corrected dilutions; the reason stands with the facts of the same decision."""
+    """Renamed samples and corrected dilutions; when, who and why stand in the entry that recorded them."""
     old, new = aliased(tables.Reading), aliased(tables.Reading)
     pairs = session.execute(
-        select(old, new).join(new, new.supersedes == old.id).where(new.run_id == run.id)
+        select(old, new).join(new, new.supersedes == old.id).where(new.run_id == run.id).order_by(new.id)
     ).all()
-    decisions = _decisions(session, run)
-    changes: dict[str, None] = {}
+    changes: dict[int | None, dict[str, None]] = {}
+    recorded: set[int] = set()
     for before, after in pairs:
+        if after.id not in recorded:
+            sequence = entry_of(session.connection(), "reading", after.id)
+            recorded = recorded_rows(session.connection(), sequence or 0).get("reading", set())
+        told = changes.setdefault(sequence, {})
         if before.sample != after.sample:
-            changes[f"sample {before.sample} renamed {after.sample}"] = None
+            told[f"sample {before.sample} renamed {after.sample}"] = None
         if before.dilution != after.dilution:
-            changes[f"dilution of {after.sample} from {before.dilution:g} to {after.dilution:g}"] = None
-    if not changes or not decisions:
-        return []
-    last = decisions[-1]
-    return [Amendment(last.recorded_at, last.by, "; ".join(changes), last.reason or "")]
-
-
-def _decisions(session: Session, run: tables.Run) -> list[tables.RunFacts]:
-    query = select(tables.RunFacts).where(
-        tables.RunFacts.run_id == run.id, tables.RunFacts.supersedes.is_not(None)
-    )
-    return list(session.scalars(query.order_by(tables.RunFacts.id)))
+            told[f"dilution of {after.sample} from {before.dilution:g} to {after.dilution:g}"] = None
+    entries = session.scalars(select(tables.ChainEntry).where(tables.ChainEntry.sequence.in_(changes)))
+    return [Amendment(e.at, e.by, "; ".join(changes[e.sequence]), e.reason or "") for e in entries]
 
 
 def _refits(session: Session, run: tables.Run) -> list[Amendment]:

@@ -22,10 +22,12 @@ from calib.bench.correct_run import (
 from calib.bench.log_run import evaluate_plan, log_plan
 from calib.bench.plan_run import LogOptions, plan_file
 from calib.bench.quantify import quantify_plan
+from calib.bench.record_history import HistoryStep, history_of_record
 from calib.bench.records import RunRecord
 from calib.bench.replay import ReplayRequest, replay_runs
 from calib.bench.replay_records import Replay
 from calib.bench.review_drift import DriftRecord, review_instrument
+from calib.bench.review_runs import ReviewLine, approve_run, return_run, runs_to_review
 from calib.bench.show_run import RunLine, list_runs, show_run
 
 
@@ -109,6 +111,22 @@ class Laboratory:
     def void(self, number: int, *, reason: str) -> RunRecord:
         """Declare that a run counts no longer."""
         return void_run(self.store, number, reason=reason, by=self.by)
+
+    def approve(self, number: int, *, comment: str | None = None) -> RunRecord:
+        """Approve a run as it stands: its results may be reported."""
+        return approve_run(self.store, number, by=self.by, comment=comment)
+
+    def return_run(self, number: int, *, reason: str) -> RunRecord:
+        """Return a run to its analyst, with the reason."""
+        return return_run(self.store, number, by=self.by, reason=reason)
+
+    def to_review(self) -> tuple[ReviewLine, ...]:
+        """Runs that wait for review, those with most exceptions first."""
+        return runs_to_review(self.store)
+
+    def history(self, kind: str, record: str) -> tuple[HistoryStep, ...]:
+        """Everything that happened to one record."""
+        return history_of_record(self.store, kind, record)
 
     def drift(
         self, instrument: str, method: str | None = None, *, since: datetime | None = None

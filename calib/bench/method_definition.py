@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import re
 import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
@@ -13,6 +12,7 @@ import numpy as np
 
 from calib.acceptance import ExclusionRule, Limit
 from calib.bench.acceptance_settings import acceptance_limits
+from calib.bench.durations import hours_of
 from calib.bench.exclusion_settings import exclusion_rule
 from calib.bench.result_settings import (
     CheckRules,
@@ -25,7 +25,7 @@ from calib.bench.setting_lines import line_of
 from calib.curves.noise import NoiseModel, assumed_noise
 from calib.curves.requests import NOISE_NAMES, problem_of
 from calib.curves.standards import Standards
-from calib.errors import MethodError, ModelError, UnknownUnit
+from calib.errors import InputError, MethodError, ModelError, UnknownUnit
 from calib.intake import parse_concentration_unit
 from calib.models import ResponseModel, response_model
 from calib.quantification.specification import Specification
@@ -50,9 +50,6 @@ OPTIONAL = (
 HISTORY = "history"
 # 42 CFR 493.1255(b)(3) and ISO/IEC 17025:2017, 6.4.10: what may change the response of an instrument.
 NEED_A_CHECK = ("maintenance", "part", "move", "software", "lot")
-DURATION = re.compile(r"^\s*(\d+(?:\.\d+)?)\s*(min|h|d)\s*$")
-LONGEST_HOURS = 87660.0
-HOURS = {"min": 1.0 / 60.0, "h": 1.0, "d": 24.0}
 
 
 @dataclass(frozen=True, slots=True)
@@ -292,18 +289,10 @@ def _valid_hours(table: object) -> float:
         raise MethodError(
             '[curve] knows the keys valid_for, such as valid_for = "24 h", and needs_check_after', "curve"
         )
-    text = table.get("valid_for", "24 h")
-    match = DURATION.match(text) if isinstance(text, str) else None
-    if match is None or float(match[1]) == 0:
-        raise MethodError(
-            f'curve.valid_for = {text!r} must be a time such as "90 min", "24 h" or "7 d"', "curve.valid_for"
-        )
-    hours = float(match[1]) * HOURS[match[2]]
-    if hours > LONGEST_HOURS:
-        raise MethodError(
-            f"curve.valid_for = {text!r} is longer than ten years; correct it", "curve.valid_for"
-        )
-    return hours
+    try:
+        return hours_of(table.get("valid_for", "24 h"), "curve.valid_for")
+    except InputError as cause:
+        raise MethodError(str(cause), "curve.valid_for") from cause
 
 
 def _needs_check_after(table: Mapping[str, Any]) -> tuple[str, ...]:

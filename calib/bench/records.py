@@ -8,6 +8,7 @@ from datetime import date, datetime
 
 from calib.acceptance import CriterionResult
 from calib.bench.method_definition import MethodDefinition
+from calib.bench.review_state import NO_REVIEW, ReviewState
 from calib.curves.curve import Curve
 from calib.curves.history_noise import HistoryNoise
 
@@ -280,6 +281,19 @@ class LotFacts:
 
 
 @dataclass(frozen=True, slots=True)
+class ReportStamp:
+    """What an issued report says of itself: number, when and by whom, and the report it replaces."""
+
+    number: int
+    at: datetime
+    by: str
+    replaces: int | None
+    reason: str | None
+    chain_sequence: int
+    chain_head: str
+
+
+@dataclass(frozen=True, slots=True)
 class RunRecord:
     """A run as the store holds it now.
 
@@ -303,6 +317,7 @@ class RunRecord:
     lot: LotFacts | None
     chain_sequence: int
     chain_head: str
+    review: ReviewState = NO_REVIEW
 
     @property
     def lowest_reported(self) -> float | None:

@@ -23,6 +23,7 @@ from calib.bench.register import (
     list_lots,
     list_methods,
 )
+from calib.bench.settings import list_people, set_roles
 from calib.bench.show_run import list_runs, show_run
 from calib.errors import DuplicateFile
 from calib.shipped import shipped
@@ -118,6 +119,10 @@ def _first_reason(reasons: tuple[str, ...]) -> str:
 
 
 def _register(store: tables.Store, folder: Path, laboratory: Mapping[str, Any]) -> None:
+    known = {p.name for p in list_people(store)}
+    for person in laboratory["person"]:
+        if person["name"] not in known:
+            set_roles(store, person["name"], tuple(person["roles"]), by=KEEPER)
     there = {i.name for i in list_instruments(store)}
     for i in laboratory["instrument"]:
         if i["name"] not in there:

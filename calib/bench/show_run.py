@@ -37,6 +37,7 @@ from calib.bench.method_definition import MethodDefinition
 from calib.bench.noise_history import history_of
 from calib.bench.outlying_readings import outlying_of
 from calib.bench.records import Evaluation, LotFacts, Measured, RunHeading, RunRecord
+from calib.bench.review_state import review_state
 from calib.intake import conversion_factor
 
 
@@ -176,6 +177,7 @@ def load_run(session: Session, number: int, head: tuple[int, str]) -> RunRecord:
         lot=_lot_facts_of(session, facts),
         chain_sequence=head[0],
         chain_head=head[1],
+        review=review_state(session, number),
     )
 
 

@@ -16,6 +16,7 @@ from calib.report.curve_wording import (
     interval_scale_text,
     outlying_text,
 )
+from calib.report.review_wording import status_line
 from calib.report.wording import LARGEST_PLAIN, SMALLEST_PLAIN, number, percent, result_text, rounded
 
 if TYPE_CHECKING:
@@ -56,6 +57,8 @@ def show_run(record: RunRecord) -> None:
         )
     if heading.void_reason is not None:
         say(f"VOID: {heading.void_reason}", "bold red")
+    else:
+        say(f"  {status_line(record.review)}")
     show_checks(record.evaluation, definition)
     show_samples(record.evaluation, definition)
     if record.dependents:

@@ -12,6 +12,7 @@ import numpy as np
 
 from calib.acceptance import CriterionResult
 from calib.bench.statements import statement_of
+from calib.report.review_wording import status_line
 
 if TYPE_CHECKING:
     from calib.bench.control_history import ControlHistory
@@ -22,6 +23,7 @@ if TYPE_CHECKING:
         NoiseHistory,
         OutlyingProposal,
         QuantityRecord,
+        ReportStamp,
         RunHeading,
         RunRecord,
         StandardRecord,
@@ -43,10 +45,13 @@ def log_json(file: str, records: Iterable[RunRecord]) -> dict[str, Any]:
     return {"schema": LOG, "file": file, "runs": [run_json(r) for r in records]}
 
 
-def run_json(record: RunRecord) -> dict[str, Any]:
-    """One run, as `calib run show --json` prints it."""
+def run_json(record: RunRecord, stamp: ReportStamp | None = None) -> dict[str, Any]:
+    """One run, as `calib run show --json` prints it; with a stamp, as a report of it was issued."""
     evaluation = record.evaluation
     return {
+        "status": status_line(record.review, stamp),
+        "draft": stamp is None and not record.review.approved,
+        "report": None if stamp is None else plain(stamp),
         "run": _heading(record.heading) | {"curve_run": record.curve_run},
         "curve": _curve(record.curve_id, evaluation),
         "outlying_reading": _outlying(evaluation.outlying),
@@ -64,7 +69,11 @@ def run_json(record: RunRecord) -> dict[str, Any]:
         "earlier_curves": record.curves_before,
         "attempts_that_day": record.attempts_that_day,
         "versions": dict(record.versions),
-        "record_chain": {"sequence": record.chain_sequence, "head": record.chain_head},
+        "review": plain(record.review),
+        "record_chain": {
+            "sequence": stamp.chain_sequence if stamp else record.chain_sequence,
+            "head": stamp.chain_head if stamp else record.chain_head,
+        },
     }
 
 

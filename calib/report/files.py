@@ -14,16 +14,45 @@ from calib.errors import InputError, UnreadableFile
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-    from calib.bench.records import RunRecord
+    from calib.bench.records import ReportStamp, RunRecord
 
-REPORTS = (".html", ".json")
+REPORTS = (".html", ".json", ".csv")
 PICTURES = (".svg", ".png")
 # The same record gives the same bytes: no date, no random identifiers.
 SALT = "calib"
 
 
-def write_report(record: RunRecord, path: str | Path) -> Path:
-    """Write the report of a run, by suffix: .html or .json.
+def report_kind(path: str | Path) -> str:
+    """Kind of report a file name asks for: 'html', 'json' or 'csv'.
+
+    Raises
+    ------
+    InputError
+        For another suffix.
+    """
+    return _suffix(Path(path), REPORTS).removeprefix(".")
+
+
+def render_report(record: RunRecord, stamp: ReportStamp | None, kind: str) -> bytes:
+    """The report of a run as the bytes of a file; the same record and stamp give the same bytes."""
+    match kind:
+        case "html":
+            from calib.report.html_report import render_run
+
+            return render_run(record, stamp).encode()
+        case "csv":
+            from calib.report.csv_report import render_csv
+
+            return render_csv(record, stamp).encode()
+        case _:
+            from calib.report.as_json import run_json
+
+            text = json.dumps(run_json(record, stamp), ensure_ascii=False, indent=2, allow_nan=False)
+            return f"{text}\n".encode()
+
+
+def write_report(record: RunRecord, path: str | Path, stamp: ReportStamp | None = None) -> Path:
+    """Write the report of a run, by suffix: .html, .json or .csv.
 
     Raises
     ------
@@ -32,17 +61,7 @@ def write_report(record: RunRecord, path: str | Path) -> Path:
     UnreadableFile
         When the place cannot be written.
     """
-    path = Path(path)
-    match _suffix(path, REPORTS):
-        case ".html":
-            from calib.report.html_report import render_run
-
-            text = render_run(record)
-        case _:
-            from calib.report.as_json import run_json
-
-            text = json.dumps(run_json(record), ensure_ascii=False, indent=2, allow_nan=False) + "\n"
-    return _write(path, text.encode())
+    return write_file(Path(path), render_report(record, stamp, report_kind(path)))
 
 
 def write_figure(figure: Figure, path: str | Path) -> Path:
@@ -56,7 +75,7 @@ def write_figure(figure: Figure, path: str | Path) -> Path:
         When the place cannot be written.
     """
     path = Path(path)
-    return _write(path, picture(figure, _suffix(path, PICTURES).removeprefix(".")))
+    return write_file(path, picture(figure, _suffix(path, PICTURES).removeprefix(".")))
 
 
 def check_picture(path: str | Path) -> None:
@@ -90,7 +109,7 @@ def _suffix(path: Path, allowed: tuple[str, ...]) -> str:
     return suffix
 
 
-def _write(path: Path, content: bytes) -> Path:
+def write_file(path: Path, content: bytes) -> Path:
     """Write beside the place, then put it there in one step."""
     beside = path.with_name(f".{path.name}.{os.getpid()}.part")
     try:

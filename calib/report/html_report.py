@@ -11,12 +11,13 @@ from typing import TYPE_CHECKING, Any
 from calib.report import curve_wording, run_rows
 from calib.report.curve_figure import curve_figure
 from calib.report.files import picture
+from calib.report.review_wording import status_line
 from calib.report.wording import LEVEL_DIGITS, number, visible, with_unit
 
 if TYPE_CHECKING:
     from jinja2 import Template
 
-    from calib.bench.records import RunRecord
+    from calib.bench.records import ReportStamp, RunRecord
 
 CAUTIONS = (
     "The validated method and the rules a laboratory works under come first; a preset is an aid, and the "
@@ -35,19 +36,21 @@ CAUTIONS = (
 UNWANTED = re.compile(r"<metadata>.*?</metadata>|<!--.*?-->", re.DOTALL)
 
 
-def render_run(record: RunRecord) -> str:
+def render_run(record: RunRecord, stamp: ReportStamp | None = None) -> str:
     """Lay out a run as one self-contained HTML page, A4 when printed.
 
     Parameters
     ----------
     record : RunRecord
+    stamp : ReportStamp, optional
+        Of an issued report; without it, and without an approval, the page is a draft.
 
     Returns
     -------
     str
         The same text for the same record and versions.
     """
-    return _template().render(view=_view(record), record=record)
+    return _template().render(view=_view(record, stamp), record=record)
 
 
 @cache
@@ -70,13 +73,18 @@ def _made_visible(value: Any) -> Any:
     return visible(value) if type(value) is str else value
 
 
-def _view(record: RunRecord) -> dict[str, Any]:
+def _view(record: RunRecord, stamp: ReportStamp | None) -> dict[str, Any]:
     """Everything the page says, as words."""
     curve, definition = record.evaluation.curve, record.definition
     units = (definition.concentration_unit, definition.response_unit)
     return {
         "title": title(record),
         "status": status(record),
+        "review": status_line(record.review, stamp),
+        "draft": not record.review.approved,
+        "chain_sequence": stamp.chain_sequence if stamp else record.chain_sequence,
+        "chain_head": stamp.chain_head if stamp else record.chain_head,
+        "issued": f"{stamp.at:%Y-%m-%d %H:%M %z} by {stamp.by}" if stamp else "",
         "calibrated_range": calibrated_range(record),
         "picture": _inline_picture(record),
         "equation": curve_wording.equation(curve),

@@ -15,8 +15,11 @@ from calib.store.lots import Preparation, PreparationCheck, RunSolution, Standar
 from calib.store.methods import Method
 from calib.store.opening import default_store_path, open_store, store_path
 from calib.store.originals import Original
+from calib.store.people import Person, Setting
 from calib.store.quantities import QuantityRow
 from calib.store.runs import Exclusion, Reading, RuleOverride, Run, RunFacts, RunVoid
+from calib.store.reviews import IssuedReport, Review
+from calib.store.runs import Exclusion, Reading, Run, RunFacts, RunVoid
 from calib.store.session import Store
 
 if TYPE_CHECKING:
@@ -45,17 +48,21 @@ __all__ = [
     "Event",
     "Exclusion",
     "Instrument",
+    "IssuedReport",
     "Method",
     "Original",
     "Preparation",
     "PreparationCheck",
+    "Person",
     "QuantityRow",
     "Reading",
     "RuleOverride",
+    "Review",
     "Run",
     "RunFacts",
     "RunSolution",
     "RunVoid",
+    "Setting",
     "StandardLot",
     "Store",
     "StoreCheck",

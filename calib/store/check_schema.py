@@ -3,22 +3,11 @@
 from collections.abc import Iterator
 from typing import Any
 
-from sqlalchemy import Connection, Table, func, select
+from sqlalchemy import Connection, Table, exists, func, select
 
 from calib.store.base import Base
 from calib.store.findings import StoreFinding
-from calib.store.triggers import EVIDENCE_TABLES, trigger_statements
-
-# Tables whose rows supersede each other, and the column that a new version shares with the old one.
-_VERSIONED = {
-    "run_facts": "run_id",
-    "reading": "run_id",
-    "exclusion": "reading_id",
-    "curve": "run_id",
-    "quantity": "run_id",
-}
-# Of these, at most one version may be in force for each record they describe.
-_ONE_IN_FORCE = ("run_facts", "exclusion", "curve")
+from calib.store.triggers import EVIDENCE_TABLES, VERSIONED, trigger_statements
 
 
 def file_findings(connection: Connection) -> Iterator[StoreFinding]:
@@ -74,10 +63,9 @@ def _difference_in_words(step: Any) -> tuple[str, str]:
 
 def version_findings(connection: Connection) -> Iterator[StoreFinding]:
     """Find records with two versions in force, runs without facts, versions of another record."""
-    for name, shared in _VERSIONED.items():
-        yield from _strangers(connection, Base.metadata.tables[name], shared)
-    for name in _ONE_IN_FORCE:
-        yield from _two_in_force(connection, Base.metadata.tables[name], _VERSIONED[name])
+    for name, record in VERSIONED.items():
+        yield from _strangers(connection, Base.metadata.tables[name], record[0])
+        yield from _two_in_force(connection, Base.metadata.tables[name], record)
     run, facts = Base.metadata.tables["run"], Base.metadata.tables["run_facts"]
     bare = select(run.c.id).where(run.c.id.not_in(select(facts.c.run_id)))
     for (number,) in connection.execute(bare):
@@ -99,17 +87,18 @@ def _strangers(connection: Connection, table: Table, shared: str) -> Iterator[St
         )
 
 
-def _two_in_force(connection: Connection, table: Table, shared: str) -> Iterator[StoreFinding]:
-    # Each row is superseded once at most, so the rows that supersede nothing count the versions in force.
+def _two_in_force(connection: Connection, table: Table, record: tuple[str, ...]) -> Iterator[StoreFinding]:
+    later = table.alias()
+    columns = [table.c[name] for name in record]
     query = (
-        select(table.c[shared], func.count())
-        .where(table.c.supersedes.is_(None))
-        .group_by(table.c[shared])
+        select(func.min(table.c.id), func.count(), columns[0])
+        .where(~exists().where(later.c.supersedes == table.c.id))
+        .group_by(*columns)
         .having(func.count() > 1)
     )
-    for number, count in connection.execute(query):
+    for number, count, owner in connection.execute(query):
         yield StoreFinding(
             "two-in-force",
-            f"{shared.removesuffix('_id')} {number}",
-            f"has {count} rows of {table.name} in force instead of one",
+            f"{record[0].removesuffix('_id')} {owner}",
+            f"has {count} rows of {table.name} in force instead of one, the first is row {number}",
         )

@@ -97,10 +97,11 @@ class Reading(Base):
         one_of("absent_cause", ABSENT_CAUSES),
         CheckConstraint('("response" IS NULL) <> ("absent_cause" IS NULL)', name="response_or_cause"),
         CheckConstraint('"dilution" > 0', name="dilution"),
+        Index(None, "run_id", "ordinal"),
     )
 
     id: Mapped[int] = mapped_column(primary_key=True)
-    run_id: Mapped[int] = refers_to("run")
+    run_id: Mapped[int] = mapped_column(ForeignKey("run.id", ondelete="RESTRICT"))
     ordinal: Mapped[int]
     sample: Mapped[str] = mapped_column(index=True)
     role: Mapped[str]

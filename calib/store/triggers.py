@@ -29,8 +29,25 @@ EVIDENCE_TABLES = (
     "curve_standard",
     "verdict",
     "quantity",
+    "person",
+    "setting",
+    "review",
+    "issued_report",
     "record_chain",
 )
+
+# Tables whose rows supersede each other, and the columns that say which record a row is a version of.
+VERSIONED: dict[str, tuple[str, ...]] = {
+    "run_facts": ("run_id",),
+    "reading": ("run_id", "ordinal"),
+    "exclusion": ("reading_id",),
+    "curve": ("run_id",),
+    "quantity": ("run_id", "sample", "role", "dilution", "nominal"),
+    "person": ("name",),
+    "setting": ("name",),
+    "review": ("run_id",),
+    "issued_report": ("run_id", "format"),
+}
 
 _POSTGRESQL_REFUSAL = (
     "CREATE OR REPLACE FUNCTION calib_refuse_change() RETURNS trigger LANGUAGE plpgsql AS $$ "
@@ -70,14 +87,17 @@ def create_triggers(connection: Connection, tables: Sequence[str]) -> None:
     """Make the triggers of tables as they are in the database now.
 
     The keys are read from the database, not from the models, so that a migration of
-    any age makes the triggers that fit the table it leaves behind.
+    any age makes the triggers that fit the table it leaves behind. Triggers that are
+    there already are made again.
     """
     dialect = connection.dialect.name
     if dialect == "postgresql":
         connection.exec_driver_sql(_POSTGRESQL_REFUSAL)
     for name in tables:
         table = Table(name, MetaData(), autoload_with=connection, resolve_fks=False)
-        for statement in trigger_statements(table, dialect).values():
+        for trigger, statement in trigger_statements(table, dialect).items():
+            if dialect == "sqlite":
+                connection.exec_driver_sql(f'DROP TRIGGER IF EXISTS "{trigger}"')
             connection.exec_driver_sql(statement)
 
 
@@ -98,11 +118,30 @@ def _sqlite_triggers(table: Table) -> dict[str, str]:
         "DELETE": _refuse(name, "a row is never removed; add one that supersedes it") + ";",
         "INSERT": " ".join(_refuse_taken(name, key) for key in _keys(table)),
     }
+    if name in VERSIONED:
+        bodies["INSERT"] += f" {_refuse_second(name, VERSIONED[name])}"
     return {
         trigger: f'CREATE TRIGGER "{trigger}" BEFORE {act} ON "{name}" BEGIN {body} END'
         for act, body in bodies.items()
         for trigger in (f"{name}_no_{act.lower()}",)
     }
+
+
+def _refuse_second(table: str, record: tuple[str, ...]) -> str:
+    """Refuse a version beside the one in force; no other table is named, so that each can be rebuilt alone."""
+    same = " AND ".join(f'held."{column}" IS NEW."{column}"' for column in record)
+    words = f"one version of this {' and '.join(record)} is in force; supersede it"
+    later = f'SELECT 1 FROM "{table}" AS later WHERE later."supersedes" = held."id"'
+    beside = (
+        f'{_refuse(table, words)} WHERE EXISTS (SELECT 1 FROM "{table}" AS held WHERE {same} '
+        f'AND held."id" IS NOT NEW."supersedes" AND NOT EXISTS ({later}));'
+    )
+    owner = record[0]
+    other = (
+        f"{_refuse(table, f'it supersedes a row of another {owner}')} WHERE EXISTS (SELECT 1 FROM "
+        f'"{table}" AS held WHERE held."id" = NEW."supersedes" AND held."{owner}" IS NOT NEW."{owner}");'
+    )
+    return f"{beside} {other}"
 
 
 def _refuse(table: str, words: str) -> str:

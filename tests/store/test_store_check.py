@@ -6,7 +6,7 @@ from collections.abc import Callable
 import pytest
 from made_rows import add_run, facts
 
-from calib.errors import StoreDamaged
+from calib.errors import StoreDamaged, StoreError
 from calib.store import ChainEntry, Store, check_store, open_store
 from calib.store.chain import entry_hash
 from calib.store.digests import row_digest
@@ -62,7 +62,7 @@ def test_progress_ends_at_the_number_of_rows(filled: Store) -> None:
         ("DELETE FROM record_chain WHERE sequence = 1", "chain-gap", "entry 2"),
         ("DELETE FROM record_chain WHERE sequence = 2", "chain-cut", "entry 1"),
         ("DELETE FROM record_chain WHERE sequence = 2", "row-unrecorded", "run 2"),
-        ("DROP INDEX ix_reading_run_id", "schema", "reading"),
+        ("DROP INDEX ix_reading_run_id_ordinal", "schema", "reading"),
         ("CREATE TABLE other (x)", "schema", "other"),
         ("ALTER TABLE instrument ADD COLUMN colour TEXT", "schema", "instrument"),
         ("DELETE FROM run_facts", "no-facts", "run 1"),
@@ -115,15 +115,34 @@ def test_a_forged_entry_breaks_the_link_to_the_next(filled: Store, tamper: Calla
     assert codes(filled) == {("chain-link", "entry 2")}
 
 
-def test_two_versions_in_force_are_named(filled: Store) -> None:
-    with filled.change("amend", "KM", "no link to the older one") as session:
-        session.add(facts(1, 1))
+NO_RULE = "DROP TRIGGER run_facts_no_insert"
+
+
+def test_a_second_version_in_force_is_refused_and_found_where_the_rule_was_dropped(
+    filled: Store, tamper: Callable[..., None]
+) -> None:
+    def add() -> None:
+        with filled.change("amend", "KM", "no link to the older one") as session:
+            session.add(facts(1, 1))
+
+    with pytest.raises(StoreError, match="one version of this run_id is in force; supersede it"):
+        add()
+    tamper(NO_RULE)
+    add()
     assert codes(filled) == {("two-in-force", "run 1")}
 
 
-def test_a_version_of_another_record_is_named(filled: Store) -> None:
-    with filled.change("amend", "KM", "wrong run") as session:
-        session.add(facts(1, 1, supersedes=2, reason="wrong run"))
+def test_a_version_of_another_record_is_refused_and_found_where_the_rule_was_dropped(
+    filled: Store, tamper: Callable[..., None]
+) -> None:
+    def add() -> None:
+        with filled.change("amend", "KM", "wrong run") as session:
+            session.add(facts(1, 1, supersedes=2, reason="wrong run"))
+
+    with pytest.raises(StoreError, match="in force; supersede it"):
+        add()
+    tamper(NO_RULE)
+    add()
     assert ("wrong-version", "run_facts 3") in codes(filled)
 
 
