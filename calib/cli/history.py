@@ -41,7 +41,7 @@ def history(ctx: click.Context, kind: str, record: str, as_json: bool) -> None:
                 step.by,
                 step.action,
                 step.reason or "",
-                "\n".join(_rows_in_words(step)),
+                tuple(_rows_in_words(step)),
             )
             for step in steps
         ],

@@ -27,6 +27,7 @@ COMMANDS: dict[str, tuple[str, str]] = {
     "review": ("review:review", "What waits for a second person; approve or return it."),
     "person": ("person:person", "People, their roles, and rules about records."),
     "history": ("history:history", "Everything that happened to one record."),
+    "trace": ("trace:trace", "Back from a result, forward from a lot, instrument, curve, …"),
     "report": ("report:report", "Write the report of a run to a file."),
     "plot": ("report:plot", "Draw the curve of a run to a file."),
     "store": ("store:store", "Check, back up and upgrade the store."),

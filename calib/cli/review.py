@@ -63,7 +63,7 @@ def list_(
                 line.run.operator,
                 line.run.decision or "unknowns only",
                 line.state.state,
-                "\n".join(f"{e.kind}: {e.what}" for e in line.exceptions),
+                tuple(f"{e.kind}: {e.what}" for e in line.exceptions),
             )
             for line in lines
         ],

@@ -13,6 +13,8 @@ if TYPE_CHECKING:
 
 PIPED_WIDTH = 160
 
+Lines = tuple[str, ...]
+
 
 def console() -> Console:
     """Console on the standard output; wide enough not to fold tables when piped."""
@@ -24,8 +26,8 @@ def console() -> Console:
     return Console(width=width, highlight=False, soft_wrap=False, emoji=False, markup=False)
 
 
-def print_table(headings: Sequence[str], rows: Iterable[Sequence[str]], title: str = "") -> None:
-    """A plain table; headings that start with '>' are aligned to the right."""
+def print_table(headings: Sequence[str], rows: Iterable[Sequence[str | Lines]], title: str = "") -> None:
+    """A plain table; headings that start with '>' are aligned to the right, a tuple is a cell of lines."""
     from rich.table import Table
     from rich.text import Text
 
@@ -34,8 +36,12 @@ def print_table(headings: Sequence[str], rows: Iterable[Sequence[str]], title: s
         right = heading.startswith(">")
         table.add_column(heading.lstrip(">"), justify="right" if right else "left", overflow="fold")
     for row in rows:
-        table.add_row(*(Text(visible(cell)) for cell in row))
+        table.add_row(*(Text("\n".join(visible(line) for line in _lines(cell))) for cell in row))
     console().print(table)
+
+
+def _lines(cell: str | Lines) -> Lines:
+    return (cell,) if isinstance(cell, str) else cell
 
 
 def say(text: str = "", style: str | None = None) -> None:

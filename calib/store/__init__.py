@@ -17,9 +17,8 @@ from calib.store.opening import default_store_path, open_store, store_path
 from calib.store.originals import Original
 from calib.store.people import Person, Setting
 from calib.store.quantities import QuantityRow
-from calib.store.runs import Exclusion, Reading, RuleOverride, Run, RunFacts, RunVoid
 from calib.store.reviews import IssuedReport, Review
-from calib.store.runs import Exclusion, Reading, Run, RunFacts, RunVoid
+from calib.store.runs import Exclusion, Reading, RuleOverride, Run, RunFacts, RunVoid
 from calib.store.session import Store
 
 if TYPE_CHECKING:
@@ -56,8 +55,8 @@ __all__ = [
     "Person",
     "QuantityRow",
     "Reading",
-    "RuleOverride",
     "Review",
+    "RuleOverride",
     "Run",
     "RunFacts",
     "RunSolution",
