@@ -28,7 +28,7 @@ STARTS = {
     "run": ("run", "id"),
 }
 # Rows that tell of a run without making results, and there are many of them.
-TELLING = ("reading", "exclusion", "curve_standard", "verdict", "run_void", "event")
+TELLING = ("reading", "exclusion", "curve_standard", "verdict", "run_void", "event", "action_result")
 AT_ONCE = 500
 
 
@@ -84,7 +84,7 @@ def trace_forward(store: tables.Store, kind: str, name: str) -> Affected:
     head = store.head()
     with store.reading() as session:
         found = _closure(session.connection(), *_start(session, kind, name))
-        quantities = _affected_quantities(session, sorted(found.get("quantity", ())))
+        quantities = affected_quantities(session, sorted(found.get("quantity", ())))
     known = ("run", "run_facts", "curve", "quantity", "issued_report", "review", STARTS[kind][0])
     others = tuple(
         f"{table.replace('_', ' ')} {number}"
@@ -172,7 +172,8 @@ def _pieces(numbers: Sequence[int]) -> Iterator[Sequence[int]]:
         yield numbers[first : first + AT_ONCE]
 
 
-def _affected_quantities(session: Session, numbers: Sequence[int]) -> tuple[AffectedQuantity, ...]:
+def affected_quantities(session: Session, numbers: Sequence[int]) -> tuple[AffectedQuantity, ...]:
+    """Quantities by their numbers, as they stand now."""
     row, facts = tables.QuantityRow, tables.RunFacts
     found: list[AffectedQuantity] = []
     states = review_states(session) if numbers else {}

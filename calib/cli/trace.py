@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -97,7 +98,21 @@ def _forward(ctx: click.Context, kind: str, name: str, target: Path | None, as_j
 
 
 def _show_forward(found: Affected) -> None:
-    from calib.cli.screen import print_table, say
+    from calib.cli.screen import say
+
+    show_affected(found.quantities)
+    for other in found.others:
+        say(f"  by way of {other}")
+    say(
+        f"{found.start}: {len(found.runs)} runs, {len(found.curves)} curves, "
+        f"{len(found.quantities)} results, {len(found.reports)} issued reports"
+    )
+    say(f"record chain at entry {found.chain_sequence}: {found.chain_head}")
+
+
+def show_affected(quantities: Iterable[AffectedQuantity]) -> None:
+    """Results as they stand now, with what superseded them."""
+    from calib.cli.screen import print_table
     from calib.report.wording import number
 
     print_table(
@@ -113,16 +128,9 @@ def _show_forward(found: Affected) -> None:
                 _state(q),
                 ", ".join(map(str, q.reports)),
             )
-            for q in found.quantities
+            for q in quantities
         ],
     )
-    for other in found.others:
-        say(f"  by way of {other}")
-    say(
-        f"{found.start}: {len(found.runs)} runs, {len(found.curves)} curves, "
-        f"{len(found.quantities)} results, {len(found.reports)} issued reports"
-    )
-    say(f"record chain at entry {found.chain_sequence}: {found.chain_head}")
 
 
 def _state(q: AffectedQuantity) -> str:

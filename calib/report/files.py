@@ -64,6 +64,21 @@ def write_report(record: RunRecord, path: str | Path, stamp: ReportStamp | None 
     return write_file(Path(path), render_report(record, stamp, report_kind(path)))
 
 
+def write_page(text: str, path: str | Path) -> Path:
+    """Write a page that is laid out already; the name ends in .html.
+
+    Raises
+    ------
+    InputError
+        For another suffix.
+    UnreadableFile
+        When the place cannot be written.
+    """
+    path = Path(path)
+    _suffix(path, (".html",))
+    return write_file(path, text.encode())
+
+
 def write_figure(figure: Figure, path: str | Path) -> Path:
     """Write a picture, by suffix: .svg or .png.
 

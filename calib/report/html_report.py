@@ -50,11 +50,12 @@ def render_run(record: RunRecord, stamp: ReportStamp | None = None) -> str:
     str
         The same text for the same record and versions.
     """
-    return _template().render(view=_view(record, stamp), record=record)
+    return template("run.html.j2").render(view=_view(record, stamp), record=record)
 
 
 @cache
-def _template() -> Template:
+def template(name: str) -> Template:
+    """Load a page of this package: what is put into it is escaped, undefined names are errors."""
     from jinja2 import Environment, PackageLoader, StrictUndefined
 
     environment = Environment(
@@ -65,7 +66,7 @@ def _template() -> Template:
         trim_blocks=True,
         lstrip_blocks=True,
     )
-    return environment.get_template("run.html.j2")
+    return environment.get_template(name)
 
 
 def _made_visible(value: Any) -> Any:

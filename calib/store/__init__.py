@@ -6,6 +6,7 @@ What a day at the bench does not need (check, backup, upgrade) is loaded on firs
 from importlib import import_module
 from typing import TYPE_CHECKING
 
+from calib.store.actions import Action, ActionClosure, ActionResult, Verification
 from calib.store.base import Base
 from calib.store.chain import GENESIS, ChainEntry
 from calib.store.current import is_current
@@ -39,6 +40,9 @@ _LATER = {
 
 __all__ = [
     "GENESIS",
+    "Action",
+    "ActionClosure",
+    "ActionResult",
     "Backup",
     "Base",
     "ChainEntry",
@@ -68,6 +72,7 @@ __all__ = [
     "StoreFinding",
     "Upgrade",
     "VerdictRow",
+    "Verification",
     "backup_store",
     "check_store",
     "default_store_path",

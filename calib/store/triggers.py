@@ -33,6 +33,10 @@ EVIDENCE_TABLES = (
     "setting",
     "review",
     "issued_report",
+    "action",
+    "action_result",
+    "action_closure",
+    "verification",
     "record_chain",
 )
 
