@@ -18,6 +18,11 @@ def newest_revision() -> str:
     return REVISIONS[-1]
 
 
+def revision_before(revision: str) -> str:
+    """Give the schema that a migration starts from."""
+    return REVISIONS[REVISIONS.index(revision) - 1]
+
+
 def read_revision(path: Path) -> str:
     """Read which schema a store file has, changing nothing.
 

@@ -3,10 +3,11 @@
 import sqlalchemy as sa
 from alembic import op
 
+from calib.store.schema import revision_before
 from calib.store.triggers import create_triggers
 
 revision = "0005"
-down_revision = "0004"
+down_revision = revision_before(revision)
 branch_labels = None
 depends_on = None
 
