@@ -9,11 +9,13 @@ import numpy as np
 from sqlalchemy import select
 
 from calib import store as tables
+from calib.bench.damage import Damage, damage_of
 from calib.bench.keeping import versions
 from calib.bench.outlying_readings import evaluate_and_check
 from calib.bench.records import RunRecord, StandardRecord
 from calib.bench.show_run import load_run
 from calib.errors import CalibError
+from calib.store.heads import KeptHead
 
 # Two fits of the same readings agree to this share of a value inside the calibrated range.
 SAME_DIGITS = 1e-9
@@ -29,6 +31,7 @@ class RecordFinding:
     code: str
     place: str
     message: str
+    entry: int | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,6 +44,8 @@ class RecordCheck:
         Entries of the record chain, rows and curves that were checked.
     head_sequence, head_hash
         Last entry of the chain.
+    damage : Damage or None
+        The first entry that no longer holds, and what rests on what was found.
     """
 
     findings: tuple[RecordFinding, ...]
@@ -49,6 +54,7 @@ class RecordCheck:
     curves: int
     head_sequence: int
     head_hash: str
+    damage: Damage | None = None
 
     @property
     def sound(self) -> bool:
@@ -61,7 +67,11 @@ def _silent(done: int, total: int) -> None:
 
 
 def check_records(
-    store: tables.Store, *, all_curves: bool = False, progress: Progress = _silent
+    store: tables.Store,
+    *,
+    all_curves: bool = False,
+    progress: Progress = _silent,
+    heads: Sequence[KeptHead] = (),
 ) -> RecordCheck:
     """Walk the chain and the rows, then fit stored curves again and compare the digits.
 
@@ -71,17 +81,25 @@ def check_records(
         Fit every curve in force again, not an evenly spread sample.
     progress : callable
         Called with the number of rows done and in all.
+    heads : sequence of KeptHead
+        Heads kept elsewhere, to compare the chain with.
     """
     from calib.store import check_store
 
-    check = check_store(store, progress)
-    findings = [RecordFinding(f.code, f.place, f.message) for f in check.findings]
+    check = check_store(store, progress, heads)
+    findings = [RecordFinding(f.code, f.place, f.message, f.entry) for f in check.findings]
     numbers = _calibration_runs(store) if check.sound else []
     if not all_curves and len(numbers) > SAMPLE:
         numbers = [numbers[int(i)] for i in np.linspace(0, len(numbers) - 1, SAMPLE)]
     findings.extend(f for n in numbers if (f := refit_again(store, n)) is not None)
     return RecordCheck(
-        tuple(findings), check.entries, check.rows, len(numbers), check.head_sequence, check.head_hash
+        tuple(findings),
+        check.entries,
+        check.rows,
+        len(numbers),
+        check.head_sequence,
+        check.head_hash,
+        damage_of(store, findings),
     )
 
 

@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from calib import store as tables
 
 if TYPE_CHECKING:
-    from calib.store import Backup, Upgrade
+    from calib.bench.check_records import Progress
+    from calib.store import Backup, Export, Import, Upgrade
+    from calib.store.heads import KeptHead
 
 
 def open_laboratory_store(
@@ -36,6 +39,34 @@ def upgrade(url: str | Path | None) -> Upgrade:
     from calib.store import upgrade_store
 
     return upgrade_store(_address(url))
+
+
+def export_archive(store: tables.Store, to: str | Path, progress: Progress) -> Export:
+    """Write everything the store holds to an open archive."""
+    from calib import __version__
+    from calib.store import export_store
+
+    return export_store(store, to, version=__version__, progress=progress)
+
+
+def import_archive(archive: str | Path, to: str | Path | None, progress: Progress) -> Import:
+    """Make a new store from an open archive."""
+    from calib.store import import_store
+
+    return import_store(archive, _address(to), progress=progress)
+
+
+def kept_heads(written: Iterable[str]) -> tuple[KeptHead, ...]:
+    """Heads of the record chain as people kept them: NUMBER:HASH, or a file of store head.
+
+    Raises
+    ------
+    InputError
+        For anything else.
+    """
+    from calib.store.heads import read_head
+
+    return tuple(read_head(text) for text in written)
 
 
 def _address(url: str | Path | None) -> str | Path:

@@ -23,12 +23,18 @@ from calib.store.runs import Exclusion, Reading, RuleOverride, Run, RunFacts, Ru
 from calib.store.session import Store
 
 if TYPE_CHECKING:
+    from calib.store.archive_export import Export, export_store
+    from calib.store.archive_import import Import, import_store
     from calib.store.backup import Backup, backup_store
     from calib.store.check import StoreCheck, check_store
     from calib.store.findings import StoreFinding
     from calib.store.upgrade import Upgrade, upgrade_store
 
 _LATER = {
+    "Export": "calib.store.archive_export",
+    "Import": "calib.store.archive_import",
+    "export_store": "calib.store.archive_export",
+    "import_store": "calib.store.archive_import",
     "Backup": "calib.store.backup",
     "StoreCheck": "calib.store.check",
     "StoreFinding": "calib.store.findings",
@@ -50,6 +56,8 @@ __all__ = [
     "CurveStandard",
     "Event",
     "Exclusion",
+    "Export",
+    "Import",
     "Instrument",
     "IssuedReport",
     "Method",
@@ -76,6 +84,8 @@ __all__ = [
     "backup_store",
     "check_store",
     "default_store_path",
+    "export_store",
+    "import_store",
     "is_current",
     "open_store",
     "store_path",

@@ -1,7 +1,8 @@
 """Check a store from end to end: it reports, and never stops at damage."""
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
+from functools import partial
 
 from sqlalchemy import Connection
 
@@ -15,6 +16,7 @@ from calib.store.check_schema import (
     version_findings,
 )
 from calib.store.findings import StoreFinding, going_on
+from calib.store.heads import KeptHead, head_findings
 from calib.store.refusals import in_words
 from calib.store.session import Store
 
@@ -46,7 +48,11 @@ class StoreCheck:
         return not self.findings
 
 
-def check_store(store: Store, progress: Callable[[int, int], None] = no_progress) -> StoreCheck:
+def check_store(
+    store: Store,
+    progress: Callable[[int, int], None] = no_progress,
+    heads: Sequence[KeptHead] = (),
+) -> StoreCheck:
     """Check file, references, triggers, tables, versions, record chain and every row.
 
     Parameters
@@ -55,6 +61,8 @@ def check_store(store: Store, progress: Callable[[int, int], None] = no_progress
         The store; it is read in one state and not changed.
     progress : callable, optional
         Called with the number of rows done and in all.
+    heads : sequence of KeptHead, optional
+        Heads kept elsewhere, to compare the chain with.
 
     Returns
     -------
@@ -65,16 +73,19 @@ def check_store(store: Store, progress: Callable[[int, int], None] = no_progress
     findings: list[StoreFinding] = []
     try:
         with in_words(store.path), store.engine.connect() as connection:
-            findings.extend(_all_findings(connection, walk))
+            findings.extend(_all_findings(connection, walk, heads))
     except (NotAStore, StoreDamaged) as error:
         findings.append(StoreFinding("unreadable", "file", str(error)))
     return StoreCheck(tuple(findings), walk.entries, walk.rows, walk.sequence, walk.hash)
 
 
-def _all_findings(connection: Connection, walk: ChainWalk) -> Iterator[StoreFinding]:
+def _all_findings(
+    connection: Connection, walk: ChainWalk, heads: Sequence[KeptHead]
+) -> Iterator[StoreFinding]:
     yield from going_on("the file", file_findings, connection)
     yield from going_on("references between rows", reference_findings, connection)
     yield from going_on("triggers", trigger_findings, connection)
     yield from going_on("tables and indices", table_findings, connection)
     yield from going_on("versions", version_findings, connection)
     yield from going_on("the record chain", walk.findings, connection)
+    yield from going_on("heads kept elsewhere", partial(head_findings, kept=heads), connection)

@@ -2,7 +2,7 @@
 
 import json
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from datetime import datetime
 from typing import Any
 
@@ -59,14 +59,17 @@ class ChainWalk:
         self._total = sum(_count(connection, Base.metadata.tables[name]) for name in _RECORDED)
         sequences = list(connection.scalars(select(_CHAIN.c.sequence).order_by(_CHAIN.c.sequence)))
         for sequence, entry in read_each(connection, _CHAIN, sequences):
-            yield from self._entry(sequence, entry)
+            for finding in self._checked_entry(sequence, entry):
+                yield replace(finding, entry=sequence)
             if sum(map(len, self._waiting.values())) >= ROWS_TO_COMPARE_AT_ONCE:
                 yield from self._compare(connection)
         yield from self._compare(connection)
         yield from self._cut_off(connection)
         yield from self._unrecorded(connection)
 
-    def _entry(self, sequence: int, entry: Mapping[str, Any] | Unreadable | None) -> Iterator[StoreFinding]:
+    def _checked_entry(
+        self, sequence: int, entry: Mapping[str, Any] | Unreadable | None
+    ) -> Iterator[StoreFinding]:
         place = f"entry {sequence}"
         self.entries += 1
         if sequence != self.sequence + 1:
@@ -107,9 +110,8 @@ class ChainWalk:
         for name, recorded in waiting.items():
             table = Base.metadata.tables[name]
             for key, row in read_each(connection, table, sorted(recorded)):
-                yield from _compare_row(f"{name} {key}", row, recorded[key])
-                if name == "original" and isinstance(row, Mapping):
-                    yield from _compare_original(f"{name} {key}", row)
+                for finding in _compare_row(name, key, row, recorded[key]):
+                    yield replace(finding, entry=recorded[key].entry)
             self.rows += len(recorded)
             self.progress(min(self.rows, self._total), self._total)
 
@@ -135,14 +137,17 @@ def _count(connection: Connection, table: Table) -> int:
 
 
 def _compare_row(
-    place: str, row: Mapping[str, Any] | Unreadable | None, recorded: _Recorded
+    name: str, key: int, row: Mapping[str, Any] | Unreadable | None, recorded: _Recorded
 ) -> Iterator[StoreFinding]:
+    place = f"{name} {key}"
     if row is None:
         yield StoreFinding("row-missing", place, f"was recorded by entry {recorded.entry} and is gone")
     elif isinstance(digest := _digest(row), Unreadable):
         yield StoreFinding("row-unreadable", place, f"cannot be read: {digest.why}")
     elif digest != recorded.digest:
         yield StoreFinding("row-changed", place, f"is not as entry {recorded.entry} recorded it")
+    if name == "original" and isinstance(row, Mapping):
+        yield from _compare_original(place, row)
 
 
 def _digest(row: Mapping[str, Any] | Unreadable) -> str | Unreadable:

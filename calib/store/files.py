@@ -12,9 +12,29 @@ _NO_LINKS = {errno.EPERM, errno.ENOTSUP, errno.EOPNOTSUPP, errno.ENOSYS}
 
 
 def connect_file(path: Path, busy_seconds: float = 30.0) -> sqlite3.Connection:
-    """Connect to an SQLite file that is there; a missing one is an error, not a new empty file."""
-    address = f"{path.absolute().as_uri()}?mode=rw"
+    """Connect to an SQLite file that is there; a missing one is an error, not a new empty file.
+
+    Where file or folder may not be written, such as on a disk that is mounted for reading
+    only, the store is opened for reading. SQLite needs files beside a store in WAL mode even
+    to read it (https://www.sqlite.org/wal.html#readonly), unless it is told that nothing
+    changes it.
+    """
+    options = "mode=rw"
+    if not may_write(path):
+        options = "mode=ro" if _has_journal(path) else "mode=ro&immutable=1"
+    address = f"{path.absolute().as_uri()}?{options}"
     return sqlite3.connect(address, uri=True, timeout=busy_seconds, check_same_thread=False)
+
+
+def may_write(path: Path) -> bool:
+    """Whether a store file and the folder around it can be written."""
+    return os.access(path, os.W_OK) and os.access(path.absolute().parent, os.W_OK)
+
+
+def _has_journal(path: Path) -> bool:
+    """Whether changes wait beside the file that are not in it yet."""
+    journal = path.with_name(f"{path.name}-wal")
+    return journal.exists() and journal.stat().st_size > 0
 
 
 @contextmanager

@@ -34,11 +34,14 @@ class StoreFinding:
         Where: a table and row number, an entry of the chain, or the file.
     message : str
         What is wrong, in one line.
+    entry : int or None
+        The entry of the record chain that no longer holds; None where none can be named.
     """
 
     code: str
     place: str
     message: str
+    entry: int | None = None
 
 
 @dataclass(frozen=True, slots=True)

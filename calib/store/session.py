@@ -18,7 +18,7 @@ from calib.errors import StoreError
 from calib.store.base import Base
 from calib.store.chain import ChainEntry, Deed, append_entry, chain_head
 from calib.store.digests import canonical_json, key_of
-from calib.store.files import connect_file
+from calib.store.files import connect_file, may_write
 from calib.store.refusals import in_words
 
 WRITING = "calib_writing"
@@ -53,8 +53,10 @@ def connect_engine(path: Path, busy_seconds: float) -> Engine:
 def _set_pragmas(connection: Any, _record: object) -> None:
     # The driver must not begin transactions of its own: it would begin them deferred.
     connection.isolation_level = None
+    (name,) = [name for _, place, name in connection.execute("PRAGMA database_list") if place == "main"]
+    journal = ("journal_mode = WAL",) if may_write(Path(name)) else ()
     for pragma in (
-        "journal_mode = WAL",
+        *journal,
         "foreign_keys = ON",
         "recursive_triggers = ON",
         "synchronous = FULL",
