@@ -91,9 +91,9 @@ def audit(
         _expired_lots(period),
         AuditList(
             "overrides",
-            "Decisions against a rule: own work approved",
-            ("run", "approved by", "when (UTC)", "comment"),
-            own_work,
+            "Decisions against a rule",
+            ("run", "what"),
+            (*((run.id, e.what) for run, e in period.lines("override")), *own_work),
         ),
         _rejected(period),
         _causes(period),
@@ -141,14 +141,14 @@ def _without_review(period: _Period) -> AuditList:
 
 
 def _expired_lots(period: _Period) -> AuditList:
-    rows = tuple((*_named(run), e.what) for run, e in period.lines("override"))
+    rows = tuple((*_named(run), e.what) for run, e in period.lines("expired lot"))
     return AuditList("expired-lots", "Expired lots used", (*RUN, "what"), rows)
 
 
 def _own_work(session: Session, runs: Mapping[int, RunLine]) -> tuple[tuple[Cell, ...], ...]:
     query = select(tables.Review).where(tables.Review.own_work, tables.Review.decision == APPROVED)
     return tuple(
-        (r.run_id, r.by, f"{r.at:%Y-%m-%d %H:%M}", r.comment or "")
+        (r.run_id, f"own work approved by {r.by}, {r.at:%Y-%m-%d %H:%M} UTC: {r.comment or 'no comment'}")
         for r in session.scalars(query.order_by(tables.Review.id))
         if r.run_id in runs
     )

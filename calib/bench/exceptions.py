@@ -33,6 +33,7 @@ class RunException:
 KINDS = (
     "rejected",
     "override",
+    "expired lot",
     "exclusion",
     "failed check",
     "failed rule",
@@ -57,6 +58,7 @@ def exceptions_of_runs(session: Session, numbers: Runs = None) -> dict[int, tupl
     found: dict[int, list[RunException]] = {}
     for step in (
         _verdicts,
+        _overrides,
         _expired_lots,
         _exclusions,
         _repeats,
@@ -87,6 +89,12 @@ def _verdicts(session: Session, numbers: Runs) -> Found:
                 yield number, RunException(kind, f"{criterion['what']}: {criterion['detail']}")
 
 
+def _overrides(session: Session, numbers: Runs) -> Found:
+    row = tables.RuleOverride
+    for each in session.scalars(select(row).where(among(row.run_id, numbers)).order_by(row.id)):
+        yield each.run_id, RunException("override", f"{each.what} by {each.by}: {each.reason}")
+
+
 def _expired_lots(session: Session, numbers: Runs) -> Found:
     facts, lot = tables.RunFacts, tables.StandardLot
     query = (
@@ -97,7 +105,7 @@ def _expired_lots(session: Session, numbers: Runs) -> Found:
     for number, at, offset, name, expiry in session.execute(query):
         day = local(at, offset).date()
         if expiry is not None and day > expiry:
-            yield number, RunException("override", f"standard lot {name} used on {day}, expired {expiry}")
+            yield number, RunException("expired lot", f"standard lot {name} used on {day}, expired {expiry}")
 
 
 def _exclusions(session: Session, numbers: Runs) -> Found:

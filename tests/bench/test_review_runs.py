@@ -3,7 +3,7 @@
 from datetime import timedelta
 
 import pytest
-from small_laboratory import NOW, Bench, a_day, state_of, unknown, with_response
+from small_laboratory import NOW, Bench, a_day, header_block, state_of, unknown, with_response
 
 from calib.bench.correct_run import Change
 from calib.bench.laboratory import Laboratory
@@ -150,10 +150,12 @@ def test_failed_rules_late_entries_expired_lots_and_strangers_are_exceptions(sta
         by="KM",
     )
     lines = with_response(a_day(), 14, 60.0)  # the check standard reads far too high
-    staffed.log(lines, "late.csv", started="2026-03-20T08:00:00+01:00", standard_lot="OLD", operator="ZZ")
+    text = header_block(lines, started="2026-03-20T08:00:00+01:00", standard_lot="OLD", operator="ZZ")
+    staffed.laboratory.log(staffed.file("late.csv", text), lot_override="no other bottle")
     (line,) = [x for x in runs_to_review(staffed.store) if x.run.id == 2]
     kinds = {e.kind: e.what for e in line.exceptions}
-    assert kinds["override"] == "standard lot OLD used on 2026-03-20, expired 2026-03-02"
+    assert kinds["expired lot"] == "standard lot OLD used on 2026-03-20, expired 2026-03-02"
+    assert "no other bottle" in kinds["override"]
     assert kinds["late entry"] == "logged 12 d after it was measured"
     assert kinds["person"] == "measured by ZZ, who is not registered as analyst"
     change_setting(staffed.store, "late-after", "30 d", by="QM", reason="monthly import")
