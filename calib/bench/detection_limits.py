@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -87,7 +87,7 @@ def detection_limits(
             f"no accepted curve of {instrument} and method {method} is logged; log standards first"
         )
     records = [show_run(store, number) for number in usable]
-    found = [curve_limits(r.evaluation.curve, replicates) for r in records]
+    found = [_limits(r, replicates) for r in records]
     blanks = tuple(b for r in records for b in _blanks(r))
     spiked = tuple(s for r in records for s in _spiked(r, spikes)) if spikes else ()
     if spikes and not spiked:
@@ -104,6 +104,13 @@ def detection_limits(
         spikes=spiked,
         method_limit=method_detection_limit(spiked, blanks) if spikes else None,
     )
+
+
+def _limits(record: RunRecord, replicates: int) -> CurveLimits:
+    """Limits of the curve of a run; nothing is quantified below its lowest standard, anchors apart."""
+    found = curve_limits(record.evaluation.curve, replicates)
+    lowest = record.evaluation.verdict.lowest
+    return found if lowest is None else replace(found, quantifiable=max(found.quantifiable, lowest))
 
 
 def _blanks(record: RunRecord) -> list[float | None]:
