@@ -109,6 +109,34 @@ class ControlLevels(LimitedCriterion):
         )
 
 
+class ControlsInSampleRange(LimitedCriterion):
+    """Number of control levels inside the range of concentrations met in the samples.
+
+    Source of the rule: ICH M10, 2022, 3.3.3: at least two, else the curve is narrowed or controls added
+    (from memory).
+    """
+
+    key: ClassVar[str] = "controls_in_sample_range"
+    quantity: ClassVar[Quantity] = Quantity.COUNT
+
+    def judge(self, evidence: Evidence) -> CriterionResult:
+        """Compare the number of levels with the limit; without controls or samples there is nothing to judge."""
+        needed = int(self.limit.value)
+        what = f"at least {count(needed, 'control level')} among the concentrations met in the samples"
+        levels, met = _by_level(_controls(evidence)), evidence.sample_range
+        if not levels or met is None:
+            return self._result(what, None, True, "no controls, or no samples inside the calibrated range")
+        inside = [level for level in levels if met[0] <= level <= met[1]]
+        unit = evidence.concentration_unit
+        return self._result(
+            what,
+            len(inside),
+            len(inside) >= needed,
+            f"{count(len(inside), 'control level')} between {met[0]:.3g} and {amount(float(f'{met[1]:.3g}'), unit)}",
+            "narrow the curve, or add controls among the concentrations the samples have",
+        )
+
+
 def _controls(evidence: Evidence) -> list[JudgedCheck]:
     controls = (c for c in evidence.checks if c.role == "control")
     return sorted(controls, key=lambda c: (c.level, c.label, math.isnan(c.found), c.found))

@@ -7,6 +7,7 @@ from calib.acceptance.control_criteria import (
     RECOVERY,
     ControlLevels,
     ControlRecovery,
+    ControlsInSampleRange,
     ControlsPassing,
     ControlsPassingEachLevel,
 )
@@ -87,6 +88,7 @@ CRITERIA: Mapping[str, type[LimitedCriterion]] = MappingProxyType(
             ControlsPassing,
             ControlsPassingEachLevel,
             ControlLevels,
+            ControlsInSampleRange,
             MinimumBlanks,
             MinimumZeros,
             MinimumFirstChecks,

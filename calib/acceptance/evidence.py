@@ -102,6 +102,8 @@ class Evidence:
         standard adds to it; nan where there is no such share.
     reporting_limit : float or None
         Lowest concentration the method reports, undiluted.
+    sample_range : tuple of float, or None
+        Lowest and highest concentration met in the samples, before dilution and inside the calibrated range.
     """
 
     standards: tuple[JudgedStandard, ...]
@@ -118,6 +120,7 @@ class Evidence:
     counts: Mapping[str, int] = field(default_factory=dict)
     carry_over: tuple[float, ...] = ()
     reporting_limit: float | None = None
+    sample_range: tuple[float, float] | None = None
 
     @property
     def judged(self) -> tuple[JudgedStandard, ...]:

@@ -10,6 +10,7 @@ from dataclasses import replace
 import numpy as np
 
 from calib.acceptance import Evidence, JudgedCheck, JudgedStandard
+from calib.acceptance.control_criteria import ControlsInSampleRange
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import BlankRecord, Measured, StandardRecord
 from calib.curves.curve import Curve
@@ -61,6 +62,9 @@ def evidence_of(
         counts=_counts(readings),
         carry_over=tuple(_carry_over(curve, blanks, ends)),
         reporting_limit=definition.results.reporting_limit,
+        sample_range=(
+            _sample_range(curve, readings, ends) if ControlsInSampleRange.key in definition.limits else None
+        ),
     )
 
 
@@ -158,6 +162,15 @@ def _carry_over(
     zero, lowest = (float(curve.predict(x)) for x in (0.0, ends[0]))
     for response in found:
         yield (response - zero) / (lowest - zero) if lowest != zero else math.nan
+
+
+def _sample_range(
+    curve: Curve, readings: Sequence[Measured], ends: tuple[float, float] | None
+) -> tuple[float, float] | None:
+    """Lowest and highest concentration of the samples' readings, of those inside the calibrated range."""
+    found = read_back(curve, [r.response for r in readings if r.role == "unknown"])
+    inside = [v for v in found if v is not None and ends is not None and ends[0] <= v <= ends[1]]
+    return (min(inside), max(inside)) if inside else None
 
 
 def _number(value: float | None) -> float:

@@ -73,6 +73,15 @@ def test_three_control_levels_remain_inside_the_range(levels, passed):
 
 
 @pytest.mark.parametrize(
+    ("met", "passed"), [((2, 9), True), ((2.1, 8.9), False), ((2.1, 9), True), (None, True)]
+)
+def test_two_control_levels_lie_among_the_concentrations_of_the_samples(met, passed):
+    method = {"control_recovery": 0.15, "controls_in_sample_range": 2}
+    checks = [control(x) for x in (2, 5, 9)]
+    assert result("controls_in_sample_range", checks, method, sample_range=met).passed is passed
+
+
+@pytest.mark.parametrize(
     ("key", "role"),
     [
         ("minimum_blanks", "blank"),

@@ -20,6 +20,7 @@ CONTROLS = {
     "control_levels": 3,
     "minimum_controls": 6,
     "minimum_control_share": 0.05,
+    "controls_in_sample_range": 2,
 }
 FIGURES = {
     "bioanalytical-chromatographic": {

@@ -33,3 +33,11 @@ def test_a_noisy_plate_is_caught():
 
 def test_an_expired_curve_is_never_used():
     assert expired(2) == (2, 2)
+
+
+def test_controls_lie_among_the_concentrations_of_the_samples():
+    """Controls at 2.5, 40 and 85 mg/L; samples from 3 to 60 mg/L: only one level lies among them."""
+    (evaluation,) = rate(BENCHES[0], Truth(), 1, 5)
+    (told,) = [c for c in evaluation.verdict.criteria if c.id == "controls_in_sample_range"]
+    assert (told.observed, told.passed, told.warns) == (1, False, True)
+    assert evaluation.verdict.decision == "accepted"
