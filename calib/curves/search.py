@@ -3,9 +3,9 @@
 Every run is first solved from its data-driven start. A run is *doubtful* when that
 solution did not converge, sits on a bound, or leaves more than two per cent of the
 variation unexplained, and always when an asymmetry is free. Doubtful runs are solved
-again from the best cells of a profiled grid (linear parameters in closed form), and with
-a free asymmetry from seeded random starts as well. What this misses is measured in
-tests/benchmarks.
+again from the deepest minima of a profiled grid (linear parameters in closed form). With
+a free asymmetry, seeded random starts follow unless all of these met in one minimum. What
+this misses is measured in tests/benchmarks.
 """
 
 from __future__ import annotations
@@ -34,6 +34,11 @@ ROUNDING = 1e-12
 # they read back by more than the second.
 NEARLY_THE_SAME = 0.01
 READS_DIFFERENTLY = 0.01
+# Sums of one minimum reached from two starts, and a sum by the solver and by the formula.
+SAME = 1e-9
+SAME_BY_FORMULA = 1e-6
+# Runs that are searched at once.
+CHUNK = 2048
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,6 +61,10 @@ class Found:
     tangent: Array
     converged: Mask
     second: dict[int, Array] = field(default_factory=dict)
+
+    def take(self, which: NDArray[np.intp]) -> Found:
+        """Some of the runs, without their second solutions."""
+        return Found(self.parameters[:, which], self.total[which], self.tangent[which], self.converged[which])
 
 
 def weighted_stack(stack: Stack, levels: Levels, variance: Array) -> Stack:
@@ -156,54 +165,101 @@ def on_bound(stack: Stack, parameters: Array) -> Mask:
     return np.asarray(np.any(near & stack.free[:, None], axis=0))
 
 
-def _improved(stack: Stack, first: Found, doubtful: NDArray[np.intp]) -> Found:
-    """Solve the doubtful runs from more starts and keep the best."""
-    some = stack.take(doubtful)
-    starts = _more_starts(some)
-    count = starts.shape[1]
-    wide = some.take(np.repeat(np.arange(doubtful.size), count))
-    again = solve_from(wide, starts.transpose(0, 2, 1).reshape(starts.shape[0], -1))
-    total = np.vstack([first.total[doubtful], again.total.reshape(-1, count).T])
-    parameters = np.concatenate(
-        [
-            first.parameters[:, None, doubtful],
-            again.parameters.reshape(-1, doubtful.size, count).transpose(0, 2, 1),
-        ],
-        axis=1,
-    )
-    tangent = np.vstack([first.tangent[doubtful], again.tangent.reshape(-1, count).T])
-    converged = np.vstack([first.converged[doubtful], again.converged.reshape(-1, count).T])
-    best = _best(total, converged)
-    rows = np.arange(doubtful.size)
+def _improved(stack: Stack, first: Found, which: NDArray[np.intp]) -> Found:
+    """Solve some of the runs from more starts and keep the best, a chunk at a time."""
     result = Found(first.parameters.copy(), first.total.copy(), first.tangent.copy(), first.converged.copy())
-    result.parameters[:, doubtful] = parameters[:, best, rows]
-    result.total[doubtful] = total[best, rows]
-    result.tangent[doubtful] = tangent[best, rows]
-    result.converged[doubtful] = converged[best, rows]
-    result.second.update(_second_solutions(stack, doubtful, parameters, total, converged, best))
+    for i in range(0, which.size, CHUNK):
+        runs = which[i : i + CHUNK]
+        some = stack.take(runs)
+        ends = _ends(some, first.take(runs))
+        best = _best(ends)
+        rows = np.arange(runs.size)
+        result.parameters[:, runs] = ends.parameters[:, best, rows]
+        for name in ("total", "tangent", "converged"):
+            getattr(result, name)[runs] = getattr(ends, name)[best, rows]
+        second = _second_solutions(some, ends, best)
+        result.second.update({int(runs[j]): other for j, other in second.items()})
     return result
 
 
-def _best(total: Array, converged: Mask) -> NDArray[np.intp]:
-    """Lowest sum; of equal ones, to rounding, a converged one."""
-    lowest = total.min(axis=0)
-    with np.errstate(invalid="ignore"):
-        equal = total <= lowest * (1.0 + 1e-12)
-    return np.asarray(np.argmax(equal * (1 + converged), axis=0))
+@dataclass(frozen=True, slots=True)
+class _Ends:
+    """Where S starts of R runs ended: parameters (k, S, R), the others (S, R); sums infinite where unused."""
+
+    parameters: Array
+    total: Array
+    tangent: Array
+    converged: Mask
 
 
-def _more_starts(stack: Stack) -> Array:
-    """Start values (k, starts, R) from the grid, and seeded ones with a free asymmetry."""
+def _ends(stack: Stack, first: Found) -> _Ends:
+    """Ends from the data, from the minima of the grid, and where these differ from seeded cells."""
     x = stack.x[:, 0] if stack.x.shape[1] == 1 else stack.x.max(axis=1)
     cells = stack.model.grid(x)
-    starts = [_grid_starts(stack, cells)]
-    if _asymmetry_free(stack):
-        drawn = _random_cells(cells)
-        starts.append(np.repeat(drawn.T[:, :, None], stack.runs, axis=2))
-    nonlinear = np.concatenate(starts, axis=1)
-    full = np.ones((stack.free.size, nonlinear.shape[1], stack.runs))
-    full[~stack.model.linear] = nonlinear
-    return full
+    grid, wanted = _grid_starts(stack, cells)
+    drawn = _random_cells(cells) if _asymmetry_free(stack) else cells[:0]
+    shape = (1 + grid.shape[1] + drawn.shape[0], stack.runs)
+    ends = _Ends(
+        np.ones((stack.free.size, *shape)),
+        np.full(shape, np.inf),
+        np.full(shape, np.inf),
+        np.zeros(shape, bool),
+    )
+    ends.parameters[:, 0], ends.total[0] = first.parameters, first.total
+    ends.tangent[0], ends.converged[0] = first.tangent, first.converged
+    last = 1 + grid.shape[1]
+    ends.parameters[~stack.model.linear, 1:last] = grid
+    _solve_starts(stack, ends, np.arange(1, last), wanted)
+    if drawn.size:
+        ends.parameters[~stack.model.linear, last:] = drawn.T[:, :, None]
+        apart = np.broadcast_to(~_agreed(ends, last), (drawn.shape[0], stack.runs))
+        _solve_starts(stack, ends, np.arange(last, shape[0]), apart)
+    _refuse_rounding(stack, ends)
+    return ends
+
+
+def _solve_starts(stack: Stack, ends: _Ends, starts: NDArray[np.intp], wanted: Mask) -> None:
+    """Solve the wanted ones (starts, R) of some starts and put their ends in their place."""
+    which, runs = np.nonzero(wanted)
+    if runs.size == 0:
+        return
+    place = starts[which]
+    found = solve_from(stack.take(runs), ends.parameters[:, place, runs])
+    ends.parameters[:, place, runs] = found.parameters
+    ends.total[place, runs], ends.tangent[place, runs] = found.total, found.tangent
+    ends.converged[place, runs] = found.converged
+
+
+def _agreed(ends: _Ends, count: int) -> Mask:
+    """Runs (R,) of which the first so many starts, as far as they were used, met in one minimum."""
+    total, converged = ends.total[:count], ends.converged[:count]
+    used = np.isfinite(total)
+    lowest = total.min(axis=0)
+    with np.errstate(invalid="ignore"):
+        same = converged & (total <= lowest * (1.0 + SAME))
+    return np.asarray((same | ~used).all(axis=0) & (used.sum(axis=0) > 1))
+
+
+def _refuse_rounding(stack: Stack, ends: _Ends) -> None:
+    """Make sums infinite that the parameters themselves do not give.
+
+    On the way to infinity two terms of the curve may grow until their difference is rounding.
+    """
+    size = np.sum((stack.root_weight * stack.y) ** 2, axis=0)
+    for p, total in zip(ends.parameters.transpose(1, 0, 2), ends.total, strict=True):
+        with np.errstate(all="ignore"):
+            misfit = stack.root_weight * (stack.model.response(stack.x, list(p)) - stack.y)
+            again = np.sum(misfit**2, axis=0) + stack.pure
+            given = again <= total * (1.0 + SAME_BY_FORMULA) + ROUNDING**2 * size
+        total[~given] = np.inf
+
+
+def _best(ends: _Ends) -> NDArray[np.intp]:
+    """Lowest sum; of equal ones, to rounding, a converged one."""
+    lowest = ends.total.min(axis=0)
+    with np.errstate(invalid="ignore"):
+        equal = ends.total <= lowest * (1.0 + 1e-12)
+    return np.asarray(np.argmax(equal * (1 + ends.converged), axis=0))
 
 
 def _random_cells(cells: Array) -> Array:
@@ -213,16 +269,32 @@ def _random_cells(cells: Array) -> Array:
     return np.asarray(np.exp(low + generator.random((RANDOM_STARTS, cells.shape[1])) * (high - low)))
 
 
-def _grid_starts(stack: Stack, cells: Array) -> Array:
-    """Nonlinear values (q, starts, R) of the cells that explain each run best."""
+def _grid_starts(stack: Stack, cells: Array) -> tuple[Array, Mask]:
+    """Nonlinear values (q, starts, R) of the deepest minima of the profiled grid, and which there are.
+
+    A cell is a minimum when none of its neighbours along an axis explains more; the best three
+    cells would often lie side by side in one valley.
+    """
     left = np.empty((cells.shape[0], stack.runs))
     shared = stack.x.shape[1] == 1 and stack.root_weight.shape[1] == 1
     for part in _parts(stack.runs, shared):
         left[:, part] = _unexplained(stack.take(part), cells)
+    depth = np.where(_minima(left, cells), left, np.inf)
     keep = min(GRID_STARTS, cells.shape[0])
-    best = np.argpartition(left, keep - 1, axis=0)[:keep]
-    best = np.take_along_axis(best, np.argsort(np.take_along_axis(left, best, axis=0), axis=0), axis=0)
-    return np.asarray(cells.T[:, best])
+    best = np.argsort(depth, axis=0, kind="stable")[:keep]
+    return np.asarray(cells.T[:, best]), np.isfinite(np.take_along_axis(depth, best, axis=0))
+
+
+def _minima(left: Array, cells: Array) -> Mask:
+    """Which cells (cells, R) of a lattice are lower than or level with their neighbours."""
+    shape = tuple(np.unique(axis).size for axis in cells.T)
+    lattice = left.reshape(*shape, left.shape[1])
+    minimum = np.ones(lattice.shape, dtype=bool)
+    for axis in range(len(shape)):
+        along, here = np.moveaxis(minimum, axis, 0), np.moveaxis(lattice, axis, 0)
+        along[:-1] &= here[:-1] <= here[1:]
+        along[1:] &= here[1:] <= here[:-1]
+    return minimum.reshape(left.shape)
 
 
 def _parts(runs: int, shared: bool) -> list[slice]:
@@ -267,27 +339,23 @@ def _projection(q: Array, rest: Array) -> Array:
     return np.asarray(np.sum(q * rest, axis=-1))
 
 
-def _second_solutions(
-    stack: Stack,
-    doubtful: NDArray[np.intp],
-    parameters: Array,
-    total: Array,
-    converged: Mask,
-    best: NDArray[np.intp],
-) -> dict[int, Array]:
+def _second_solutions(stack: Stack, ends: _Ends, best: NDArray[np.intp]) -> dict[int, Array]:
     """Distinct minima of nearly the same sum that read the standards back differently."""
     second: dict[int, Array] = {}
-    rows = np.arange(doubtful.size)
-    lowest = total[best, rows]
+    lowest = ends.total[best, np.arange(best.size)]
     with np.errstate(invalid="ignore"):
-        rival = converged & (total <= lowest * (1.0 + NEARLY_THE_SAME)) & (total > lowest * (1.0 + 1e-9))
-    for column in np.flatnonzero(rival.any(axis=0)):
-        x = stack.x[:, 0] if stack.x.shape[1] == 1 else stack.x[:, doubtful[column]]
-        p = parameters[:, best[column], column]
-        for j in np.flatnonzero(rival[:, column]):
-            other = parameters[:, j, column]
+        rival = (
+            ends.converged
+            & (ends.total <= lowest * (1.0 + NEARLY_THE_SAME))
+            & (ends.total > lowest * (1.0 + SAME))
+        )
+    for run in np.flatnonzero(rival.any(axis=0)):
+        x = stack.x[:, 0] if stack.x.shape[1] == 1 else stack.x[:, run]
+        p = ends.parameters[:, best[run], run]
+        for j in np.flatnonzero(rival[:, run]):
+            other = ends.parameters[:, j, run]
             if reads_differently(stack, x, p, other) > READS_DIFFERENTLY:
-                second[int(doubtful[column])] = other
+                second[int(run)] = other
                 break
     return second
 
