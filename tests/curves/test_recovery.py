@@ -22,6 +22,8 @@ TRUTHS = [
     ("line", (0.1, -2.0), NARROW, ((1, 0), (1, -1))),
     ("proportional", (2.0,), NARROW, ((1, -1),)),
     ("quadratic", (0.1, 2.0, -0.05), NARROW, ((1, 0), (1, -1), (1, -2))),
+    ("power-law", (0.1, 2.0, 0.8), NARROW, ((1, 0), (1, -0.8), (0, 0))),
+    ("quenching", (0.0, 2.0, 0.4), NARROW, ((1, 0), (1, 0), (0, -1))),
     ("saturation", (0.1, 2.0, 1.0), WIDE, ((1, 0), (1, 0), (0, 1))),
     ("saturation", (2.5, -2.0, 1.0), WIDE, ((1, 0), (1, 0), (0, 1))),
     ("squared-saturation", (0.1, 2.0, 1.0), WIDE, ((1, 0), (1, 0), (0, 1))),
@@ -41,7 +43,7 @@ def test_noise_free_standards_are_recovered(
     model: str,
     truth: tuple[float, ...],
     x: np.ndarray,
-    powers: tuple[tuple[int, int], ...],
+    powers: tuple[tuple[float, float], ...],
     response_unit: float,
     concentration_unit: float,
 ) -> None:
@@ -82,6 +84,34 @@ def test_units_do_not_change_the_answer(log_x: float, log_y: float, truth: tuple
     for name in ("value", "u", "lower", "upper"):
         np.testing.assert_allclose(getattr(there, name) / k_x, getattr(here, name), rtol=1e-7, err_msg=name)
     assert there.state == here.state
+
+
+@pytest.mark.parametrize("concentration_unit", [1e-6, 1e6])
+@pytest.mark.parametrize("response_unit", [1e-6, 1e6])
+@pytest.mark.parametrize(("model", "truth", "x", "powers"), TRUTHS)
+def test_units_change_neither_what_is_read_nor_its_limits(
+    model: str,
+    truth: tuple[float, ...],
+    x: np.ndarray,
+    powers: object,
+    response_unit: float,
+    concentration_unit: float,
+) -> None:
+    mean = response_model(model).response(x, truth)
+    span = np.ptp(mean)
+    y = mean + 0.01 * span * np.random.default_rng(8).standard_normal(x.size)
+    unknowns = mean.min() + np.array([0.3, 0.5, 0.7]) * span
+    here = calib.fit(x, y, model=model)
+    there = calib.fit(x * concentration_unit, y * response_unit, model=model)
+    read, again = here.invert(unknowns), there.invert(unknowns * response_unit)
+    assert again.state == read.state
+    assert "ok" in read.state
+    for name in ("value", "u", "lower", "upper"):
+        np.testing.assert_allclose(
+            getattr(again, name) / concentration_unit, getattr(read, name), rtol=1e-7, err_msg=name
+        )
+    back, back_again = here.back_calculate().value, there.back_calculate().value
+    np.testing.assert_allclose(back_again / concentration_unit, back, rtol=1e-7, atol=1e-7)
 
 
 @settings(max_examples=15, deadline=None, derandomize=True)
