@@ -10,6 +10,7 @@ from datetime import datetime, timedelta, timezone
 from sqlalchemy.orm import Session
 
 from calib import store as tables
+from calib.bench.evaluate import with_basis
 from calib.bench.find import (
     current_curve,
     facts_of,
@@ -19,6 +20,7 @@ from calib.bench.find import (
     solution_named,
     void_of,
 )
+from calib.bench.find_basis import find_basis, keep_basis, request_for
 from calib.bench.find_readings import find_readings
 from calib.bench.formed_results import CurveRun, curve_run
 from calib.bench.keeping import (
@@ -141,9 +143,11 @@ def amend_run(store: tables.Store, number: int, change: Change, *, reason: str, 
         _amend_facts(session, number, change, reason, by, now)
         _amend_readings(session, record.readings, number, change)
         session.flush()
+        if change.lot:
+            _find_bases_again(session, record, by, now)
         if change.instrument and record.heading.kind == "calibration":
             _judge_again(session, number, by, now, reason)
-        elif change.instrument or change.samples or change.dilutions:
+        elif change.instrument or change.samples or change.dilutions or change.lot:
             _requantify(session, number)
     return show_run(store, number)
 
@@ -260,6 +264,7 @@ def _supersede(
 ) -> int:
     """Write the new curve over the old one, with all quantities that rest on it; its number."""
     number = record.heading.id or 0
+    evaluation = with_basis(record.definition, record.readings, evaluation, record.evaluation.basis)
     ids = {r.ordinal: r.id for r in current_readings(session, number)}
     curve_id = add_evaluation(
         session, number, evaluation, ids, by=by, at=at, supersedes=record.curve_id, reason=reason
@@ -276,6 +281,19 @@ def _judge_again(session: Session, number: int, by: str, now: datetime, reason: 
     record = load_run(session, number, (0, ""))
     evaluation = evaluate_and_check(record.definition, record.readings, record.evaluation.history)
     _supersede(session, record, evaluation, by=by, at=now, reason=reason)
+
+
+def _find_bases_again(session: Session, record: RunRecord, by: str, now: datetime) -> None:
+    """Another lot has another certificate: for the run, and for those read on its curve."""
+    number = record.heading.id or 0
+    levels = [s.concentration for s in record.evaluation.standards]
+    for each in (number, *dependent_runs(session, number)):
+        source = facts_of(session, record.curve_run or number)
+        request = request_for(session, record.definition, source, levels, facts_of(session, each).at)
+        keep_basis(session, each, find_basis(session, request), by=by, at=now)
+        session.flush()
+        if each != number:
+            _requantify(session, each)
 
 
 def _requantify(session: Session, number: int) -> None:
@@ -295,6 +313,7 @@ def _requantify(session: Session, number: int) -> None:
         verdict.highest,
         flag,
         _curve_run(session, record),
+        record.evaluation.basis,
     )
     add_quantities(session, number, record.curve_id or 0, found)
 

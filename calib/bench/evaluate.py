@@ -22,6 +22,7 @@ from calib.bench.records import (
     StandardRecord,
     VerdictRecord,
 )
+from calib.bench.uncertainty_basis import UncertaintyBasis
 from calib.curves.curve import Curve
 from calib.curves.diagnostics import Finding
 from calib.curves.fit import fit
@@ -136,6 +137,30 @@ def assemble(
     )
     used = history if isinstance(curve.noise, HistoryNoise) else None
     return Evaluation(curve, standards, blanks, verdict, quantities, history=used), evidence
+
+
+def with_basis(
+    definition: MethodDefinition,
+    readings: Sequence[Measured],
+    evaluation: Evaluation,
+    basis: UncertaintyBasis,
+) -> Evaluation:
+    """The evaluation with its quantities on a basis; verdict and curve rest on the readings alone."""
+    if not basis.combined:
+        return replace(evaluation, basis=basis)
+    verdict = evaluation.verdict
+    others = [r for r in readings if r.role in ("unknown", "control", *CHECK_ROLES)]
+    quantities = quantities_of(
+        definition,
+        evaluation.curve,
+        verdict.accepted,
+        others,
+        verdict.lowest,
+        verdict.highest,
+        of_curve=curve_run(readings, verdict.carried_over),
+        basis=basis,
+    )
+    return replace(evaluation, quantities=quantities, basis=basis)
 
 
 def _standards(curve: Curve, readings: Sequence[Measured], fitted: set[int]) -> Iterable[StandardRecord]:

@@ -10,6 +10,8 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
+from calib.bench.evaluate import with_basis
+from calib.bench.find_basis import keep_basis
 from calib.bench.keeping import add_evaluation, add_first_quantities, versions
 from calib.bench.noise_history import refuse_changed_history
 from calib.bench.outlying_readings import evaluate_and_check
@@ -42,9 +44,8 @@ def evaluate_plan(plan: LogPlan) -> EvaluatedPlan:
                 f"{plan.file.name}: no standards in it; unknowns alone belong to calib quantify, "
                 "which reads them on the curve in force"
             )
-    return EvaluatedPlan(
-        plan, tuple(evaluate_and_check(r.definition, r.measured, r.history) for r in plan.runs)
-    )
+    found = ((r, evaluate_and_check(r.definition, r.measured, r.history)) for r in plan.runs)
+    return EvaluatedPlan(plan, tuple(with_basis(r.definition, r.measured, e, r.basis) for r, e in found))
 
 
 def log_plan(store: tables.Store, evaluated: EvaluatedPlan) -> tuple[RunRecord, ...]:
@@ -174,6 +175,7 @@ def _write(
     )
     curve_id = add_evaluation(session, run_id, evaluation, reading_ids, by=plan.by, at=now)
     add_first_quantities(session, run_id, curve_id, evaluation.quantities)
+    keep_basis(session, run_id, evaluation.basis, by=plan.by, at=now)
     return run_id, curve_id
 
 

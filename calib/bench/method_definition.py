@@ -5,13 +5,14 @@ from __future__ import annotations
 import math
 import tomllib
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 
 from calib.acceptance import ExclusionRule, Limit
 from calib.bench.acceptance_settings import acceptance_limits
+from calib.bench.budget_settings import BudgetSettings, budget_settings
 from calib.bench.durations import hours_of
 from calib.bench.exclusion_settings import exclusion_rule
 from calib.bench.result_settings import (
@@ -45,6 +46,7 @@ OPTIONAL = (
     "results",
     "checks",
     "specification",
+    "budget",
 )
 # Noise pooled over past runs; the only name that `calib.fit` does not know.
 HISTORY = "history"
@@ -78,6 +80,8 @@ class MethodDefinition:
     checks : CheckRules
     specification : Specification or None
         What results are compared with; None where the method makes no statement.
+    budget : BudgetSettings
+        Uncertainties of dilution and of preparing a level.
     """
 
     name: str
@@ -100,6 +104,7 @@ class MethodDefinition:
     results: ResultRules
     checks: CheckRules
     specification: Specification | None
+    budget: BudgetSettings = field(default_factory=BudgetSettings)
 
 
 def read_definition(text: str, version: int = 1, preset: str | None = None) -> MethodDefinition:
@@ -167,6 +172,7 @@ def _definition(table: Mapping[str, Any], version: int, preset: str | None) -> M
         results=result_rules(table.get("results"), unit),
         checks=checks,
         specification=specification_of(table.get("specification"), unit),
+        budget=budget_settings(table.get("budget")),
     )
 
 

@@ -12,12 +12,14 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.find import instrument_named, method_named, solution_named
+from calib.bench.find_basis import BasisRequest, find_basis
 from calib.bench.find_readings import with_exclusions
 from calib.bench.keeping import definition_of, is_saturated
 from calib.bench.lot_rules import Override, usable_lot
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.noise_history import history_before
 from calib.bench.records import Measured, NoiseHistory
+from calib.bench.uncertainty_basis import CURVE_ONLY, UncertaintyBasis
 from calib.errors import DuplicateFile, InputError, UnknownUnit
 from calib.intake import (
     ParsedFile,
@@ -73,6 +75,7 @@ class PlannedRun:
     notes: tuple[str, ...] = field(default=())
     overrides: tuple[Override, ...] = ()
     prepared: tables.Preparation | None = None
+    basis: UncertaintyBasis = CURVE_ONLY
 
     @property
     def material(self) -> str | None:
@@ -225,7 +228,15 @@ def _plan(
         notes=(*_notes(run, definition, factor), *_lot_notes(named, at)),
         prepared=prepared,
         overrides=overrides,
+        basis=find_basis(
+            session, BasisRequest(definition, instrument.id, at, lot, prepared, _levels_of(measured))
+        ),
     )
+
+
+def _levels_of(measured: Sequence[Measured]) -> tuple[float, ...]:
+    roles = ("standard", "anchor")
+    return tuple(m.concentration for m in measured if m.role in roles and m.concentration is not None)
 
 
 def _lot(

@@ -9,7 +9,8 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.curve_life import refuse_unchecked
-from calib.bench.find import current_curve, run_numbered
+from calib.bench.find import current_curve, facts_of, run_numbered
+from calib.bench.find_basis import find_basis, keep_basis, request_for
 from calib.bench.formed_results import curve_run
 from calib.bench.keeping import add_first_quantities
 from calib.bench.log_run import add_original, add_readings, add_run
@@ -17,6 +18,7 @@ from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.quantities import quantities_of
 from calib.bench.records import QuantityRecord, RunRecord
 from calib.bench.show_run import dependents_of, load_run, local, show_run
+from calib.bench.uncertainty_basis import CURVE_ONLY, UncertaintyBasis
 from calib.errors import InputError
 
 QUANTIFIED_ROLES = ("unknown", "control", "check", "first-check")
@@ -38,19 +40,31 @@ def quantify_plan(store: tables.Store, plan: LogPlan) -> tuple[RunRecord, ...]:
         sources = [load_run(session, c.run_id, (0, "")) for c in curves]
         for run, source in zip(plan.runs, sources, strict=True):
             refuse_unchecked(session, run, source)
-    results = [quantify_on(source, run) for source, run in zip(sources, plan.runs, strict=True)]
+        bases = [_basis(session, source, run) for source, run in zip(sources, plan.runs, strict=True)]
+    results = [quantify_on(*each) for each in zip(sources, plan.runs, bases, strict=True)]
     now = store.now()
     numbers = []
     with store.change(action="quantify unknowns", by=plan.by) as session:
         refuse_duplicates(session, plan.file, plan.runs)
         original_id = add_original(session, plan.file, now)
-        for run, source, curve, quantities in zip(plan.runs, sources, curves, results, strict=True):
-            refuse_unchecked(session, run, source)
-            numbers.append(_write(session, plan, run, curve, quantities, original_id, now))
+        for i, (run, curve) in enumerate(zip(plan.runs, curves, strict=True)):
+            refuse_unchecked(session, run, sources[i])
+            number = _write(session, plan, run, curve, results[i], original_id, now)
+            keep_basis(session, number, bases[i], by=plan.by, at=now)
+            numbers.append(number)
     return tuple(show_run(store, n) for n in numbers)
 
 
-def quantify_on(source: RunRecord, run: PlannedRun) -> tuple[QuantityRecord, ...]:
+def _basis(session: Session, source: RunRecord, run: PlannedRun) -> UncertaintyBasis:
+    """What is known beside reading and curve: the lot of the curve, and its age where it is of another day."""
+    facts = facts_of(session, source.heading.id or 0)
+    levels = [s.concentration for s in source.evaluation.standards]
+    return find_basis(session, request_for(session, source.definition, facts, levels, run.at))
+
+
+def quantify_on(
+    source: RunRecord, run: PlannedRun, basis: UncertaintyBasis = CURVE_ONLY
+) -> tuple[QuantityRecord, ...]:
     """Quantities of a planned run on the curve of another run."""
     verdict = source.evaluation.verdict
     return quantities_of(
@@ -61,6 +75,7 @@ def quantify_on(source: RunRecord, run: PlannedRun) -> tuple[QuantityRecord, ...
         verdict.lowest,
         verdict.highest,
         of_curve=curve_run(source.readings),
+        basis=basis,
     )
 
 

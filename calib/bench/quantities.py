@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
 from itertools import groupby
 
 import numpy as np
@@ -10,7 +11,9 @@ import numpy as np
 from calib.bench.formed_results import CurveRun, formed
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured, QuantityRecord
+from calib.bench.uncertainty_basis import CURVE_ONLY, UncertaintyBasis
 from calib.curves.curve import Curve
+from calib.quantification.budget import FurtherUncertainty, budget_parts
 from calib.quantification.inverse import Quantity, invert
 from calib.quantification.replicates import replicates_disagree
 
@@ -26,6 +29,7 @@ def quantities_of(
     highest: float | None,
     unusable_flag: str = "curve-rejected",
     of_curve: CurveRun = NOTHING_KNOWN,
+    basis: UncertaintyBasis = CURVE_ONLY,
 ) -> tuple[QuantityRecord, ...]:
     """Quantify samples: responses of one sample and dilution are averaged, then inverted.
 
@@ -45,34 +49,58 @@ def quantities_of(
         Flag of a quantity without a concentration when the curve is not usable.
     of_curve : CurveRun
         What the run of the curve says about its samples.
+    basis : UncertaintyBasis
+        What is known beside reading and curve.
     """
     groups = [tuple(g) for g in _groups(readings)]
-    present = [g for g in groups if any(r.response is not None for r in g)]
-    found: Quantity | None = None
-    if present and curve.converged:
-        found = invert(
-            curve,
-            [_mean(g) for g in present],
-            replicates=[sum(r.response is not None for r in g) for g in present],
-            confidence=definition.interval_confidence,
-        )
-    order = {id(g): i for i, g in enumerate(present)}
+    found = _inverted(definition, curve, groups, basis) if curve.converged else {}
     tests = ("check", "first-check")
     found_of_groups = tuple(
         _record(
             definition,
-            curve,
             g,
             # A check is read back on a rejected curve too: it is part of why it was rejected.
-            found if usable or g[0].role in tests else None,
-            order.get(id(g)),
+            found.get(i) if usable or g[0].role in tests else None,
             lowest,
             highest,
             None if usable else unusable_flag,
         )
-        for g in groups
+        for i, g in enumerate(groups)
     )
     return formed(definition, curve, readings, found_of_groups, highest, of_curve)
+
+
+@dataclass(frozen=True, slots=True)
+class _Found:
+    """One unknown among those that were inverted together."""
+
+    curve: Curve
+    quantity: Quantity
+    i: int
+    components: tuple[FurtherUncertainty, ...]
+
+
+def _inverted(
+    definition: MethodDefinition, curve: Curve, groups: Sequence[Sequence[Measured]], basis: UncertaintyBasis
+) -> dict[int, _Found]:
+    """Unknowns by the place of their group; the diluted ones apart, for they have a component more."""
+    present = [i for i, g in enumerate(groups) if any(r.response is not None for r in g)]
+    apart = basis.combined and basis.dilution is not None
+    diluted = [i for i in present if apart and groups[i][0].dilution != 1.0]
+    others = [i for i in present if i not in diluted]
+    found: dict[int, _Found] = {}
+    for places in (others, diluted):
+        if places:
+            components = basis.components(curve, diluted=places is diluted)
+            quantity = invert(
+                curve,
+                [_mean(groups[i]) for i in places],
+                replicates=[sum(r.response is not None for r in groups[i]) for i in places],
+                confidence=definition.interval_confidence,
+                components=components,
+            )
+            found |= {i: _Found(curve, quantity, k, components) for k, i in enumerate(places)}
+    return found
 
 
 def _groups(readings: Sequence[Measured]) -> Iterable[Iterable[Measured]]:
@@ -94,10 +122,8 @@ def _mean(group: Sequence[Measured]) -> float:
 
 def _record(
     definition: MethodDefinition,
-    curve: Curve,
     group: Sequence[Measured],
-    found: Quantity | None,
-    i: int | None,
+    inverted: _Found | None,
     lowest: float | None,
     highest: float | None,
     unusable: str | None,
@@ -105,14 +131,15 @@ def _record(
     one = group[0]
     responses = [r.response for r in group if r.response is not None]
     flags = _reading_flags(group, len(responses))
-    if found is None or i is None:
+    if inverted is None:
         cause = unusable if unusable and responses else "no-value"
         return _without_value(definition, one, responses, (*flags, cause))
+    found, i = inverted.quantity, inverted.i
     position = _position(float(found.value[i]), found.position[i], lowest, highest)
     flags += _value_flags(found, i, position)
     if unusable:
         flags += (unusable,)
-    if len(responses) > 1 and replicates_disagree(curve, responses):
+    if len(responses) > 1 and replicates_disagree(inverted.curve, responses):
         flags += ("replicate-spread",)
     value, inside = _finite(found.value[i]), position == "inside"
     return QuantityRecord(
@@ -130,7 +157,7 @@ def _record(
         upper=_times(_finite(found.upper[i]), one.dilution),
         upper_open=bool(np.isinf(found.upper[i])),
         confidence=definition.interval_confidence,
-        kind="curve only",
+        kind="combined" if inverted.components else "curve only",
         degrees_of_freedom=_finite(found.degrees_of_freedom[i]),
         state=found.state[i],
         position=position,
@@ -138,7 +165,7 @@ def _record(
         dilution=one.dilution,
         unit=definition.concentration_unit,
         curve_id=None,
-        budget=_budget(curve, found, i, len(responses), one.dilution),
+        budget=_budget(inverted, len(responses), one.dilution),
     )
 
 
@@ -207,15 +234,15 @@ def _position(value: float, by_response: str, lowest: float | None, highest: flo
     return "above" if value > highest else "below" if value < lowest else "inside"
 
 
-def _budget(curve: Curve, found: Quantity, i: int, replicates: int, dilution: float) -> dict[str, float]:
-    """Standard uncertainties of the two parts of a curve-only budget, in the sample's unit."""
-    x = float(found.value[i])
-    if not (np.isfinite(x) and np.isfinite(found.u[i])):
+def _budget(inverted: _Found, replicates: int, dilution: float) -> dict[str, float]:
+    """Standard uncertainty of each component, in the sample's unit; empty where there is no u."""
+    found, i = inverted.quantity, inverted.i
+    if not np.isfinite(found.u[i]):
         return {}
-    slope = abs(float(curve.response_model.slope(x, curve.values)))
-    reading = float(np.sqrt(curve.reading_variance(x) / replicates)) / slope
-    own = float(np.sqrt(curve.fit_variance(x))) / slope
-    return {"repeatability of the reading": reading * dilution, "curve": own * dilution}
+    parts = budget_parts(
+        inverted.curve, found.value[i : i + 1], np.array([float(replicates)]), inverted.components
+    )
+    return {name: float(u[0]) * dilution for name, u in parts.items()}
 
 
 def _finite(value: float) -> float | None:

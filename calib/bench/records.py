@@ -9,6 +9,7 @@ from datetime import date, datetime
 from calib.acceptance import CriterionResult
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.review_state import NO_REVIEW, ReviewState
+from calib.bench.uncertainty_basis import CURVE_ONLY, UncertaintyBasis
 from calib.curves.curve import Curve
 from calib.curves.history_noise import HistoryNoise
 
@@ -221,6 +222,7 @@ class Evaluation:
     before: tuple[Evaluation, ...] = ()
     history: NoiseHistory | None = None
     outlying: OutlyingProposal | None = None
+    basis: UncertaintyBasis = CURVE_ONLY
 
 
 @dataclass(frozen=True, slots=True)

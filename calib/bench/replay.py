@@ -10,9 +10,11 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from calib import store as tables
+from calib.bench.evaluate import with_basis
 from calib.bench.evaluate_many import evaluate_many
 from calib.bench.evidence import finite
 from calib.bench.find import instrument_named, method_named, run_numbered
+from calib.bench.find_basis import kept_bases, under_settings
 from calib.bench.formed_results import curve_run
 from calib.bench.keeping import definition_of
 from calib.bench.method_definition import HISTORY, MethodDefinition, read_definition
@@ -39,6 +41,7 @@ from calib.bench.replay_records import (
     Span,
     sample_changes,
 )
+from calib.bench.uncertainty_basis import CURVE_ONLY, UncertaintyBasis
 from calib.curves.curve import Curve
 from calib.curves.history_noise import HistoryNoise
 from calib.errors import InputError, MethodError, NotFound, UnknownUnit
@@ -255,13 +258,18 @@ def _replay_batch(
         for n in sources
         if (history := _history(session, archive, target.definition, archive.runs[n], before[n][0]))
     }
+    bases = kept_bases(session, [run.id for run in batch])
     after = evaluate_many(target.definition, {n: measured[n] for n in sources}, histories)
     replayed = []
     for run in batch:
         version, old = archive.definitions[run.method_id]
         curve, verdict = before[run.source]
         source = archive.runs[run.source]
-        outcome, quantities = _outcome(run, source, old, target.definition, after[run.source], measured)
+        levels = [m.concentration for m in measured[run.source] if m.concentration is not None]
+        basis = under_settings(bases.get(run.id, CURVE_ONLY), target.definition, levels)
+        outcome, quantities = _outcome(
+            run, source, old, target.definition, after[run.source], measured, basis
+        )
         fresh = _reported(quantities)
         replayed.append(
             ReplayedRun(
@@ -299,13 +307,14 @@ def _outcome(
     new: MethodDefinition,
     evaluation: Evaluation | None,
     measured: Mapping[int, Sequence[Measured]],
+    basis: UncertaintyBasis,
 ) -> tuple[Outcome, Sequence[QuantityRecord]]:
     """Verdict and quantities of a run under the new definition."""
     if evaluation is None:
         return Outcome("rejected", ("no standard with a response is left to fit",), NOTHING, NOTHING), ()
     outcome = _of_curve(evaluation.curve, evaluation.verdict, new)
     if source.id == run.id:
-        return outcome, evaluation.quantities
+        return outcome, with_basis(new, measured[run.id], evaluation, basis).quantities
     hours = (run.at - source.at).total_seconds() / 3600.0
     # A time that was amended may lie beyond the old limit too; that is no change.
     if new.valid_hours < hours <= old.valid_hours:
@@ -324,6 +333,7 @@ def _outcome(
         verdict.lowest,
         verdict.highest,
         of_curve=curve_run(measured[source.id]),
+        basis=basis,
     )
 
 

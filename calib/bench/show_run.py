@@ -20,6 +20,7 @@ from calib.bench.find import (
     run_numbered,
     void_of,
 )
+from calib.bench.find_basis import kept_basis
 from calib.bench.history import amendments_of
 from calib.bench.keeping import (
     WITHDRAWN,
@@ -38,6 +39,7 @@ from calib.bench.noise_history import history_of
 from calib.bench.outlying_readings import outlying_of
 from calib.bench.records import Evaluation, LotFacts, Measured, RunHeading, RunRecord
 from calib.bench.review_state import review_state
+from calib.bench.uncertainty_basis import CURVE_ONLY
 from calib.intake import conversion_factor
 
 
@@ -241,6 +243,7 @@ def stored_evaluation(
         quantities,
         history=history_of(curve_row),
         outlying=outlying_of(curve_row),
+        basis=kept_basis(session, run.id) or CURVE_ONLY,
     )
 
 

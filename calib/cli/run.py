@@ -68,14 +68,34 @@ def list_(
 @run.command()
 @click.argument("number", type=int)
 @click.option("--rules", is_flag=True, help="Every criterion with limit, observed value and source.")
+@click.option("--sample", metavar="NAME", help="The uncertainty budget of this sample.")
+@click.option(
+    "--monte-carlo", is_flag=True, help="With --sample: its interval by propagating distributions too."
+)
+@click.option(
+    "--seed", type=click.IntRange(min=0), help="Of the Monte Carlo; the same one gives the same digits."
+)
 @json_option
 @click.pass_context
-def show(ctx: click.Context, number: int, rules: bool, as_json: bool) -> None:
+def show(
+    ctx: click.Context,
+    number: int,
+    rules: bool,
+    sample: str | None,
+    monte_carlo: bool,
+    seed: int | None,
+    as_json: bool,
+) -> None:
     """Show run NUMBER as it stands now."""
     from calib.bench.show_run import show_run
 
     with opened(ctx) as store:
         record = show_run(store, number)
+    if monte_carlo and sample is None:
+        raise InputError("--monte-carlo needs --sample: say for which sample")
+    if sample is not None:
+        _show_sample(record, sample, monte_carlo, seed, as_json)
+        return
     if rules and not as_json:
         from calib.cli.run_screen import show_rules, show_verdict
 
@@ -206,6 +226,29 @@ def void(ctx: click.Context, number: int, reason: str, by: str | None, as_json: 
         record = void_run(store, number, reason=reason, by=acting(by))
     _show(record, as_json)
     return 0
+
+
+def _show_sample(record: RunRecord, sample: str, monte_carlo: bool, seed: int | None, as_json: bool) -> None:
+    from calib.bench.cross_check import cross_check
+
+    _require_sample(record, sample)
+    drawn = cross_check(record, sample, seed) if monte_carlo else ()
+    if as_json:
+        from calib.report.run_sample_json import sample_json
+
+        echo_json(sample_json(record, sample, drawn))
+        return
+    from calib.cli.budget_screen import show_sample_budgets
+
+    show_sample_budgets(record, sample, drawn)
+
+
+def _require_sample(record: RunRecord, sample: str) -> None:
+    known = list(dict.fromkeys(q.sample for q in record.evaluation.quantities))
+    if sample not in known:
+        raise InputError(
+            f"run {record.heading.id} has no sample '{sample}'; it has {', '.join(known) or 'none'}"
+        )
 
 
 def _pair(text: str, option: str) -> tuple[str, str]:

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 from calib.bench.flags import in_words
 from calib.bench.records import lowest_reported
 from calib.cli.screen import print_table, say
+from calib.report.budget_rows import left_out_in_words
 from calib.report.curve_wording import (
     NOT_IDENTIFIED,
     effects_text,
@@ -232,6 +233,8 @@ def show_samples(evaluation: Evaluation, definition: MethodDefinition) -> None:
             for q in ordered
         ],
     )
+    for sentence in left_out_in_words(evaluation):
+        say(f"  {sentence}")
 
 
 def _cell(q: QuantityRecord, evaluation: Evaluation, definition: MethodDefinition) -> str:

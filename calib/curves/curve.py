@@ -16,7 +16,7 @@ from calib.curves.standards import Standards
 from calib.models import ResponseModel
 
 if TYPE_CHECKING:
-    from calib.quantification.budget import Component
+    from calib.quantification.budget import FurtherUncertainty
     from calib.quantification.inverse import Quantity
 
 Array = NDArray[np.float64]
@@ -185,7 +185,7 @@ class Curve:
         replicates: ArrayLike = 1,
         confidence: float = 0.95,
         interval: str = "inversion",
-        components: Sequence[Component] = (),
+        components: Sequence[FurtherUncertainty] = (),
         seed: int | None = None,
     ) -> Quantity:
         """Concentrations of unknowns with their intervals; see `quantification.inverse.invert`."""

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from calib.curves.quantiles import two_sided
 from calib.quantification.axis import Axis
-from calib.quantification.budget import Component, effective_freedom
+from calib.quantification.budget import FurtherUncertainty, effective_freedom
 from calib.quantification.roots import bracketed_roots
 
 Array = NDArray[np.float64]
@@ -31,12 +31,15 @@ class Estimate:
         Concentration; nan where the curve never reaches the response.
     u : (m,) array
         Standard uncertainty from reading and curve.
+    combined : (m,) array
+        The same with the further components.
     degrees_of_freedom, q : (m,) arrays
         Effective degrees of freedom, and the quantile of t that belongs to them.
     """
 
     value: Array
     u: Array
+    combined: Array
     degrees_of_freedom: Array
     q: Array
 
@@ -83,12 +86,7 @@ class Band:
 
     axis: Axis
     confidence: float
-    components: tuple[Component, ...]
-
-    @property
-    def extra(self) -> float:
-        """Sum of the squared relative uncertainties of the further components."""
-        return float(sum(c.relative_u**2 for c in self.components))
+    components: tuple[FurtherUncertainty, ...]
 
     def estimate(self, y: Array, replicates: Array) -> Estimate:
         """Read means of replicates back, with their uncertainty to first order."""
@@ -103,13 +101,18 @@ class Band:
         with np.errstate(divide="ignore", invalid="ignore"):
             u = np.sqrt(reading / replicates + curve.fit_variance(x)) / slope
             u = u if everywhere else np.where(known, u, np.nan)
-            relative = (u / value) ** 2 if self.components else u
         freedom = curve.coverage_freedom
         if not self.components:
             nu = np.full(y.size, freedom)
-            return Estimate(value, u, nu, np.full(y.size, two_sided(freedom, self.confidence)))
-        nu = effective_freedom(relative, freedom, self.components)
-        return Estimate(value, u, nu, two_sided(nu, self.confidence))
+            return Estimate(value, u, u, nu, np.full(y.size, two_sided(freedom, self.confidence)))
+        with np.errstate(divide="ignore", invalid="ignore"):
+            further = [c.response_variance(curve, x) / slope**2 for c in self.components]
+            estimated = [c.estimated_variance(curve, x) / slope**2 for c in self.components]
+        nu = effective_freedom(
+            [u**2, *further], [u**2, *estimated], [freedom, *(c.degrees_of_freedom for c in self.components)]
+        )
+        combined = np.sqrt(u**2 + sum(further))
+        return Estimate(value, u, combined, nu, two_sided(nu, self.confidence))
 
     def reach(self, replicates: float) -> tuple[float, float]:
         """Lowest and highest response that the band contains anywhere on the axis."""
@@ -170,8 +173,8 @@ class Band:
         """Variance at a concentration that is not the reading's."""
         curve = self.axis.curve
         own = curve.fit_variance(x)
-        if self.extra:
-            own = own + (x * curve.response_model.slope(x, curve.values)) ** 2 * self.extra
+        for component in self.components:
+            own = own + component.response_variance(curve, x)
         return own
 
     def _roots(self, brackets: _Brackets, y: Array, m: Array, q: Array) -> Array:

@@ -19,7 +19,7 @@ from calib.curves.curve import Curve
 from calib.errors import InputError, ModelError
 from calib.quantification.axis import PLACES, axis_of
 from calib.quantification.band import Band, Estimate, Limits
-from calib.quantification.budget import Component
+from calib.quantification.budget import FurtherUncertainty
 from calib.quantification.monte_carlo import TRIALS, drawn_limits
 from calib.quantification.states import (
     ASYMMETRIC,
@@ -100,7 +100,7 @@ def invert(
     replicates: ArrayLike = 1,
     confidence: float = 0.95,
     interval: str = "inversion",
-    components: Sequence[Component] = (),
+    components: Sequence[FurtherUncertainty] = (),
     seed: int | None = None,
     trials: int = TRIALS,
 ) -> Quantity:
@@ -120,7 +120,7 @@ def invert(
         `Quantity.state` still tells what the inversion finds. 'monte-carlo' propagates
         distributions (JCGM 101:2008), a cross-check by another road: its limits have equal
         probability beyond them, value, u and k remain those of the inversion.
-    components : sequence of Component
+    components : sequence of Component or CurveComponent
         Further uncertainties, added inside the inversion and drawn in the Monte Carlo.
     seed : int, optional
         Of the Monte Carlo; kept with the result, also where none is given.
@@ -140,7 +140,7 @@ def invert(
     >>> curve = calib.fit([0, 1, 2, 3, 4], [0.1, 2.0, 3.9, 6.1, 8.0], model="line")
     >>> quantity = curve.invert([5.0], replicates=2)
     >>> round(float(quantity.value[0]), 3), quantity.state
-    (2.477, ('ok',))
+    (2.492, ('ok',))
     """
     y, m = _checked(curve, responses, replicates, confidence, interval)
     band = Band(axis_of(curve), confidence, tuple(components))
@@ -188,13 +188,13 @@ def _delta(band: Band, y: Array, m: Array) -> Quantity:
     """Limits value ± q·u; the state and k are those of the inversion, which says whether they hold."""
     codes, second = inverted_states(band, y, m)
     value, curve_u, nu, lower, upper, k = (np.empty(y.size) for _ in range(6))
-    u = np.empty(y.size) if band.extra else curve_u
+    u = np.empty(y.size) if band.components else curve_u
     place = np.empty(y.size, dtype=np.int8)
     for i in range(0, y.size, PIECE):
         part = slice(i, i + PIECE)
         read = band.estimate(y[part], m[part])
         value[part], curve_u[part], nu[part] = read.value, read.u, read.degrees_of_freedom
-        u[part] = _widened(band, read)
+        u[part] = read.combined
         half = read.q * u[part]
         np.subtract(read.value, half, out=lower[part])
         np.add(read.value, half, out=upper[part])
@@ -205,18 +205,13 @@ def _delta(band: Band, y: Array, m: Array) -> Quantity:
     )
 
 
-def _widened(band: Band, read: Estimate) -> Array:
-    """Standard uncertainty with the further components."""
-    return np.sqrt(read.u**2 + read.value**2 * band.extra) if band.extra else read.u
-
-
 def _quantity(band: Band, y: Array, m: Array, read: Estimate, limits: Limits) -> Quantity:
     """What may be reported with limits: no value where both ends are open, no ± where one is far longer."""
     codes = states(band, y, m, read, limits)
     off, closed = codes == OFF, (codes == OK) | (codes == ASYMMETRIC)
     return Quantity(
         value=np.where(codes == NO_ESTIMATE, np.nan, read.value),
-        u=np.where(closed, _widened(band, read), np.nan),
+        u=np.where(closed, read.combined, np.nan),
         lower=np.where(off, np.nan, limits.lower),
         upper=np.where(off, np.nan, limits.upper),
         k=np.where(codes == OK, read.q, np.nan),

@@ -21,7 +21,7 @@ from calib.curves.chance import seeded
 from calib.curves.curve import Curve
 from calib.errors import InputError
 from calib.quantification.axis import Axis
-from calib.quantification.budget import Component
+from calib.quantification.budget import Component, FurtherUncertainty
 
 Array = NDArray[np.float64]
 
@@ -64,7 +64,7 @@ def drawn_limits(
     y: Array,
     replicates: Array,
     confidence: float,
-    components: Sequence[Component],
+    components: Sequence[FurtherUncertainty],
     trials: int,
     seed: int,
 ) -> tuple[Array, Array]:
@@ -87,15 +87,24 @@ def drawn_limits(
     return limits[:, 0], limits[:, 1]
 
 
-def _drawn(axis: Axis, components: Sequence[Component], trials: int, generator: np.random.Generator) -> Draws:
+def _drawn(
+    axis: Axis, components: Sequence[FurtherUncertainty], trials: int, generator: np.random.Generator
+) -> Draws:
     curve = axis.curve
     nu = curve.coverage_freedom
     spread = np.sqrt(nu / generator.chisquare(nu, trials)) if np.isfinite(nu) else np.ones(trials)
-    parameters = _parameters(curve, spread, generator)
+    parameters = _parameters(curve, curve.covariance, spread, generator)
     noise = curve.scale * spread * generator.standard_normal(trials)
     stretch = np.zeros(trials)
     for c in components:
-        stretch += c.relative_u * _deviates(c.degrees_of_freedom, trials, generator)
+        covariance = c.parameter_covariance(curve)
+        if covariance is not None:
+            factor = _parameters(
+                curve, covariance, _scale(c.degrees_of_freedom, trials, generator), generator
+            )
+            parameters = _both(curve, parameters, factor)
+        elif isinstance(c, Component):
+            stretch += _relative_deviations(c, trials, generator)
     low, high = axis.concentration(np.array([axis.low, axis.high]))
     return Draws(
         parameters,
@@ -106,19 +115,37 @@ def _drawn(axis: Axis, components: Sequence[Component], trials: int, generator: 
     )
 
 
-def _deviates(degrees_of_freedom: float, trials: int, generator: np.random.Generator) -> Array:
+def _relative_deviations(component: Component, trials: int, generator: np.random.Generator) -> Array:
+    """Draws of a relative component; of a difference of variances the larger one is what is uncertain."""
+    z = generator.standard_normal(trials)
+    taken_off = component.estimated**2 - component.relative_u**2
+    drawn = (component.estimated * _scale(component.degrees_of_freedom, trials, generator)) ** 2
+    return np.asarray(np.sqrt(np.maximum(drawn - taken_off, 0.0)) * z)
+
+
+def _scale(degrees_of_freedom: float, trials: int, generator: np.random.Generator) -> Array:
+    """Draws of a standard deviation over its estimate."""
     if np.isinf(degrees_of_freedom):
-        return generator.standard_normal(trials)
-    return generator.standard_t(degrees_of_freedom, trials)
+        return np.ones(trials)
+    return np.asarray(np.sqrt(degrees_of_freedom / generator.chisquare(degrees_of_freedom, trials)))
 
 
-def _parameters(curve: Curve, spread: Array, generator: np.random.Generator) -> Array:
+def _both(curve: Curve, parameters: Array, others: Array) -> Array:
+    """Parameters with the deviations of two independent draws; positive ones add in their logarithm."""
+    centre = curve.values[:, None]
+    positive = curve.response_model.positive[:, None]
+    with np.errstate(divide="ignore", invalid="ignore"):
+        product = parameters * np.where(positive, others / centre, 1.0)
+    return np.where(positive, product, parameters + others - centre)
+
+
+def _parameters(curve: Curve, covariance: Array, spread: Array, generator: np.random.Generator) -> Array:
     """Parameters (k, M): estimates plus spread·V^½·z, positive ones in their logarithm."""
     free = curve.free
     logarithmic = curve.response_model.positive[free]
     p = curve.values[free]
     chain = np.where(logarithmic, p, 1.0)
-    root = _root(curve.covariance[np.ix_(free, free)] / np.outer(chain, chain))
+    root = _root(covariance[np.ix_(free, free)] / np.outer(chain, chain))
     z = generator.standard_normal((p.size, spread.size))
     drawn = np.where(logarithmic, np.log(np.where(logarithmic, p, 1.0)), p)[:, None] + spread * (root @ z)
     drawn[logarithmic] = np.exp(np.clip(drawn[logarithmic], -FARTHEST, FARTHEST))

@@ -14,10 +14,13 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from calib.curves.curve import Curve
 from calib.errors import InputError
-from calib.quantification.budget import Component, effective_freedom_of
+from calib.quantification.budget import Component, CurveComponent, effective_freedom_of
 
 Array = NDArray[np.float64]
+
+LEVELS = "preparation of the levels"
 
 
 @dataclass(frozen=True, slots=True)
@@ -139,3 +142,46 @@ def own_covariance(solutions: Sequence[Solution]) -> Array:
     common = shared_parts(solutions)
     own = [{p.name: p.relative_u**2 for p in s.parts if p not in common} for s in solutions]
     return np.array([[sum(v for name, v in a.items() if name in b) for b in own] for a in own], dtype=float)
+
+
+def carried_into_curve(curve: Curve, covariance: Array) -> CurveComponent:
+    """What uncertain levels do to the curve fitted to them.
+
+    By the implicit function theorem on the weighted normal equations, dθ/dx_i = −V·J_i·w_i·f'_i/s²,
+    where V = cov(θ) and s² its scale: a level that is higher than stated moves the curve towards it.
+
+    Parameters
+    ----------
+    curve : Curve
+    covariance : (n, n) array
+        Relative covariance of the concentrations of the curve's standard readings. Leave out what
+        all levels share: it stretches the whole axis, and is a component of its own.
+    """
+    x = curve.standards.concentration
+    mean = curve.predict(x)
+    j = curve.response_model.gradient(x, curve.values)
+    pull = curve.response_model.slope(x, curve.values) * x / curve.noise.at_standards(mean, x)
+    effect = curve.covariance @ (j * pull[:, None]).T / curve.scale**2
+    return CurveComponent(LEVELS, effect @ covariance @ effect.T)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class UncertainLevels:
+    """Levels of a standards ladder with what each of them is uncertain by for itself.
+
+    Attributes
+    ----------
+    levels : (l,) array
+        Concentrations as they stand in the runs.
+    covariance : (l, l) array
+        Relative covariance of the levels, without what all of them share.
+    """
+
+    levels: Array
+    covariance: Array
+
+    def on(self, curve: Curve) -> CurveComponent:
+        """What they do to a curve; replicate readings of one level share its deviation."""
+        x = curve.standards.concentration
+        found = (x[:, None] == self.levels[None, :]).astype(np.float64)
+        return carried_into_curve(curve, found @ self.covariance @ found.T)

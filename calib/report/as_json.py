@@ -12,6 +12,7 @@ import numpy as np
 
 from calib.acceptance import CriterionResult
 from calib.bench.statements import statement_of
+from calib.report.budget_rows import budget_json
 from calib.report.review_wording import status_line
 
 if TYPE_CHECKING:
@@ -58,12 +59,22 @@ def run_json(record: RunRecord, stamp: ReportStamp | None = None) -> dict[str, A
         "standards": [_standard(s) for s in evaluation.standards],
         "blanks": [_blank(b) for b in evaluation.blanks],
         "verdict": _verdict(evaluation, record.definition.concentration_unit),
-        "checks": [_check(q) for q in evaluation.quantities if q.role in ("check", "first-check")],
+        "checks": [
+            _check(q, evaluation) for q in evaluation.quantities if q.role in ("check", "first-check")
+        ],
         "quantities": [
-            quantity_json(q) | {"statement": plain(statement_of(record.definition, evaluation.verdict, q))}
+            quantity_json(q)
+            | {
+                "budget_details": budget_json(q, evaluation),
+                "statement": plain(statement_of(record.definition, evaluation.verdict, q)),
+            }
             for q in evaluation.quantities
             if q.role in ("unknown", "control")
         ],
+        "uncertainty": {
+            "left_out": list(evaluation.basis.left_out),
+            "past_runs": list(evaluation.basis.runs),
+        },
         "amendments": [plain(a) for a in record.amendments],
         "dependent_runs": list(record.dependents),
         "earlier_curves": record.curves_before,
@@ -373,10 +384,15 @@ def _criterion(result: CriterionResult) -> dict[str, Any]:
     }
 
 
-def _check(q: QuantityRecord) -> dict[str, Any]:
+def _check(q: QuantityRecord, evaluation: Evaluation) -> dict[str, Any]:
     found = q.concentration if q.concentration is not None else q.estimate
     recovery = found / q.nominal if found is not None and q.nominal else None
-    return quantity_json(q) | {"role": q.role, "nominal": q.nominal, "recovery": recovery}
+    return quantity_json(q) | {
+        "budget_details": budget_json(q, evaluation),
+        "role": q.role,
+        "nominal": q.nominal,
+        "recovery": recovery,
+    }
 
 
 def quantity_json(q: QuantityRecord) -> dict[str, Any]:

@@ -9,6 +9,7 @@ from importlib import metadata
 from typing import TYPE_CHECKING, Any
 
 from calib.report import curve_wording, run_rows
+from calib.report.budget_rows import left_out_in_words, sample_budgets
 from calib.report.curve_figure import curve_figure
 from calib.report.files import picture
 from calib.report.review_wording import status_line
@@ -77,6 +78,7 @@ def _made_visible(value: Any) -> Any:
 def _view(record: RunRecord, stamp: ReportStamp | None) -> dict[str, Any]:
     """Everything the page says, as words."""
     curve, definition = record.evaluation.curve, record.definition
+    budget_names, budgets = sample_budgets(record)
     units = (definition.concentration_unit, definition.response_unit)
     return {
         "title": title(record),
@@ -110,6 +112,9 @@ def _view(record: RunRecord, stamp: ReportStamp | None) -> dict[str, Any]:
         "checks": run_rows.check_rows(record),
         "unknowns": run_rows.unknown_rows(record),
         "one_kind": run_rows.one_kind(record),
+        "budget_names": budget_names,
+        "budgets": budgets,
+        "left_out": left_out_in_words(record.evaluation),
         "excluded": run_rows.excluded_readings(record),
         "absent": run_rows.absent_readings(record),
         "lot": lot_in_words(record),

@@ -17,7 +17,7 @@ from calib.store.methods import Method
 from calib.store.opening import default_store_path, open_store, store_path
 from calib.store.originals import Original
 from calib.store.people import Person, Setting
-from calib.store.quantities import QuantityRow
+from calib.store.quantities import QuantityRow, UncertaintyBasisRow
 from calib.store.reviews import IssuedReport, Review
 from calib.store.runs import Exclusion, Reading, RuleOverride, Run, RunFacts, RunVoid
 from calib.store.session import Store
@@ -78,6 +78,7 @@ __all__ = [
     "Store",
     "StoreCheck",
     "StoreFinding",
+    "UncertaintyBasisRow",
     "Upgrade",
     "VerdictRow",
     "Verification",

@@ -1,5 +1,6 @@
 """Quantities: what an unknown, a check or a control was found to be."""
 
+from datetime import datetime
 from typing import Any
 
 from sqlalchemy import CheckConstraint
@@ -54,3 +55,23 @@ class QuantityRow(Base):
     unit: Mapped[str]
     budget: Mapped[dict[str, Any]]
     supersedes: Mapped[int | None] = superseded_row("quantity")
+
+
+class UncertaintyBasisRow(Base):
+    """What was known beside reading and curve when a run was quantified, and what was left out.
+
+    ``components`` hold every figure the combined uncertainty rests on, ``runs`` the numbers of the
+    past runs they were estimated from, ``left_out`` sentences.
+    """
+
+    __tablename__ = "uncertainty_basis"
+    __table_args__ = evidence()
+
+    id: Mapped[int] = mapped_column(primary_key=True)
+    run_id: Mapped[int] = refers_to("run")
+    components: Mapped[list[Any]]
+    left_out: Mapped[list[Any]]
+    runs: Mapped[list[Any]]
+    by: Mapped[str]
+    at: Mapped[datetime]
+    supersedes: Mapped[int | None] = superseded_row("uncertainty_basis")

@@ -8,7 +8,18 @@ from calib.store.files import connect_file
 from calib.store.refusals import files_in_words, in_words
 
 # Every schema there has been, oldest first; the migrations of the same names lead from one to the next.
-REVISIONS: tuple[str, ...] = ("0001", "0004", "0002", "0004b", "0004c", "0002b", "0003", "0005", "0006")
+REVISIONS: tuple[str, ...] = (
+    "0001",
+    "0004",
+    "0002",
+    "0004b",
+    "0004c",
+    "0002b",
+    "0003",
+    "0005",
+    "0006",
+    "0003b",
+)
 
 _SQLITE_MAGIC = b"SQLite format 3\x00"
 

@@ -130,9 +130,9 @@ def test_nothing_is_read_on_a_curve_that_is_superseded_meanwhile(bench, monkeypa
     bench.log(a_day())
     real = quantify.quantify_on
 
-    def slow(source, run):
+    def slow(source, run, basis):
         bench.laboratory.refit(1, reason="someone else")
-        return real(source, run)
+        return real(source, run, basis)
 
     monkeypatch.setattr(quantify, "quantify_on", slow)
     with pytest.raises(InputError, match="the curve in force changed meanwhile; run the command again"):

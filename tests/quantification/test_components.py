@@ -9,14 +9,14 @@ from made_curves import assay_curve
 from calib import Component
 from calib.curves.quantiles import student_quantile, two_sided
 from calib.errors import InputError
-from calib.quantification.budget import effective_freedom
+from calib.quantification.budget import effective_freedom_of
 
 
 def test_effective_freedom_of_gum_g4() -> None:
     """JCGM 100:2008, G.4.1, example: 0.25 % (9), 0.57 % (4), 0.82 % (14) give 19.0 (from memory)."""
     components = [Component("second", 0.0057, 4), Component("third", 0.0082, 14)]
-    found = effective_freedom(np.array([0.0025**2]), 9, components)
-    assert found[0] == pytest.approx(19.0, abs=0.05)
+    found = effective_freedom_of([Component("first", 0.0025, 9), *components])
+    assert found == pytest.approx(19.0, abs=0.05)
     # The example goes on to t_95(19) = 2.09.
     assert two_sided(19, 0.95) == pytest.approx(2.09, abs=0.005)
 
@@ -27,8 +27,8 @@ def test_effective_freedom_of_gum_h1() -> None:
     The document works with u_c = 32 nm; its parts give 31.6 nm, hence the wider tolerance.
     """
     rest = [Component("d", 9.7e-3, 25.6), Component("alpha", 2.9e-3, 50), Component("theta", 16.6e-3, 2)]
-    found = effective_freedom(np.array([25e-3**2]), 18, rest)
-    assert found[0] == pytest.approx(16.7, rel=0.05)
+    found = effective_freedom_of([Component("standard", 25e-3, 18), *rest])
+    assert found == pytest.approx(16.7, rel=0.05)
 
 
 def test_components_enter_in_quadrature_with_their_freedom() -> None:
