@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from datetime import date, datetime
 
@@ -17,6 +17,7 @@ from calib.bench.flags import in_words
 from calib.bench.keeping import WITHDRAWN, definition_of, quantity_record, verdict_record
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import QuantityRecord, VerdictRecord, lowest_reported
+from calib.bench.review_state import ReviewState, review_states
 from calib.bench.show_run import local
 from calib.bench.statements import Statement, statement_of
 from calib.errors import NotFound
@@ -58,9 +59,14 @@ class SampleResult:
     quantity: QuantityRecord
     verdict: VerdictRecord
     lowest_reported: float | None
-    approved: bool
+    review: ReviewState
     void: bool
     statement: Statement | None
+
+    @property
+    def approved(self) -> bool:
+        """Whether a second person approved the run as it stands."""
+        return self.review.approved
 
     @property
     def stands(self) -> bool:
@@ -202,7 +208,7 @@ def _rows(
         query = query.where(tables.QuantityRow.sample == name)
     definitions: dict[int, MethodDefinition] = {}
     verdicts: dict[int, VerdictRecord] = {}
-    approved = _approved(session)
+    reviews = review_states(session)
     for quantity, run, facts, where, verdict_row, voided in session.execute(query):
         if WITHDRAWN in quantity.flags:
             continue
@@ -222,16 +228,11 @@ def _rows(
                 quantity=q,
                 verdict=verdict,
                 lowest_reported=lowest_reported(definition, verdict),
-                approved=approved.get(run.id, False),
+                review=reviews[run.id],
                 void=voided is not None,
                 statement=statement_of(definition, verdict, q),
             ),
         )
-
-
-def _approved(session: Session) -> Mapping[int, bool]:
-    """Runs a second person approved. No run is approved where there is no review."""
-    return {}
 
 
 def _record(definition: MethodDefinition, sample: str, results: Sequence[SampleResult]) -> SampleRecord:
@@ -299,10 +300,10 @@ def _state(
 
 
 def _waiting(counts: Sequence[SampleResult], outcome: DilutionOutcome) -> tuple[str, str]:
-    unseen = [r.run for r in counts if not r.approved]
+    unseen = dict.fromkeys(f"run {r.run}: {r.review.state}" for r in counts if not r.approved)
     hook = "; lower dilutions left out, as with a hook" if outcome.hook and outcome.agree is False else ""
     if unseen:
-        return REVIEW, f"run {', '.join(map(str, dict.fromkeys(unseen)))} is not approved{hook}"
+        return REVIEW, f"{'; '.join(unseen)}{hook}"
     return RELEASE, f"run {', '.join(str(r.run) for r in counts)} is approved{hook}"
 
 

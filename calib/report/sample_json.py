@@ -40,6 +40,7 @@ def _result(result: SampleResult, counts: bool) -> dict[str, Any]:
         "at": result.at.isoformat(),
         "counts": counts,
         "approved": result.approved,
+        "review": result.review.state,
         "draft": not result.approved,
         "void": result.void,
         "statement": plain(result.statement),

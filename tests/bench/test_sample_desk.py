@@ -4,7 +4,9 @@ import pytest
 from small_laboratory import METHOD, a_day, unknown, with_response
 
 from calib.bench.register import add_method
+from calib.bench.review_runs import approve_run
 from calib.bench.sample_desk import list_samples, show_sample
+from calib.bench.settings import set_roles
 from calib.errors import NotFound
 
 AGREEING = METHOD.format(name="line-a", analyte="alpha") + '\n[results]\ndilution_agreement = "20 %"\n'
@@ -22,7 +24,7 @@ def one(bench, name):
 def test_each_sample_waits_for_what_it_needs(bench):
     bench.log(a_day(unknowns=[unknown("U1", 3.0), unknown("HIGH", 14.0), unknown("LOW", 0.2)]))
     assert states(bench) == {"U1": "review", "HIGH": "dilute", "LOW": "review"}
-    assert one(bench, "U1").why == "run 1 is not approved"
+    assert one(bench, "U1").why == "run 1: not reviewed"
     assert one(bench, "HIGH").why.startswith(
         "run 1: above the highest standard: dilute and measure again (about × 5)"
     )
@@ -61,7 +63,7 @@ def test_a_value_that_rises_with_the_dilution_is_told_as_a_hook(bench):
 def test_a_second_measurement_is_told_beside_the_one_that_counts(bench):
     bench.log(a_day(unknowns=[unknown("U1", 3.0)]))
     bench.quantify([unknown("U1", 3.1)])
-    assert one(bench, "U1").why == "run 2 is not approved; run 1 holds a value too"
+    assert one(bench, "U1").why == "run 2: not reviewed; run 1 holds a value too"
 
 
 def test_a_void_run_counts_no_longer(bench):
@@ -102,3 +104,12 @@ def test_a_statement_names_its_rule(bench, rule, upper, outcome):
     assert result.statement.outcome == outcome
     assert f"at most {upper} mg/L, {rule}" in result.statement.rule
     assert [one(bench, n).results[0].statement.outcome for n in ("HIGH", "LOW")] == ["undecided", "pass"]
+
+
+def test_an_approved_sample_can_be_released_until_its_run_changes(bench):
+    set_roles(bench.store, "RS", ("reviewer",), by="QM")
+    bench.log(a_day(unknowns=[unknown("U1", 3.0)]))
+    approve_run(bench.store, 1, by="RS")
+    assert (one(bench, "U1").state, one(bench, "U1").why) == ("release", "run 1 is approved")
+    bench.laboratory.exclude(1, ["#3"], reason="bubble")
+    assert (one(bench, "U1").state, one(bench, "U1").why) == ("review", "run 1: changed since its review")

@@ -4,7 +4,7 @@
 def test_the_list_counts_and_gives_the_reasons(worked):
     out = worked("sample", "list", "--since", "2026-03-01").out
     assert "waits for review" in out.splitlines()[0]
-    assert "run 3 is not approved; run 1 holds a value too" in out
+    assert "run 3: not reviewed; run 1 holds a value too" in out
 
 
 def test_no_number_of_an_unapproved_run_is_shown_without_draft(worked):
