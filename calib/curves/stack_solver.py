@@ -30,7 +30,8 @@ Mask = NDArray[np.bool_]
 Rows = NDArray[np.intp]
 Evaluate = Callable[[Stack, Roles, Array, Array], Point]
 
-CHUNK = 4096
+# Runs, and readings, solved at once: enough to make array operations cheap, few enough to stay in cache.
+CHUNK, READINGS = 4096, 100_000
 RULES = Rules()
 # Up to so many runs are solved one after the other on plain vectors.
 FEW = 6
@@ -59,11 +60,16 @@ def solve_stack(stack: Stack, starts: Array) -> StackSolution:
         if stack.runs <= FEW:
             left = _solve_few(stack, roles, found)
         else:
-            parts = [np.arange(i, min(i + CHUNK, stack.runs)) for i in range(0, stack.runs, CHUNK)]
+            parts = _chunks(np.arange(stack.runs), stack)
             left = np.concatenate([_solve(quick_point, stack, roles, found, rows) for rows in parts])
-        for i in range(0, left.size, CHUNK):
-            _solve(careful_point, stack, roles, found, left[i : i + CHUNK])
+        for rows in _chunks(left, stack):
+            _solve(careful_point, stack, roles, found, rows)
     return found
+
+
+def _chunks(rows: Rows, stack: Stack) -> list[Rows]:
+    size = max(min(CHUNK, READINGS // stack.y.shape[0]), 1)
+    return [rows[i : i + size] for i in range(0, rows.size, size)]
 
 
 def _roles(stack: Stack) -> Roles:
