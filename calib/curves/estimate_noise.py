@@ -60,7 +60,7 @@ def solve_estimating_noise(
     stable, index = np.zeros(levels.runs, dtype=bool), np.arange(levels.runs)
     now, part, some = noise, levels, stack
     for _ in range(PASSES):
-        again = solve_with_noise(some, part, now, found.parameters[:, index])
+        again = solve_with_noise(some, part, now, found.parameters.take(index, axis=-1))
         write(found, index, again.found)
         following = _estimated(problem, part, now, again.found, family)
         # Only the shape counts: a common factor is taken up by the scale.

@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from calib.curves.stack_problem import some
+
 Array = NDArray[np.float64]
 
 
@@ -44,10 +46,10 @@ class Levels:
     def take(self, which: NDArray[np.intp]) -> Levels:
         """Some of the runs."""
         return Levels(
-            self.x if self.x.shape[1] == 1 else self.x[:, which],
-            self.mean[:, which],
-            self.count if self.count.shape[1] == 1 else self.count[:, which],
-            self.pure[:, which],
+            some(self.x, which),
+            self.mean.take(which, axis=-1),
+            some(self.count, which),
+            self.pure.take(which, axis=-1),
         )
 
 

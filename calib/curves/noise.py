@@ -9,7 +9,7 @@ known. Weights are 1/G at the *fitted* mean, never at a single observed response
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, fields, replace
 from typing import Any, ClassVar
 
@@ -257,7 +257,7 @@ class GivenNoise(NoiseModel):
 
 def of_runs(noise: NoiseModel, which: NDArray[np.intp]) -> NoiseModel:
     """The noise model of some runs of a stack; what all runs share stays as it is."""
-    return replace(noise, **{name: values[..., which] for name, values in _by_run(noise).items()})  # type: ignore[type-var]
+    return replace(noise, **{name: values.take(which, axis=-1) for name, values in _by_run(noise).items()})  # type: ignore[type-var]
 
 
 def of_run(noise: NoiseModel, run: int) -> NoiseModel:
@@ -271,6 +271,19 @@ def with_runs(noise: NoiseModel, which: NDArray[np.intp], theirs: NoiseModel) ->
     for name, values in _by_run(theirs).items():
         changed[name][..., which] = values
     return replace(noise, **changed)  # type: ignore[type-var]
+
+
+def of_all(noises: Sequence[NoiseModel], runs: Sequence[int]) -> NoiseModel:
+    """The noise model of stacks laid end to end, of so many runs each; nan where one has no value."""
+    parts = [_by_run(noise) for noise in noises]
+    whole = max(zip(noises, parts, strict=True), key=lambda pair: len(pair[1]))
+    return replace(  # type: ignore[type-var]
+        whole[0],
+        **{
+            name: np.concatenate([p.get(name, np.full(n, np.nan)) for p, n in zip(parts, runs, strict=True)])
+            for name in whole[1]
+        },
+    )
 
 
 def _by_run(noise: NoiseModel) -> dict[str, NDArray[Any]]:

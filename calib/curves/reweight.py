@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from calib.curves.levels import Levels
 from calib.curves.noise import NoiseModel, of_runs
 from calib.curves.search import Found, improved, search, solve_from, weighted_stack
-from calib.curves.stack_problem import Stack
+from calib.curves.stack_problem import Stack, some
 
 Array = NDArray[np.float64]
 
@@ -74,7 +74,7 @@ def _follow(stack: Stack, levels: Levels, noise: NoiseModel, first: Found, searc
     now, part, some = noise, levels, stack
     for count in range(PASSES):
         weighted = weighted_stack(some, part, _at(now, mean, part))
-        again = solve_from(weighted, found.parameters[:, index])
+        again = solve_from(weighted, found.parameters.take(index, axis=-1))
         if count == 0 and searching:
             # The weights may have made another valley the deepest one.
             again = improved(weighted, again)
@@ -87,7 +87,7 @@ def _follow(stack: Stack, levels: Levels, noise: NoiseModel, first: Found, searc
         keep = np.flatnonzero(moving)
         if keep.size == 0:
             break
-        index, mean, part = index[keep], fitted[:, keep], part.take(keep)
+        index, mean, part = index[keep], fitted.take(keep, axis=-1), part.take(keep)
         now, some = of_runs(now, keep), some_bounds(some, keep)
     return Settled(found, stable)
 
@@ -108,6 +108,4 @@ def write(found: Found, index: NDArray[np.intp], again: Found) -> None:
 
 def some_bounds(stack: Stack, keep: NDArray[np.intp]) -> Stack:
     """The stack with the bounds of some of its runs."""
-    lower = stack.lower if stack.lower.shape[1] == 1 else stack.lower[:, keep]
-    upper = stack.upper if stack.upper.shape[1] == 1 else stack.upper[:, keep]
-    return replace(stack, lower=lower, upper=upper)
+    return replace(stack, lower=some(stack.lower, keep), upper=some(stack.upper, keep))

@@ -64,7 +64,8 @@ class Found:
 
     def take(self, which: NDArray[np.intp]) -> Found:
         """Some of the runs, without their second solutions."""
-        return Found(self.parameters[:, which], self.total[which], self.tangent[which], self.converged[which])
+        parameters = self.parameters.take(which, axis=-1)
+        return Found(parameters, self.total[which], self.tangent[which], self.converged[which])
 
 
 def weighted_stack(stack: Stack, levels: Levels, variance: Array) -> Stack:
@@ -278,7 +279,7 @@ def _grid_starts(stack: Stack, cells: Array) -> tuple[Array, Mask]:
     left = np.empty((cells.shape[0], stack.runs))
     shared = stack.x.shape[1] == 1 and stack.root_weight.shape[1] == 1
     for part in _parts(stack.runs, shared):
-        left[:, part] = _unexplained(stack.take(part), cells)
+        left[:, part] = _unexplained(stack.take(np.arange(stack.runs)[part]), cells)
     depth = np.where(_minima(left, cells), left, np.inf)
     keep = min(GRID_STARTS, cells.shape[0])
     best = np.argsort(depth, axis=0, kind="stable")[:keep]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -15,23 +15,28 @@ from calib.curves.diagnostics import Finding
 from calib.curves.estimate_noise import solve_estimating_noise
 from calib.curves.fit import fit, weighted_problem
 from calib.curves.levels import Levels, collapsed, uncollapsed
-from calib.curves.noise import GivenNoise, NoiseModel, UniformNoise, given_noise, of_run, of_runs
+from calib.curves.noise import GivenNoise, NoiseModel, UniformNoise, given_noise, of_all, of_run, of_runs
 from calib.curves.requests import Bounds, problem_of, requested_noise
 from calib.curves.reweight import Settled, solve_with_noise
 from calib.curves.search import on_bound
 from calib.curves.solver import Problem, Solution, stack_of_one
 from calib.curves.stack_covariance import inverses
+from calib.curves.stack_input import NOT_FINITE, OK, arrays, per_run, statuses
 from calib.curves.stack_problem import Stack
-from calib.curves.standards import Standards, extreme, frozen, refuse_extreme
-from calib.errors import InputError
+from calib.curves.standards import Standards, frozen
 from calib.models import CustomModel, ResponseModel, response_model
 
 Array = NDArray[np.float64]
 Mask = NDArray[np.bool_]
 
-OK = "ok"
-TOO_FEW_LEVELS = "too-few-levels"
-NOT_FINITE = "not-finite"
+# So many runs are fitted at once: what a fit needs besides its result stays flat.
+PART = 8192
+
+
+# Arrays of a stack with one entry a run.
+BY_RUN = (
+    "parameters", "covariance", "residual_sum", "degrees_of_freedom", "converged", "at_bound", "_stable", "_tangent",
+)  # fmt: skip
 
 
 @dataclass(frozen=True, slots=True)
@@ -172,21 +177,41 @@ def fit_stack(
     (2, True)
     """
     chosen = response_model(model)
-    x, y = _arrays(concentration, response, chosen)
+    x, y = arrays(concentration, response, chosen)
     requested = requested_noise(noise, given_noise(u, relative_sd, y.shape[0]))
     template = Standards(x.max(axis=1) if x.ndim == 2 else x, np.zeros(x.shape[0]))
-    starts = {name: _per_run(name, values, y.shape[1]) for name, values in (start or {}).items()}
+    starts = {name: per_run(name, values, y.shape[1]) for name, values in (start or {}).items()}
     scalar = {name: float(values[0]) for name, values in starts.items()}
     problem = problem_of(chosen, template, fixed or {}, bounds or {}, scalar)
-    status = _statuses(x, y, int(problem.free.sum()))
+
+    def part(of: slice) -> CurveStack:
+        own, begin = (x if x.ndim == 1 else x[:, of]), {n: v[of] for n, v in starts.items()}
+        return _fitted(problem, own, np.ascontiguousarray(y[:, of]), requested, fixed, bounds, begin)
+
+    parts = [slice(i, min(i + PART, y.shape[1])) for i in range(0, y.shape[1], PART)]
+    return part(parts[0]) if len(parts) == 1 else _joined(map(part, parts), parts, x, y)
+
+
+def _fitted(
+    problem: Problem,
+    x: Array,
+    y: Array,
+    requested: str | NoiseModel,
+    fixed: Mapping[str, float] | None,
+    bounds: Bounds | None,
+    starts: Mapping[str, Array],
+) -> CurveStack:
+    """Fit checked runs (n, R), all at once."""
+    status = statuses(x, y, int(problem.free.sum()))
     usable = np.flatnonzero([s == OK for s in status])
-    if isinstance(chosen, CustomModel) or not usable.size:
+    if isinstance(problem.model, CustomModel) or not usable.size:
         return _one_by_one(problem, x, y, requested, usable, status, fixed, bounds, starts)
-    kept = np.where(np.isinf(y), np.nan, y)
-    levels = _levels(x, kept[:, usable], requested)
+    kept = y if usable.size == y.shape[1] else y.take(usable, axis=1)
+    own = x if x.ndim == 1 else x.take(usable, axis=1)
+    levels = _levels(own, kept, requested)
     stack = stack_of_one(problem)
     if x.ndim == 2:
-        stack = _own_bounds(stack, problem, x[:, usable])
+        stack = _own_bounds(stack, problem, own)
     given = {
         problem.model.index(n): v[usable] for n, v in starts.items() if problem.free[problem.model.index(n)]
     }
@@ -198,54 +223,39 @@ def fit_stack(
         place[usable] = np.arange(usable.size)
         used = of_runs(bound, place)
     else:
-        used, bound = requested, _bound(requested, x, kept[:, usable])
+        used, bound = requested, _bound(requested, own, kept)
         settled = solve_with_noise(stack, levels, bound, begin)
-    return _assembled(problem, stack, requested, used, x, kept, levels, bound, settled, usable, status)
+    return _assembled(problem, stack, requested, used, x, y, levels, bound, settled, usable, status)
 
 
-def _arrays(concentration: ArrayLike, response: ArrayLike, model: ResponseModel) -> tuple[Array, Array]:
-    """Concentrations (n,) or (n, runs) and responses (n, runs), runs last."""
-    x, y = np.asarray(concentration, dtype=np.float64), np.asarray(response, dtype=np.float64)
-    if y.ndim != 2 or y.size == 0:
-        raise InputError(f"response must be (runs, readings), got shape {y.shape}")
-    if x.shape not in ((y.shape[1],), y.shape):
-        raise InputError(
-            f"concentration has shape {x.shape} for responses of shape {y.shape}; give (n,) or (runs, n)"
-        )
-    if not np.all(np.isfinite(x)):
-        raise InputError("a concentration is not finite; mark an absent reading by a response of nan")
-    refuse_extreme(x, "concentration")
-    if model.logarithmic and np.any(x < 0):
-        raise InputError(f"a concentration is negative; model '{model.name}' lives on x >= 0")
-    return (np.ascontiguousarray(x.T) if x.ndim == 2 else x), np.ascontiguousarray(y.T)
-
-
-def _per_run(name: str, values: ArrayLike, runs: int) -> Array:
-    array = np.asarray(values, dtype=np.float64)
-    if array.shape not in ((), (runs,)):
-        raise InputError(
-            f"start of {name} has shape {array.shape}; give one number or one for each of {runs} runs"
-        )
-    return np.broadcast_to(array, (runs,)).copy()
-
-
-def _statuses(x: Array, y: Array, needed: int) -> tuple[str, ...]:
-    present = ~np.isnan(y)
-    levels: Array | int
-    if x.ndim > 1:
-        levels = np.array([np.unique(x[present[:, i], i]).size for i in range(y.shape[1])])
-    elif present.all():
-        levels = np.unique(x).size
-    else:
-        _, place = np.unique(x, return_inverse=True)
-        seen = np.zeros((place.max() + 1, y.shape[1]), dtype=bool)
-        np.logical_or.at(seen, place, present)
-        levels = seen.sum(axis=0)
-    infinite = extreme(y).any(axis=0)
-    few = np.broadcast_to(levels < needed, infinite.shape)
-    if not (infinite.any() or few.any()):
-        return (OK,) * infinite.size
-    return tuple(np.select([infinite, few], [NOT_FINITE, TOO_FEW_LEVELS], OK).tolist())
+def _joined(stacks: Iterable[CurveStack], parts: Sequence[slice], x: Array, y: Array) -> CurveStack:
+    """The stacks of consecutive runs as one; each is let go as soon as it is copied."""
+    runs = y.shape[1]
+    joined: dict[str, Any] = {}
+    status: list[str] = []
+    noises: list[NoiseModel] = []
+    second: dict[int, Array] = {}
+    curves: dict[int, Curve] = {}
+    for of, stack in zip(parts, stacks, strict=True):
+        for name in BY_RUN:
+            values = getattr(stack, name)
+            into = joined.setdefault(name, np.empty((runs, *values.shape[1:]), values.dtype))
+            into[of] = values
+        status.extend(stack.status)
+        noises.append(stack._noise)
+        second.update({of.start + i: p for i, p in stack._second.items()})
+        curves.update({of.start + i: c for i, c in stack._curves.items()})
+    sizes = [of.stop - of.start for of in parts]
+    return replace(
+        stack,
+        **joined,
+        status=tuple(status),
+        _noise=of_all(noises, sizes),
+        _concentration=x,
+        _response=y,
+        _second=second,
+        _curves=curves,
+    )
 
 
 def _levels(x: Array, y: Array, noise: str | NoiseModel) -> Levels:

@@ -26,7 +26,7 @@ def inverses(problem: Problem, levels: Levels, noise: NoiseModel, found: Found) 
     for i in range(0, levels.runs, BLOCK):
         part = np.arange(i, min(i + BLOCK, levels.runs))
         inverse[part] = _inverse_block(
-            problem, levels.take(part), of_runs(noise, part), found.parameters[:, part]
+            problem, levels.take(part), of_runs(noise, part), found.parameters.take(part, axis=-1)
         )
     return inverse
 
@@ -36,7 +36,7 @@ def leverages(problem: Problem, levels: Levels, noise: NoiseModel, found: Found)
     leverage = np.empty_like(levels.mean)
     for i in range(0, levels.runs, BLOCK):
         part = np.arange(i, min(i + BLOCK, levels.runs))
-        some, own, p = levels.take(part), of_runs(noise, part), found.parameters[:, part]
+        some, own, p = levels.take(part), of_runs(noise, part), found.parameters.take(part, axis=-1)
         with np.errstate(all="ignore"):
             columns, count = _weighted_columns(problem, some, own, p)
             inverse = _inverse(columns)

@@ -64,9 +64,9 @@ class Point:
         """Some of the runs."""
         return Point(
             self.total[keep],
-            self.linear[:, keep],
-            self.normal[:, :, keep],
-            self.slope[:, keep],
+            self.linear.take(keep, axis=-1),
+            self.normal.take(keep, axis=-1),
+            self.slope.take(keep, axis=-1),
             self.exact[keep],
         )
 

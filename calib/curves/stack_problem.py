@@ -58,12 +58,12 @@ class Stack:
         squares: Array = np.einsum("nr,nr->r", weighted, weighted)
         return squares
 
-    def take(self, which: NDArray[np.intp] | slice) -> Stack:
+    def take(self, which: NDArray[np.intp]) -> Stack:
         """Some of the runs."""
         return replace(
             self,
             x=some(self.x, which),
-            y=self.y[:, which],
+            y=self.y.take(which, axis=-1),
             root_weight=some(self.root_weight, which),
             pure=self.pure[which],
             lower=some(self.lower, which),
@@ -102,6 +102,6 @@ def unsolved(starts: Array) -> StackSolution:
     )
 
 
-def some(values: Array, which: NDArray[np.intp] | slice) -> Array:
-    """Columns of some runs; a column that all runs share stays as it is."""
-    return values if values.shape[-1] == 1 else values[:, which]
+def some(values: Array, which: NDArray[np.intp]) -> Array:
+    """Columns of some runs, contiguous again; a column that all runs share stays as it is."""
+    return values if values.shape[-1] == 1 else values.take(which, axis=-1)

@@ -121,10 +121,11 @@ def _write_single(found: StackSolution, i: int, end: End, stack: Stack, roles: R
 def _solve(evaluate: Evaluate, stack: Stack, roles: Roles, found: StackSolution, index: Rows) -> Rows:
     """Iterate until every run of ``index`` is finished; the rows that did not settle."""
     stack = stack.take(index)
-    theta = _coordinates(roles, found.parameters[:, index])
+    start = found.parameters.take(index, axis=-1)
+    theta = _coordinates(roles, start)
     low, high = _limits(stack, roles)
     floor = RULES.floor * stack.size
-    here = evaluate(stack, roles, theta, found.parameters[list(roles.eliminated)][:, index])
+    here = evaluate(stack, roles, theta, start[list(roles.eliminated)])
     if not here.exact.all():
         here = evaluate(stack, roles, theta, here.linear)
     damping = np.zeros(stack.runs)
@@ -169,7 +170,7 @@ def _solve(evaluate: Evaluate, stack: Stack, roles: Roles, found: StackSolution,
         if not done.any():
             continue
         rows = np.flatnonzero(done)
-        _record(found, index[rows], roles, theta[:, rows], here.take(rows), count)
+        _record(found, index[rows], roles, theta.take(rows, axis=-1), here.take(rows), count)
         # An undamped last step leaves less in the tangent plane than it predicted.
         found.tangent[index[rows]] = np.sqrt(np.maximum(predicted[rows], 0.0))
         rows = rows[~last[rows]]
@@ -186,9 +187,9 @@ def _solve(evaluate: Evaluate, stack: Stack, roles: Roles, found: StackSolution,
             continue
         # Finished runs are recorded once; the others go on without them.
         keep = np.flatnonzero(~recorded)
-        index, theta, damping, floor = index[keep], theta[:, keep], damping[keep], floor[keep]
+        index, theta, damping, floor = index[keep], theta.take(keep, axis=-1), damping[keep], floor[keep]
         stack, here, recorded = stack.take(keep), here.take(keep), recorded[keep]
-        low, high, second = some(low, keep), some(high, keep), second[:, :, keep]
+        low, high, second = some(low, keep), some(high, keep), second.take(keep, axis=-1)
     return np.concatenate(left) if left else np.empty(0, dtype=np.intp)
 
 

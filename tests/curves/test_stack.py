@@ -12,6 +12,7 @@ from hypothesis import strategies as st
 from made_standards import FALLING, LEVELS, RISING, assay_standards, codes
 
 import calib
+from calib.curves import stack as stack_module
 from calib.curves import stack_solver
 from calib.errors import InputError
 from calib.models import response_model
@@ -321,6 +322,23 @@ def test_chunks_do_not_show(monkeypatch: pytest.MonkeyPatch) -> None:
     np.testing.assert_allclose(parts.residual_sum, whole.residual_sum, rtol=1e-9)
     np.testing.assert_allclose(parts.parameters, whole.parameters, rtol=1e-8)
     assert parts.converged.all()
+
+
+@pytest.mark.parametrize("noise", ["relative", "power-of-mean"])
+def test_parts_do_not_show(monkeypatch: pytest.MonkeyPatch, noise: str) -> None:
+    y = rising_runs(20)
+    y[7, 2:4] = np.nan
+    y[14:] = np.nan  # the last parts hold no run that can be fitted
+    whole = calib.fit_stack(X, y, noise=noise)
+    monkeypatch.setattr(stack_module, "PART", 3)
+    parts = calib.fit_stack(X, y, noise=noise)
+    assert parts.status == whole.status
+    np.testing.assert_allclose(parts.covariance, whole.covariance, rtol=1e-6)
+    for i in (0, 7, 13):
+        assert codes(parts[i]) == codes(whole[i])
+        np.testing.assert_allclose(parts[i].values, whole[i].values, rtol=1e-8)
+        np.testing.assert_allclose(parts[i].prediction_band(5.0), whole[i].prediction_band(5.0), rtol=1e-8)
+    assert not parts[15].converged
 
 
 def test_memory_grows_no_faster_than_the_runs() -> None:
