@@ -136,3 +136,46 @@ def detection(
     from calib.cli.detection_screen import show_detection
 
     show_detection(record)
+
+
+@method.command()
+@click.argument("name")
+@click.option(
+    "--instrument", metavar="NAME", help="Needed where several instruments have runs of the method."
+)
+@click.option("--cv", type=float, help="Required coefficient of variation, such as 0.2; else the method's.")
+@click.option("--replicates", type=int, help="Readings of an unknown; else as in the last accepted run.")
+@click.option("--to", "target", type=click.Path(path_type=Path), help="Picture too, to FILE.svg or .png.")
+@json_option
+@click.pass_context
+def assess(
+    ctx: click.Context,
+    name: str,
+    instrument: str | None,
+    cv: float | None,
+    replicates: int | None,
+    target: Path | None,
+    as_json: bool,
+) -> None:
+    """Model and range of method NAME, judged by its accepted runs; nothing is written to the store."""
+    from calib.bench.assess import assess_method
+    from calib.report.files import check_picture, write_figure
+
+    if target is not None:
+        check_picture(target)
+    with opened(ctx) as store:
+        found = assess_method(store, name, instrument, cv=cv, replicates=replicates)
+    if target is not None:
+        from calib.report.figures import assessment_figure
+
+        write_figure(assessment_figure(found), target)
+    if as_json:
+        from calib.report.assessment_json import assessment_json
+
+        echo_json(assessment_json(found))
+        return
+    from calib.cli.assess_screen import show_assessment
+
+    show_assessment(found)
+    if target is not None:
+        click.echo(f"picture written to {target}")
