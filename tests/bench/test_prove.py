@@ -7,7 +7,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 from scipy.stats import binomtest
-from small_laboratory import LEVELS, Bench, Line, open_bench, signal, state_of, unknown
+from small_laboratory import LEVELS, METHOD, Bench, Line, open_bench, signal, state_of, unknown
 
 from calib.bench.method_history import history_of_method
 from calib.bench.planted_faults import CLEAN, FAULTS, Fault, levels_of
@@ -105,6 +105,20 @@ def test_a_method_that_assumes_the_wrong_noise_is_found_out(bench: Bench, tmp_pa
     # Scatter in proportion to the response, weighed alike: too wide at the bottom, too short at the top.
     assert (cells[0].covered.value or 0.0) >= 0.97
     assert min(c.covered.value or 1.0 for c in cells[-2:]) <= 0.90
+
+
+def test_a_method_that_pools_its_noise_is_given_a_history_of_its_own(
+    practised: Bench, tmp_path: Path
+) -> None:
+    file = tmp_path / "pooled.toml"
+    file.write_text(
+        METHOD.format(name="line-a", analyte="alpha").replace('"uniform"', '"history"'), encoding="utf-8"
+    )
+    add_method(practised.store, file, by="KM")
+    proof = prove_method(practised.store, "line-a", runs=40, seed=9)
+    assert (proof.version, proof.method_noise) == (2, "history")
+    assert proof.clean.rejected.count == 0
+    assert overall(proof) == pytest.approx(0.95, abs=0.06)
 
 
 def test_faults_are_told_by_the_rules_that_see_them(proof: Proof) -> None:
