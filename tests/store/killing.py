@@ -27,6 +27,7 @@ sys.path[:0] = ["tests", "tests/store"]
 from pathlib import Path
 from small_laboratory import a_day, header_block, open_bench
 from calib.bench.laboratory import Laboratory
+from calib.errors import InputError
 
 deed, path, mark = sys.argv[1], Path(sys.argv[2]), sys.argv[3]
 bench = open_bench(path)
@@ -48,9 +49,9 @@ for n in range(1, 1000):
         say(f"done {store.head()[0]}")
     elif deed == "review":
         reviewer = Laboratory(store, "RS")
-        if n % 2:
+        try:
             reviewer.return_run(1, reason=f"{mark}-{n}")
-        else:
+        except InputError:  # the last one before it was killed returned it
             reviewer.approve(1, comment=f"{mark}-{n}")
         say(f"done {store.head()[0]}")
     elif deed == "backup":
