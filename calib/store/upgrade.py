@@ -80,7 +80,7 @@ def upgrade_store(
     rows: dict[str, int] = {}
     try:
         with in_words(path):
-            backup = _back_up(engine, path, f"schema-{before}-{now():%Y%m%dT%H%M%S}")
+            backup = _back_up(engine, path, f"schema-{before}-{now():%Y%m%dT%H%M%S%f}")
             migrate(engine, around=lambda connection: _nothing_lost(connection, rows))
     finally:
         engine.dispose()
