@@ -10,15 +10,15 @@ from calib.store.refusals import files_in_words, in_words
 # Every schema there has been, oldest first; the migrations of the same names lead from one to the next.
 REVISIONS: tuple[str, ...] = (
     "0001",
-    "0004",
     "0002",
-    "0004b",
-    "0004c",
-    "0002b",
     "0003",
+    "0004",
     "0005",
     "0006",
-    "0003b",
+    "0007",
+    "0008",
+    "0009",
+    "0010",
 )
 
 _SQLITE_MAGIC = b"SQLite format 3\x00"
@@ -27,11 +27,6 @@ _SQLITE_MAGIC = b"SQLite format 3\x00"
 def newest_revision() -> str:
     """Give the schema this calib works with."""
     return REVISIONS[-1]
-
-
-def revision_before(revision: str) -> str:
-    """Give the schema that a migration starts from."""
-    return REVISIONS[REVISIONS.index(revision) - 1]
 
 
 def read_revision(path: Path) -> str:

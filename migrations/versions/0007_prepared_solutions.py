@@ -5,8 +5,8 @@ from alembic import op
 
 from calib.store.triggers import create_triggers
 
-revision = "0003"
-down_revision = "0002b"
+revision = "0007"
+down_revision = "0006"
 branch_labels = None
 depends_on = None
 

@@ -5,8 +5,8 @@ from alembic import op
 
 from calib.store.triggers import create_triggers
 
-revision = "0004c"
-down_revision = "0004b"
+revision = "0005"
+down_revision = "0004"
 branch_labels = None
 depends_on = None
 

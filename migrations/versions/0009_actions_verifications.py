@@ -3,11 +3,10 @@
 import sqlalchemy as sa
 from alembic import op
 
-from calib.store.schema import revision_before
 from calib.store.triggers import create_triggers
 
-revision = "0006"
-down_revision = revision_before(revision)
+revision = "0009"
+down_revision = "0008"
 branch_labels = None
 depends_on = None
 
