@@ -23,13 +23,8 @@ from calib.bench.find import (
 from calib.bench.find_basis import find_basis, keep_basis, request_for
 from calib.bench.find_readings import find_readings
 from calib.bench.formed_results import CurveRun, curve_run
-from calib.bench.keeping import (
-    OUTLYING,
-    add_evaluation,
-    add_quantities,
-    current_readings,
-    exclusions_in_force,
-)
+from calib.bench.keeping import OUTLYING, add_evaluation, current_readings, exclusions_in_force
+from calib.bench.keeping_quantities import add_quantities
 from calib.bench.outlying_readings import evaluate_and_check, refuse_outlying, stays_noisy
 from calib.bench.quantify import QUANTIFIED_ROLES, dependent_runs
 from calib.bench.quantities import quantities_of

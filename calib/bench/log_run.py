@@ -12,7 +12,8 @@ from sqlalchemy.orm import Session
 from calib import store as tables
 from calib.bench.evaluate import with_basis
 from calib.bench.find_basis import keep_basis
-from calib.bench.keeping import add_evaluation, add_first_quantities, versions
+from calib.bench.keeping import add_evaluation, versions
+from calib.bench.keeping_quantities import add_first_quantities
 from calib.bench.noise_history import refuse_changed_history
 from calib.bench.outlying_readings import evaluate_and_check
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates

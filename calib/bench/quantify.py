@@ -12,7 +12,7 @@ from calib.bench.curve_life import refuse_unchecked
 from calib.bench.find import current_curve, facts_of, run_numbered
 from calib.bench.find_basis import find_basis, keep_basis, request_for
 from calib.bench.formed_results import curve_run
-from calib.bench.keeping import add_first_quantities
+from calib.bench.keeping_quantities import add_first_quantities
 from calib.bench.log_run import add_original, add_readings, add_run
 from calib.bench.plan_run import LogPlan, PlannedRun, refuse_duplicates
 from calib.bench.quantities import quantities_of

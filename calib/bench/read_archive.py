@@ -11,7 +11,8 @@ from sqlalchemy.orm import Session, aliased
 
 from calib import store as tables
 from calib.bench.evaluate import fitted_readings
-from calib.bench.keeping import WITHDRAWN, curve_of, measured_of, verdict_record
+from calib.bench.keeping import curve_of, measured_of, verdict_record
+from calib.bench.keeping_quantities import WITHDRAWN
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import Measured, VerdictRecord
 from calib.bench.show_run import local

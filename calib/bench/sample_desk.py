@@ -14,7 +14,8 @@ from calib import store as tables
 from calib.acceptance.dilutions import DilutedValue, DilutionOutcome, judge_dilutions
 from calib.bench.find import instrument_named, method_named
 from calib.bench.flags import in_words
-from calib.bench.keeping import WITHDRAWN, definition_of, quantity_record, verdict_record
+from calib.bench.keeping import definition_of, verdict_record
+from calib.bench.keeping_quantities import WITHDRAWN, quantity_record
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.records import QuantityRecord, VerdictRecord, lowest_reported
 from calib.bench.review_state import ReviewState, review_states

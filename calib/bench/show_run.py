@@ -23,17 +23,15 @@ from calib.bench.find import (
 from calib.bench.find_basis import kept_basis
 from calib.bench.history import amendments_of
 from calib.bench.keeping import (
-    WITHDRAWN,
-    current_quantities,
     current_readings,
     curve_of,
     definition_of,
     exclusions_in_force,
     measured_of,
-    quantity_record,
     standard_records,
     verdict_record,
 )
+from calib.bench.keeping_quantities import WITHDRAWN, current_quantities, quantity_record
 from calib.bench.method_definition import MethodDefinition
 from calib.bench.noise_history import history_of
 from calib.bench.outlying_readings import outlying_of

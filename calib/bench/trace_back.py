@@ -9,7 +9,7 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.find import LARGEST_KEY, facts_of
-from calib.bench.keeping import WITHDRAWN
+from calib.bench.keeping_quantities import WITHDRAWN
 from calib.bench.review_state import review_state
 from calib.bench.trace_records import Trace, Tracing
 from calib.bench.traced_rows import add_provenance, in_words, traced_row

@@ -11,7 +11,7 @@ from sqlalchemy.orm import Session
 
 from calib import store as tables
 from calib.bench.find import LARGEST_KEY
-from calib.bench.keeping import WITHDRAWN
+from calib.bench.keeping_quantities import WITHDRAWN
 from calib.bench.review_state import review_states
 from calib.bench.show_run import local
 from calib.errors import NotFound

@@ -72,7 +72,8 @@ def _shortened(text: str, most: int = 100) -> str:
 
 
 def _json(into: Path, season: DemoSeason, today: list[RunRecord], reviews: list[Any]) -> dict[str, Any]:
-    from calib.report.as_json import drift_json, plain, run_json
+    from calib.report.as_json import plain, run_json
+    from calib.report.history_json import drift_json
 
     return {
         "schema": "calib-demo-1",

@@ -35,7 +35,7 @@ def drift(
     if target is not None:
         _draw(records, target)
     if as_json:
-        from calib.report.as_json import drift_json
+        from calib.report.history_json import drift_json
 
         echo_json({"schema": "calib-drift-list-1", "reviews": [drift_json(r) for r in records]})
         return

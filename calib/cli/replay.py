@@ -39,7 +39,7 @@ def replay(
     with opened(ctx) as store, progress_bar("replay") as progress:
         record = replay_runs(store, request, progress)
     if as_json:
-        from calib.report.as_json import replay_json
+        from calib.report.history_json import replay_json
 
         echo_json(replay_json(record))
         return
