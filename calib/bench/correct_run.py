@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from datetime import datetime, timedelta, timezone
+from datetime import datetime
 
 from sqlalchemy.orm import Session
 
@@ -13,14 +12,9 @@ from calib import store as tables
 from calib.bench.evaluate import with_basis
 from calib.bench.find import (
     current_curve,
-    facts_of,
-    instrument_named,
-    preparation_of,
     run_numbered,
-    solution_named,
     void_of,
 )
-from calib.bench.find_basis import find_basis, keep_basis, request_for
 from calib.bench.find_readings import find_readings
 from calib.bench.formed_results import CurveRun, curve_run
 from calib.bench.keeping import OUTLYING, add_evaluation, current_readings, exclusions_in_force
@@ -32,26 +26,6 @@ from calib.bench.records import Evaluation, Measured, QuantityRecord, RunRecord
 from calib.bench.show_run import load_run, measured_run, show_run
 from calib.errors import InputError
 from calib.store.runs import REASON_CLASSES
-
-
-@dataclass(frozen=True, slots=True)
-class Change:
-    """Facts of a run to be corrected; None leaves a fact as it is.
-
-    ``samples`` and ``dilutions`` map a reading (see `find_readings`) to its new value.
-    """
-
-    instrument: str | None = None
-    lot: str | None = None
-    operator: str | None = None
-    at: datetime | None = None
-    samples: tuple[tuple[str, str], ...] = ()
-    dilutions: tuple[tuple[str, float], ...] = ()
-
-    @property
-    def of_facts(self) -> bool:
-        """Whether a fact of the whole run changes."""
-        return any(v is not None for v in (self.instrument, self.lot, self.operator, self.at))
 
 
 def exclude_readings(
@@ -88,7 +62,7 @@ def restore_readings(
 
 def refit_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunRecord:
     """Fit and judge a run again with the readings and exclusions in force."""
-    _require_reason(reason)
+    require_reason(reason)
     record = _correctable(store, number)
     evaluation = evaluate_and_check(record.definition, record.readings, record.evaluation.history)
     now = store.now()
@@ -106,44 +80,17 @@ def void_run(store: tables.Store, number: int, *, reason: str, by: str) -> RunRe
     InputError
         When it is void already, or other runs were quantified on its curve.
     """
-    _require_reason(reason)
+    require_reason(reason)
     now = store.now()
     with store.change(action="void run", by=by, reason=reason) as session:
         run_numbered(session, number)
-        _refuse_void(session, number)
+        refuse_void(session, number)
         users = [n for n in dependent_runs(session, number) if void_of(session, n) is None]
         if users:
             raise InputError(
                 f"run {number}: its curve was used by run {', '.join(map(str, users))}; declare these void first"
             )
         session.add(tables.RunVoid(run_id=number, reason=reason, by=by, at=now))
-    return show_run(store, number)
-
-
-def amend_run(store: tables.Store, number: int, change: Change, *, reason: str, by: str) -> RunRecord:
-    """Correct facts of a run or of its readings; the original stays beside the amendment.
-
-    Raises
-    ------
-    InputError
-        When nothing changes, a reading is not found, or no reason is given.
-    """
-    _require_reason(reason)
-    if not (change.of_facts or change.samples or change.dilutions):
-        raise InputError("nothing to amend: name at least one fact and its new value")
-    now = store.now()
-    with store.change(action="amend run", by=by, reason=reason) as session:
-        record = load_run(session, number, (0, ""))
-        _refuse_void(session, number)
-        _amend_facts(session, number, change, reason, by, now)
-        _amend_readings(session, record.readings, number, change)
-        session.flush()
-        if change.lot:
-            _find_bases_again(session, record, by, now)
-        if change.instrument and record.heading.kind == "calibration":
-            _judge_again(session, number, by, now, reason)
-        elif change.instrument or change.samples or change.dilutions or change.lot:
-            _requantify(session, number)
     return show_run(store, number)
 
 
@@ -156,7 +103,7 @@ def _decide(
     reason_class: str,
     by: str,
 ) -> RunRecord:
-    _require_reason(reason)
+    require_reason(reason)
     if reason_class not in REASON_CLASSES:
         raise InputError(f"unknown class of reason '{reason_class}'; known are {', '.join(REASON_CLASSES)}")
     record = _correctable(store, number)
@@ -247,7 +194,7 @@ def _correctable(store: tables.Store, number: int) -> RunRecord:
 def _refuse_changed(session: Session, record: RunRecord) -> None:
     """Check again, inside the transaction, everything the new evaluation rests on."""
     number = record.heading.id or 0
-    _refuse_void(session, number)
+    refuse_void(session, number)
     in_force = current_curve(session, number)
     now = measured_run(session, run_numbered(session, number), record.definition)
     if in_force is None or in_force.id != record.curve_id or now != record.readings:
@@ -267,31 +214,18 @@ def _supersede(
     add_quantities(session, number, curve_id, evaluation.quantities)
     for dependent in dependent_runs(session, number):
         session.flush()
-        _requantify(session, dependent)
+        requantify(session, dependent)
     return curve_id
 
 
-def _judge_again(session: Session, number: int, by: str, now: datetime, reason: str) -> None:
+def judge_again(session: Session, number: int, by: str, now: datetime, reason: str) -> None:
     """Evaluate a run anew: another instrument has another detector ceiling."""
     record = load_run(session, number, (0, ""))
     evaluation = evaluate_and_check(record.definition, record.readings, record.evaluation.history)
     _supersede(session, record, evaluation, by=by, at=now, reason=reason)
 
 
-def _find_bases_again(session: Session, record: RunRecord, by: str, now: datetime) -> None:
-    """Another lot has another certificate: for the run, and for those read on its curve."""
-    number = record.heading.id or 0
-    levels = [s.concentration for s in record.evaluation.standards]
-    for each in (number, *dependent_runs(session, number)):
-        source = facts_of(session, record.curve_run or number)
-        request = request_for(session, record.definition, source, levels, facts_of(session, each).at)
-        keep_basis(session, each, find_basis(session, request), by=by, at=now)
-        session.flush()
-        if each != number:
-            _requantify(session, each)
-
-
-def _requantify(session: Session, number: int) -> None:
+def requantify(session: Session, number: int) -> None:
     """Quantify a run again on the curve in force for it."""
     record = load_run(session, number, (0, ""))
     verdict = record.evaluation.verdict
@@ -320,82 +254,14 @@ def _curve_run(session: Session, record: RunRecord) -> CurveRun:
     return curve_run(load_run(session, record.curve_run or 0, (0, "")).readings)
 
 
-def _amend_facts(session: Session, number: int, change: Change, reason: str, by: str, now: datetime) -> None:
-    """New facts with the reason, also where only readings change: they have no reason of their own."""
-    old = facts_of(session, number)
-    instrument = instrument_named(session, change.instrument) if change.instrument else None
-    at, offset = _amended_time(old, change.at)
-    lot_id, prepared = _amended_material(session, old, change.lot)
-    facts = tables.RunFacts(
-        run_id=number,
-        instrument_id=instrument.id if instrument else old.instrument_id,
-        lot_id=lot_id,
-        at=at,
-        offset_minutes=offset,
-        operator=change.operator or old.operator,
-        supersedes=old.id,
-        reason=reason,
-        by=by,
-        recorded_at=now,
-    )
-    session.add(facts)
-    if prepared is not None:
-        session.flush()
-        session.add(tables.RunSolution(facts_id=facts.id, preparation_id=prepared.id))
-
-
-def _amended_material(
-    session: Session, old: tables.RunFacts, name: str | None
-) -> tuple[int | None, tables.Preparation | None]:
-    """Number of the lot, and the prepared solution where one was used."""
-    if name is None:
-        return old.lot_id, preparation_of(session, old)
-    named = solution_named(session, name)
-    if isinstance(named, tables.Preparation):
-        return named.lot_id, named
-    return named.id, None
-
-
-def _amended_time(old: tables.RunFacts, at: datetime | None) -> tuple[datetime, int]:
-    if at is None:
-        return old.at, old.offset_minutes
-    moment = at if at.tzinfo else at.replace(tzinfo=timezone(timedelta(minutes=old.offset_minutes)))
-    offset = moment.utcoffset() or timedelta()
-    return moment, int(offset.total_seconds() // 60)
-
-
-def _amend_readings(session: Session, readings: Sequence[Measured], number: int, change: Change) -> None:
-    fields: dict[int, dict[str, str | float]] = {}
-    for name, sample in change.samples:
-        if not sample.strip():
-            raise InputError(f"the new name of sample '{name}' is empty")
-        for reading in find_readings(readings, name):
-            fields.setdefault(reading.key, {})["sample"] = sample
-    for name, dilution in change.dilutions:
-        if not (math.isfinite(dilution) and dilution > 0):
-            raise InputError(f"dilution {dilution:g} of '{name}' must be above 0")
-        for reading in find_readings(readings, name):
-            fields.setdefault(reading.key, {})["dilution"] = dilution
-    for row in current_readings(session, number):
-        if row.ordinal in fields:
-            session.add(_copy(row, fields[row.ordinal]))
-
-
-def _copy(row: tables.Reading, fields: dict[str, str | float]) -> tables.Reading:
-    kept = {
-        c.key: getattr(row, c.key)
-        for c in tables.Reading.__table__.columns
-        if c.key not in ("id", "supersedes")
-    }
-    return tables.Reading(**(kept | fields), supersedes=row.id)
-
-
-def _require_reason(reason: str) -> None:
+def require_reason(reason: str) -> None:
+    """Refuse a correction without a reason in words."""
     if not reason.strip():
         raise InputError("a correction needs a reason in words")
 
 
-def _refuse_void(session: Session, number: int) -> None:
+def refuse_void(session: Session, number: int) -> None:
+    """Refuse to change a run that counts no longer."""
     void = void_of(session, number)
     if void is not None:
         raise InputError(f"run {number} is void already ({void.reason})")

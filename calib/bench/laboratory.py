@@ -10,15 +10,9 @@ from types import TracebackType
 from typing import Self
 
 from calib import store as tables
+from calib.bench.amend_run import Change, amend_run
 from calib.bench.check_records import RecordCheck, check_records
-from calib.bench.correct_run import (
-    Change,
-    amend_run,
-    exclude_readings,
-    refit_run,
-    restore_readings,
-    void_run,
-)
+from calib.bench.correct_run import exclude_readings, refit_run, restore_readings, void_run
 from calib.bench.log_run import evaluate_plan, log_plan
 from calib.bench.plan_run import LogOptions, plan_file
 from calib.bench.quantify import quantify_plan

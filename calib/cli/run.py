@@ -195,7 +195,7 @@ def amend(
     as_json: bool,
 ) -> int:
     """Correct facts of run NUMBER; the original stays beside the amendment."""
-    from calib.bench.correct_run import Change, amend_run
+    from calib.bench.amend_run import Change, amend_run
 
     change = Change(
         instrument=instrument,

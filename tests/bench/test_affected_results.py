@@ -5,7 +5,7 @@ import re
 import pytest
 from small_laboratory import a_day, header_block, unknown
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.method_definition import read_definition
 from calib.bench.register import add_instrument
 from calib.errors import InputError, MethodError

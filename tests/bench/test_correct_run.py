@@ -8,7 +8,8 @@ from sqlalchemy import select
 
 from calib import store as tables
 from calib.bench import correct_run
-from calib.bench.correct_run import Change, find_readings
+from calib.bench.amend_run import Change
+from calib.bench.correct_run import find_readings
 from calib.bench.keeping_quantities import WITHDRAWN
 from calib.bench.register import add_instrument
 from calib.errors import DuplicateFile, InputError, NotFound

@@ -4,7 +4,7 @@ import pytest
 from small_laboratory import METHOD, a_day, header_block, unknown
 
 import calib
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.register import LotRecord, add_event, add_instrument, add_lot, add_method, list_lots
 from calib.errors import CalibError, InputError, MethodError, NotAStore, StoreError, UnreadableFile
 

@@ -5,7 +5,7 @@ from datetime import date
 import pytest
 from small_laboratory import a_day, header_block, state_of
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.plan_run import LogOptions, plan_file
 from calib.bench.prepared_solutions import (
     PreparationRequest,

@@ -6,7 +6,7 @@ import pytest
 from small_laboratory import METHOD, a_day, long_form, state_of, unknown, with_response
 
 from calib.bench import quantify
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.register import add_method
 from calib.errors import DuplicateFile, InputError
 

@@ -3,7 +3,7 @@
 import pytest
 from small_laboratory import a_day
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.errors import NotFound
 
 

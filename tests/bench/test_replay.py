@@ -249,7 +249,7 @@ def test_runs_are_chosen_by_instrument_method_and_number(bench):
 
 
 def test_a_run_whose_curve_is_another_instruments_now_still_follows_it(bench):
-    from calib.bench.correct_run import Change
+    from calib.bench.amend_run import Change
 
     bench.log(a_day(), started=DAYS[2])
     bench.quantify(LATER)

@@ -5,7 +5,7 @@ from datetime import timedelta
 import pytest
 from small_laboratory import NOW, Bench, a_day, header_block, state_of, unknown, with_response
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.laboratory import Laboratory
 from calib.bench.register import LotRecord, add_lot
 from calib.bench.review_runs import approve_run, return_run, runs_to_review

@@ -102,7 +102,7 @@ def test_from_a_superseded_curve_only_what_was_read_on_it_and_what_replaced_that
 
 
 def test_an_amended_lot_is_still_traced_from_the_first_one(bench):
-    from calib.bench.correct_run import Change
+    from calib.bench.amend_run import Change
     from calib.bench.register import LotRecord, add_lot
 
     bench.log(a_day())

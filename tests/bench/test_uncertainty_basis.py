@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 from small_laboratory import METHOD, Line, a_day, signal, standards, state_of, unknown
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.prepared_solutions import PreparationRequest, prepare_solution
 from calib.bench.register import add_method
 from calib.bench.replay import ReplayRequest

@@ -15,7 +15,7 @@ sys.path[:0] = [str(ROOT), str(ROOT / "tests"), str(ROOT / "tests" / "store")]
 from small_laboratory import a_day, open_bench, register, unknown
 from tampering import KINDS, tamper_with
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.bench.settings import set_roles
 from calib.store import check_store, open_store
 

@@ -8,7 +8,7 @@ import pytest
 from small_laboratory import a_day, open_bench, unknown
 from tampering import KINDS, tamper_with
 
-from calib.bench.correct_run import Change
+from calib.bench.amend_run import Change
 from calib.store import check_store, open_store
 
 
