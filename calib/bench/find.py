@@ -28,6 +28,20 @@ def instrument_named(session: Session, name: str) -> tables.Instrument:
     return row
 
 
+def require_registered(session: Session, instrument: str | None, method: str | None) -> None:
+    """Refuse names that a listing is asked for and nobody registered.
+
+    Raises
+    ------
+    NotFound
+        When there is no such instrument or method.
+    """
+    if instrument is not None:
+        instrument_named(session, instrument)
+    if method is not None:
+        method_named(session, method)
+
+
 def method_named(session: Session, name: str, version: int | None = None) -> tables.Method:
     """Latest version of a method, or the one asked for.
 

@@ -266,17 +266,8 @@ def _verdict_row(curve_id: int, verdict: VerdictRecord, by: str, at: datetime) -
 
 
 def _criterion(result: CriterionResult) -> dict[str, Any]:
-    return {
-        "id": result.id,
-        "what": result.what,
-        "limit": result.limit,
-        "observed": None if result.observed is None else finite(result.observed),
-        "passed": bool(result.passed),
-        "source": result.source,
-        "detail": result.detail,
-        "warns": result.warns,
-        "remedy": result.remedy,
-    }
+    observed = None if result.observed is None else finite(result.observed)
+    return asdict(result) | {"observed": observed, "passed": bool(result.passed)}
 
 
 def _number(value: float | None) -> float:

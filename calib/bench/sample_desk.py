@@ -12,7 +12,7 @@ from sqlalchemy.orm import Session, aliased
 
 from calib import store as tables
 from calib.acceptance.dilutions import DilutedValue, DilutionOutcome, judge_dilutions
-from calib.bench.find import instrument_named, method_named
+from calib.bench.find import method_named, require_registered
 from calib.bench.flags import in_words
 from calib.bench.keeping import definition_of, verdict_record
 from calib.bench.keeping_quantities import WITHDRAWN, quantity_record
@@ -135,10 +135,7 @@ def list_samples(
         When there is no such instrument or method.
     """
     with store.reading() as session:
-        if instrument is not None:
-            instrument_named(session, instrument)
-        if method is not None:
-            method_named(session, method)
+        require_registered(session, instrument, method)
         found = _samples(session, instrument, method, None)
     day = since or max((s.latest.date() for s in found), default=None)
     chosen = [s for s in found if day is not None and s.latest.date() >= day and state in (None, s.state)]

@@ -14,9 +14,8 @@ from calib.bench.evaluate import BLANK_ROLES, blank_records, fitted_readings
 from calib.bench.find import (
     current_curve,
     facts_of,
-    instrument_named,
-    method_named,
     preparation_of,
+    require_registered,
     run_numbered,
     void_of,
 )
@@ -84,10 +83,7 @@ def list_runs(
         When there is no such instrument or method.
     """
     with store.reading() as session:
-        if instrument is not None:
-            instrument_named(session, instrument)
-        if method is not None:
-            method_named(session, method)
+        require_registered(session, instrument, method)
         rows = session.execute(_listing(instrument, method)).all()
     lines = tuple(
         RunLine(

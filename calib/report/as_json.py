@@ -10,7 +10,6 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from calib.acceptance import CriterionResult
 from calib.bench.statements import statement_of
 from calib.report.budget_rows import budget_json
 from calib.report.review_wording import status_line
@@ -19,7 +18,6 @@ if TYPE_CHECKING:
     from calib.bench.control_history import ControlHistory
     from calib.bench.log_run import EvaluatedPlan
     from calib.bench.records import (
-        BlankRecord,
         Evaluation,
         NoiseHistory,
         OutlyingProposal,
@@ -53,7 +51,7 @@ def run_json(record: RunRecord, stamp: ReportStamp | None = None) -> dict[str, A
         "curve": _curve(record.curve_id, evaluation),
         "outlying_reading": _outlying(evaluation.outlying),
         "standards": [_standard(s) for s in evaluation.standards],
-        "blanks": [_blank(b) for b in evaluation.blanks],
+        "blanks": [plain(b) for b in evaluation.blanks],
         "verdict": _verdict(evaluation, record.definition.concentration_unit),
         "checks": [
             _check(q, evaluation) for q in evaluation.quantities if q.role in ("check", "first-check")
@@ -148,7 +146,7 @@ def rules_json(record: RunRecord, history: ControlHistory) -> dict[str, Any]:
         "method_version": record.heading.method_version,
         "preset": record.definition.preset,
         "decision": verdict.decision,
-        "rules": [_criterion(c) for c in verdict.criteria],
+        "rules": [plain(c) for c in verdict.criteria],
         "excluded": [
             {"label": s.label, "position": s.position, "concentration": s.concentration, "reason": s.reason}
             for s in record.evaluation.standards
@@ -272,31 +270,13 @@ def _standard(standard: StandardRecord) -> dict[str, Any]:
     }
 
 
-def _blank(blank: BlankRecord) -> dict[str, Any]:
-    return plain(blank)  # type: ignore[no-any-return]
-
-
 def _verdict(evaluation: Evaluation, unit: str) -> dict[str, Any]:
     verdict = evaluation.verdict
     return {
         "decision": verdict.decision,
-        "criteria": [_criterion(c) for c in verdict.criteria],
+        "criteria": [plain(c) for c in verdict.criteria],
         "calibrated_range": {"lowest": verdict.lowest, "highest": verdict.highest, "unit": unit},
         "r_squared": verdict.r_squared,
-    }
-
-
-def _criterion(result: CriterionResult) -> dict[str, Any]:
-    return {
-        "id": result.id,
-        "what": result.what,
-        "limit": result.limit,
-        "observed": plain(result.observed),
-        "passed": result.passed,
-        "source": result.source,
-        "detail": result.detail,
-        "warns": result.warns,
-        "remedy": result.remedy,
     }
 
 
